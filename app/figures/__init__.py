@@ -1,0 +1,1 @@
+"""Figures: functions of core objects that return a Plotly figure."""

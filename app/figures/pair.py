@@ -1,0 +1,153 @@
+"""Two devices in one picture: A with filled marks and a solid line, B with hollow marks and a dashed one."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import plotly.graph_objects as go
+
+from app.curves import thinned, voltage_grid
+from app.mechanisms import MECHANISMS
+from app.units import Units
+from app.wording import power_change
+from core.diode import OneDiode
+from core.metrics import measure
+from core.sweep import Sweep
+
+from .style import FAINT, HAIR, INK, SOFT, quiet_axis, quiet_layout
+
+MARKS = 120
+
+
+@dataclass(frozen=True)
+class Side:
+    """One of the two: its measured points, its model if there is one, and its name."""
+
+    sweep: Sweep
+    model: OneDiode | None
+    name: str
+
+
+def pair_figure(a: Side, b: Side, *, normalised: bool = False, zoom_key: str = "pair") -> go.Figure:
+    """Both curves, absolute or as J/Jsc over V/Voc. The trace ``what-if`` is empty until a hand moves it.
+
+    Raises
+    ------
+    ValueError
+        If the two do not share a unit and are not normalised.
+    """
+    if not normalised and a.sweep.per_area != b.sweep.per_area:
+        raise ValueError("a density and a current do not share an axis")
+    figure = go.Figure()
+    for side, hollow in ((b, True), (a, False)):
+        x_unit, y_unit = _scales(side, normalised)
+        voltage, current = thinned(side.sweep, MARKS)
+        marker = {"size": 6, "color": "rgba(255,255,255,0)" if hollow else SOFT, "line": {"width": 1.2 if hollow else 0, "color": INK}}
+        figure.add_trace(
+            go.Scatter(x=voltage / x_unit, y=current / y_unit, mode="markers", marker=marker, uid=f"points-{'b' if hollow else 'a'}",
+                       customdata=[[side.name]] * len(voltage), hovertemplate="%{x:.4f}<br>%{y:.4g}<extra>%{customdata[0]}</extra>")
+        )
+        line_x, line_y = ([], []) if side.model is None else _line(side, x_unit, y_unit)
+        figure.add_trace(
+            go.Scatter(x=line_x, y=line_y, mode="lines", hoverinfo="skip", uid=f"model-{'b' if hollow else 'a'}",
+                       line={"color": INK, "width": 1.6, "dash": "dash" if hollow else "solid"})
+        )
+    figure.add_trace(go.Scatter(x=[], y=[], mode="lines", hoverinfo="skip", uid="what-if",
+                                line={"color": FAINT, "width": 3, "dash": "dot"}))
+    return figure.update_layout(_pair_layout(a, b, normalised, zoom_key))
+
+
+def what_if_line(side: Side, model: OneDiode, normalised: bool) -> tuple[list[float], list[float]]:
+    """The curve that A would have, on the axes of ``pair_figure``."""
+    x_unit, y_unit = _scales(side, normalised)
+    x, y = _line(Side(side.sweep, model, side.name), x_unit, y_unit)
+    return np.round(x, 6).tolist(), np.round(y, 6).tolist()
+
+
+def _scales(side: Side, normalised: bool) -> tuple[float, float]:
+    if not normalised:
+        return 1.0, 1.0 / Units.of(side.sweep.per_area).current_factor
+    metrics = measure(side.sweep)
+    return metrics.voc.value or 1.0, metrics.jsc.value or 1.0
+
+
+def _line(side: Side, x_unit: float, y_unit: float) -> tuple[np.ndarray, np.ndarray]:
+    voltage = voltage_grid(side.sweep, side.model)
+    return voltage / x_unit, side.model.current(voltage) / y_unit
+
+
+def _pair_layout(a: Side, b: Side, normalised: bool, zoom_key: str) -> dict:
+    zero = {"zeroline": True, "zerolinecolor": HAIR, "zerolinewidth": 1}
+    spans = [_span(side, *_scales(side, normalised)) for side in (a, b)]
+    right, top = max(s[0] for s in spans), max(s[1] for s in spans)
+    units = Units.of(a.sweep.per_area)
+    x_title = "V / Voc" if normalised else "voltage (V)"
+    y_title = f"{units.letter} / {units.letter}sc" if normalised else f"{units.letter} ({units.current})"
+    return quiet_layout(
+        zoom_key,
+        xaxis=quiet_axis(x_title, range=[-0.06 * right, 1.06 * right], **zero),
+        yaxis=quiet_axis(y_title, range=[-0.2 * top, 1.12 * top], **zero),
+        margin={"l": 64, "r": 16, "t": 8, "b": 44},
+    )
+
+
+def _span(side: Side, x_unit: float, y_unit: float) -> tuple[float, float]:
+    live = side.sweep.voltage[side.sweep.current > 0]
+    right = float(live.max()) if live.size else float(np.abs(side.sweep.voltage).max())
+    return max(right, 1e-9) / x_unit, max(float(side.sweep.current.max()), 1e-30) / y_unit
+
+
+def shares_figure(
+    shares: Mapping[str, float],
+    total: float,
+    *,
+    intervals: Mapping[str, tuple[float, float]] | None = None,
+    rest: float | None = None,
+    large: bool = False,
+) -> go.Figure:
+    """What each mechanism adds to the difference in power, as bars to the left and right of zero.
+
+    Parameters
+    ----------
+    shares : mapping of mechanism to float
+        [mW cm⁻²]
+    total : float
+        The measured difference, or the model's where nothing was measured [mW cm⁻²].
+    rest : float, optional
+        Measured minus model, shown as a bar of its own [mW cm⁻²].
+    """
+    names = [m.loss for m in MECHANISMS]
+    values = [shares[m.parameter] for m in MECHANISMS]
+    colours, hatches = [m.hue for m in MECHANISMS], [m.hatch for m in MECHANISMS]
+    if rest is not None:
+        names, values, colours, hatches = [*names, "not in the model"], [*values, rest], [*colours, FAINT], [*hatches, "-"]
+    names, values, colours, hatches = [*names, "together"], [*values, total], [*colours, INK], [*hatches, ""]
+    bars = go.Bar(
+        y=names, x=values, orientation="h", uid="shares", width=0.62, hoverinfo="skip",
+        marker={"color": colours, "pattern": {"shape": hatches, "fgcolor": "rgba(255,255,255,0.75)", "size": 6, "solidity": 0.25},
+                "line": {"width": 0}},
+        text=[power_change(v) for v in values], textposition="outside", cliponaxis=False,
+        textfont={"size": 18 if large else 13},
+        error_x=_errors(values, intervals or {}),
+    )
+    reach = 1.35 * max((abs(v) for v in values), default=1.0) or 1.0
+    return go.Figure(bars).update_layout(
+        quiet_layout(
+            "shares",
+            xaxis=quiet_axis("mW cm⁻²", range=[-reach, reach], zeroline=True, zerolinecolor=FAINT, zerolinewidth=1, fixedrange=True),
+            yaxis={"autorange": "reversed", "showgrid": False, "ticks": "", "showline": False, "fixedrange": True,
+                   "tickfont": {"size": 18 if large else 13}, "automargin": True},
+            margin={"l": 150, "r": 24, "t": 4, "b": 40},
+            dragmode=False,
+        )
+    )
+
+
+def _errors(values: list[float], intervals: Mapping[str, tuple[float, float]]) -> dict:
+    known = [intervals.get(m.parameter) for m in MECHANISMS]
+    known += [None] * (len(values) - len(known))
+    up = [max(i[1] - v, 0.0) if i else 0.0 for i, v in zip(known, values, strict=True)]
+    down = [max(v - i[0], 0.0) if i else 0.0 for i, v in zip(known, values, strict=True)]
+    return {"type": "data", "array": up, "arrayminus": down, "color": INK, "thickness": 1.2, "width": 3, "visible": bool(intervals)}

@@ -1,0 +1,147 @@
+"""What the user's hand does, translated: an event from the page into a move of the model or a step.
+
+An event is a small JSON object: ``kind``, ``entry`` (the sweep), and what the kind needs. Positions come in
+screen units; which parameter follows, and by how much, is decided in core.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from typing import Any
+
+from core import steps
+from core.dials import dial_ranges
+from core.errors import ConditionRefused, StepRefused
+from core.handles import Move, drag, set_parameter
+from core.sweep import Sweep
+from core.workspace import Workspace
+
+from .fit_settings import change_setting, leave_out, use_all_points
+from .mechanisms import BY_PARAMETER
+from .units import Units, kelvin
+from .wording import parse_number
+
+Event = Mapping[str, Any]
+Step = dict[str, Any]
+
+_VERBS = {"drag": "drag", "dial": "turn", "field": "set"}
+MODEL_KINDS = tuple(_VERBS)
+
+
+def moved(workspace: Workspace, event: Event) -> Move:
+    """The model after a handle, dial or number field of the bench has moved.
+
+    Raises
+    ------
+    StepRefused
+        If the sweep is gone, has no model, or the event names no parameter.
+    ConditionRefused
+        If a typed text is no number.
+    """
+    sweep, fit = sweep_of(workspace, event), workspace.fit(event["entry"])
+    parameter = _parameter(event)
+    if fit.model is None:
+        raise StepRefused("There is no curve on this sweep yet. Press “first guess” to lay one.")
+    if parameter not in fit.model.parameters:
+        raise StepRefused(f"This model has no {BY_PARAMETER[parameter].title}. Reload the page.")
+    hold, units = fit.settings.hold, Units.of(sweep.per_area)
+    if event["kind"] == "drag":
+        span = (float(sweep.voltage.min()), float(sweep.voltage.max()))
+        x, y = _position(event, "x"), _position(event, "y") / units.current_factor
+        return drag(fit.model, parameter, x, y, lit=sweep.lit, hold=hold, span=span)
+    if event["kind"] == "dial":
+        value = _dial(sweep, fit.model, parameter).value(_position(event, "fraction"))
+    else:
+        mechanism = BY_PARAMETER[parameter]
+        value = parse_number(str(event.get("text", "")), mechanism.title) / units.parameter_factor(parameter)
+    return set_parameter(fit.model, parameter, value, hold=hold, keep_jsc_voc=bool(event.get("keep")))
+
+
+def step_for(workspace: Workspace, event: Event) -> tuple[Step | None, str]:
+    """The step that an event asks for, or None where nothing changes; and a sentence for the user, or ""."""
+    kind = str(event.get("kind"))
+    if kind in MODEL_KINDS:
+        move = moved(workspace, event)
+        if move.model == workspace.fit(event["entry"]).model:
+            return None, move.message
+        label = f"{_VERBS[kind]} {BY_PARAMETER[event['parameter']].title}"
+        return steps.set_model(workspace, event["entry"], move.model, label=label), move.message
+    if kind not in _STEPS:
+        raise StepRefused(f"The page asked for “{kind}”, which this version does not know. Reload the page.")
+    return _STEPS[kind](workspace, event), ""
+
+
+def sweep_of(workspace: Workspace, event: Event) -> Sweep:
+    if event.get("entry") not in workspace.entries:
+        raise StepRefused("That sweep is no longer in the tray.")
+    return workspace.sweep(event["entry"])
+
+
+def _position(event: Event, name: str) -> float:
+    # A page without axes sends null.
+    if not isinstance(event.get(name), int | float):
+        raise StepRefused("The page named no position. Reload the page.")
+    return float(event[name])
+
+
+def _parameter(event: Event) -> str:
+    if event.get("parameter") not in BY_PARAMETER:
+        raise StepRefused("The page named no parameter. Reload the page.")
+    return event["parameter"]
+
+
+def _dial(sweep: Sweep, model: Any, parameter: str) -> Any:
+    return dial_ranges(sweep, model.parameters)[parameter].containing(getattr(model, parameter))
+
+
+def _hold(workspace: Workspace, event: Event) -> Step:
+    return steps.set_hold(workspace, event["entry"], _parameter(event), bool(event["on"]))
+
+
+def _band_gap(workspace: Workspace, event: Event) -> Step:
+    sweep_of(workspace, event)
+    text = str(event["text"]).strip()
+    gap = None if text in ("", "–") else parse_number(text, "Band gap")
+    return steps.set_band_gap(workspace, event["entry"], gap)
+
+
+def _condition(workspace: Workspace, event: Event) -> Step:
+    sweep_of(workspace, event)
+    name, text = str(event["name"]), str(event["text"]).strip()
+    if name not in _CONDITIONS:
+        raise StepRefused(f"There is no condition called “{name}”.")
+    return steps.set_conditions(workspace, event["entry"], **{name: _CONDITIONS[name](text)})
+
+
+def _area(text: str) -> float | None:
+    return None if text in ("", "–") else parse_number(text, "Area")
+
+
+def _whole(text: str) -> int:
+    value = parse_number(text, "Cells in series")
+    if not value.is_integer():
+        raise ConditionRefused("The number of cells in series must be a whole number from 1 to 10000.")
+    return int(value)
+
+
+_CONDITIONS: dict[str, Callable[[str], Any]] = {
+    "area": _area,
+    "file_area": _area,
+    "temperature": lambda text: kelvin(parse_number(text, "Temperature")),
+    "irradiance": lambda text: parse_number(text, "Irradiance") / 1e3,  # mW cm⁻² on the screen
+    "series_cells": _whole,
+    "lit": lambda text: text == "light",
+}
+
+_STEPS: dict[str, Callable[[Workspace, Event], Step | None]] = {
+    "hold": _hold,
+    "setting": change_setting,
+    "leave-out": leave_out,
+    "use-all": use_all_points,
+    "condition": _condition,
+    "band-gap": _band_gap,
+    "confirm": lambda w, e: steps.confirm_conditions(w, e["entry"], list(e["names"])),
+    "rename-sweep": lambda w, e: steps.rename_entry(w, e["entry"], str(e["text"])),
+    "rename-device": lambda w, e: steps.rename_device(w, e["device"], str(e["text"])),
+    "remove": lambda w, e: steps.remove_entries(w, list(e["entries"])),
+}

@@ -1,0 +1,1 @@
+"""The page: header, tray, bench, dials. Static; what changes is painted into it."""

@@ -1,0 +1,164 @@
+"""The pair screen of one tab: both curves, the table with its verdicts, the shares, the paragraph, and what-if."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from plotly.graph_objects import Figure
+
+from core.comparing import compare
+from core.diode import PARAMETERS, OneDiode
+from core.errors import ComparisonRefused, ConditionRefused, StepRefused
+from core.retelling import tell_difference
+from core.shares import what_if
+from core.verdict import Verdict, budget_of, stands_out
+from core.workspace import Workspace
+
+from . import readout
+from .figures.pair import Side, pair_figure, shares_figure, what_if_line
+from .scene import View, active_entry, full_name
+from .states import State, state_of
+from .units import DENSITY, Units
+from .wording import concise, number, parse_number, power_change
+
+
+def chosen_pair(workspace: Workspace, view: View) -> tuple[str | None, str | None]:
+    """A and B: as the tab chose, else the sweep on the bench and the next device's first lit one."""
+    lit = [e.id for e in workspace.in_tray_order() if workspace.sweep(e.id).lit]
+    asked = view.get("pair") or {}
+    active = active_entry(workspace, view)
+    a = asked.get("a") if asked.get("a") in lit else active if active in lit else next(iter(lit), None)
+    others = [e for e in lit if a is not None and workspace.entries[e].device != workspace.entries[a].device]
+    b = asked.get("b") if asked.get("b") in lit else next(iter(others), None)
+    return a, b
+
+
+def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[str, Any]]:
+    """Both figures and the data of the screen; a refusal is its sentence."""
+    a, b = chosen_pair(workspace, view)
+    normalised = bool(view.get("normalised"))
+    data: dict[str, Any] = {"a": a, "b": b, "normalised": normalised, "whatIf": "", "story": "", "sources": "", "note": "", "refusal": ""}
+    if a is None or b is None:
+        refusal = "Two lit sweeps are needed to compare. Drop more files, or choose two in the tray."
+        return Figure(), Figure(), {**data, "refusal": refusal}
+    sweep_a, sweep_b = workspace.sweep(a), workspace.sweep(b)
+    if sweep_a.per_area != sweep_b.per_area and not normalised:
+        refusal = "One of the two has an area and the other has none. Give the missing area on the bench, or compare them normalised."
+        return Figure(), Figure(), {**data, "refusal": refusal}
+    states = state_of(workspace, a), state_of(workspace, b)
+    sides = [Side(workspace.sweep(e), s.model if s else None, full_name(workspace, e)) for e, s in zip((a, b), states, strict=True)]
+    curves = pair_figure(*sides, normalised=normalised, zoom_key=f"pair {a} {b} {normalised}")
+    verdict = _verdict(workspace, a, b, states, view.get("budget") or {})
+    data["budget"] = view.get("budget") or {}
+    data["compared"] = _compared(workspace, a, b, verdict)
+    try:
+        if None in states:
+            raise ComparisonRefused("No diode curve can be laid over one of the two, so there is nothing to share out.")
+        bars, more = _shares(workspace, a, b, states, verdict)
+    except ComparisonRefused as refused:
+        return curves, Figure(), {**data, "story": str(refused), "still": True}
+    return curves, bars, {**data, **more}
+
+
+def _shares(workspace: Workspace, a: str, b: str, states: tuple, verdict: Verdict) -> tuple[Figure, dict[str, Any]]:
+    sweeps = workspace.sweep(a), workspace.sweep(b)
+    shares = compare(
+        sweeps[0], states[0].known, sweeps[1], states[1].known,
+        metrics_a=readout.measured(sweeps[0]), metrics_b=readout.measured(sweeps[1]),
+    )
+    factor = DENSITY.power_factor
+    bars = shares_figure(
+        {name: share * factor for name, share in shares.by_mechanism.items()},
+        shares.difference * factor,
+        intervals={name: (low * factor, high * factor) for name, (low, high) in shares.intervals.items()},
+        rest=None if shares.residual is None else shares.residual * factor,
+    )
+    assumed = workspace.assumed(a) | workspace.assumed(b)
+    story = tell_difference(full_name(workspace, a), full_name(workspace, b), shares, verdict, assumed=sorted(assumed))
+    note = "mW cm⁻², order-free shares" + ("; whiskers 95 %, fit noise only" if shares.intervals else "")
+    return bars, {"story": story, "note": note, "sources": _sources(states)}
+
+
+def _sources(states: tuple[State, State]) -> str:
+    words = {s.source for s in states}
+    if len(words) == 1:
+        return f"Both curves were {words.pop()}." if "" not in words else ""
+    return " ".join(f"The curve of {letter} was {s.source}." for letter, s in zip("AB", states, strict=True) if s.source)
+
+
+def _verdict(
+    workspace: Workspace, a: str, b: str, states: tuple[State | None, State | None], known: Mapping[str, Any]
+) -> Verdict:
+    budget = budget_of(
+        workspace, a, b, lambda entry: readout.measured(workspace.sweep(entry)),
+        area=_relative(known.get("area")), lamp=_relative(known.get("lamp")), area_shared=bool(known.get("area_shared")),
+        ideality=states[0].model.ideality if states[0] else 1.0,
+    )
+    return stands_out(readout.measured(workspace.sweep(a)), readout.measured(workspace.sweep(b)), budget)
+
+
+def _relative(text: Any) -> float | None:
+    """A percentage that the user typed, or None where the field is empty.
+
+    Raises ConditionRefused, with a sentence, if it is no percentage.
+    """
+    if text is None or not str(text).strip():
+        return None
+    value = parse_number(str(text), "Uncertainty")
+    if not 0 <= value <= 100:
+        raise ConditionRefused("An uncertainty must be a percentage between 0 and 100.")
+    return value / 100
+
+
+def _compared(workspace: Workspace, a: str, b: str, verdict: Verdict) -> dict[str, dict[str, str]]:
+    sweep_a, sweep_b = workspace.sweep(a), workspace.sweep(b)
+    units = Units.of(sweep_a.per_area)
+    rows = {}
+    for name in readout.METRIC_ROWS:
+        factor, unit = readout.metric_unit(name, units)
+        values = [getattr(readout.measured(s), name).value for s in (sweep_a, sweep_b)]
+        cells = [number(None if v is None else v * factor) for v in values]
+        found = verdict.by_metric.get(name)
+        gap = None if None in values else (values[1] - values[0]) * factor
+        reach = None if found is None or found.uncertainty is None else found.uncertainty * factor
+        rows[name] = {
+            "a": cells[0],
+            "b": cells[1],
+            "difference": ("+" if gap is not None and gap > 0 else "") + concise(gap, reach),
+            "verdict": found.word if found else "",
+            "reason": f"{unit}. {found.sentence if found else ''}".strip(),
+        }
+    return rows
+
+
+def answer_what_if(workspace: Workspace, event: Mapping[str, Any]) -> dict[str, Any]:
+    """Live: A with some mechanisms moved towards B's."""
+    states = []
+    for letter in "ab":
+        state = state_of(workspace, workspace.entry(str(event[letter])).id)
+        if state is None:
+            raise StepRefused("No diode curve can be laid over one of the two.")
+        states.append(state)
+    sweep = workspace.sweep(str(event["a"]))
+    fractions = {name: float(f) for name, f in dict(event["fractions"]).items() if name in PARAMETERS}
+    model = moved_towards(states[0].model, states[1].model, fractions)
+    side = Side(sweep, states[0].model, "")
+    x, y = what_if_line(side, model, bool(event.get("normalised"))) if any(fractions.values()) else ([], [])
+    before, after = states[0].model.landmarks().pmp, model.landmarks().pmp
+    units = Units.of(sweep.per_area)
+    gain = (after - before) * units.power_factor
+    words = f"{number(after * units.power_factor)} {units.power}, {power_change(gain) if sweep.per_area else number(gain, digits=3)}"
+    if sweep.per_area:
+        words += f"; PCE {100 * after / sweep.irradiance:.2f} %"
+    return {"x": x, "y": y, "words": f"A would deliver {words}."}
+
+
+def moved_towards(model_a: OneDiode, model_b: OneDiode, fractions: Mapping[str, float]) -> OneDiode:
+    """A with each mechanism moved its own part of the way to B's value."""
+    model = model_a
+    # The photocurrent last: it sets the reference at which the diode's voltage is read.
+    for name in sorted(fractions, key=lambda n: n == "photocurrent"):
+        if fractions[name] > 0:
+            model = what_if(model, model_b, [name], fractions[name])
+    return model

@@ -1,0 +1,273 @@
+"""Tables of chosen sweeps as data frames: numbers in full, units in the headers, one row a sweep.
+
+A column of another unit (amperes where no area is known) is a column of its own; nothing is converted between them.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Iterator, Sequence
+from itertools import combinations
+from typing import Any
+
+import pandas as pd
+
+from core.checks import Finding, check_pair
+from core.diode import PARAMETERS
+from core.errors import ConditionRefused
+from core.limit_check import check_against_limit
+from core.quantity import Quantity
+from core.refinement import Refinement
+from core.sweep import Sweep
+from core.workspace import Workspace
+
+from . import readout
+from .mechanisms import BY_PARAMETER
+from .units import Units, celsius
+
+Row = dict[str, Any]
+
+METRICS = ("jsc", "voc", "fill_factor", "efficiency", "pmp", "jmp", "vmp", "slope_resistance_jsc", "slope_resistance_voc")
+_RESISTANCES = {"slope_resistance_jsc": "−dV/d{0} at V = 0", "slope_resistance_voc": "−dV/d{0} at {0} = 0"}
+_PLAIN_NAMES = {"voc": "Voc", "vmp": "Vmp", "fill_factor": "FF", "efficiency": "PCE", "pmp": "Pmp"}
+
+
+def metric_name(metric: str, units: Units) -> str:
+    """``Jsc``, or ``Isc`` where no area is known."""
+    if metric in _RESISTANCES:
+        return _RESISTANCES[metric].format(units.letter)
+    return _PLAIN_NAMES.get(metric) or units.letter + metric[1:]
+
+
+def metric_unit(metric: str, units: Units) -> tuple[float, str]:
+    """Factor from core's unit, and the unit of the screen."""
+    if metric in _RESISTANCES:
+        return 1.0, units.resistance
+    return readout.metric_unit(metric, units)
+
+
+def parameter_name(parameter: str, units: Units) -> str:
+    """``Jph``, ``J0``, ``n``, ``Rs``, ``Rsh``."""
+    mechanism = BY_PARAMETER[parameter]
+    return (units.letter if mechanism.symbol == "J" else mechanism.symbol) + mechanism.index
+
+
+def headed(name: str, unit: str) -> str:
+    return f"{name} ({unit})" if unit else name
+
+
+def metrics_table(workspace: Workspace, entries: Iterable[str]) -> pd.DataFrame:
+    """Figures of merit of the points with their standard uncertainties, and why one is missing."""
+    return _frame({**_identity(workspace, entry), **_metrics(workspace.sweep(entry))} for entry in entries)
+
+
+def parameters_table(workspace: Workspace, entries: Iterable[str]) -> pd.DataFrame:
+    """Diode parameters with standard errors and intervals of fit noise, and the settings of the fit."""
+    return _frame({**_identity(workspace, entry), **_parameters(workspace, entry)} for entry in entries)
+
+
+def conditions_table(workspace: Workspace, entries: Iterable[str]) -> pd.DataFrame:
+    """What was measured, how, and from which file; beside each condition that can be assumed, whether it is."""
+    return _frame({**_identity(workspace, entry), **_conditions(workspace, entry)} for entry in entries)
+
+
+def checks_table(workspace: Workspace, entries: Sequence[str]) -> pd.DataFrame:
+    """One row a finding."""
+    columns = ["device", "group", "sweep", "severity", "check", "finding", "meaning", "remedy"]
+    rows = [
+        {**_identity(workspace, entry), "severity": f.severity, "check": f.name, "finding": f.what, "meaning": f.meaning,
+         "remedy": f.remedy}
+        for entry, f in all_findings(workspace, entries)
+    ]
+    return pd.DataFrame(rows, columns=columns)
+
+
+def tables(workspace: Workspace, entries: Sequence[str]) -> dict[str, pd.DataFrame]:
+    """All four by name, in the order of a workbook's sheets."""
+    return {
+        "metrics": metrics_table(workspace, entries),
+        "parameters": parameters_table(workspace, entries),
+        "conditions": conditions_table(workspace, entries),
+        "checks": checks_table(workspace, entries),
+    }
+
+
+def summary_table(workspace: Workspace, entries: Sequence[str]) -> pd.DataFrame:
+    """Everything on one row a sweep; of the checks, the names of those that are more than a note."""
+    flags: dict[str, list[str]] = {}
+    for entry, finding in all_findings(workspace, entries):
+        if finding.severity != "note":
+            flags.setdefault(entry, []).append(finding.name)
+    return _frame(
+        {
+            **_identity(workspace, entry),
+            **_metrics(workspace.sweep(entry)),
+            **_parameters(workspace, entry),
+            **_conditions(workspace, entry),
+            "checks": ", ".join(dict.fromkeys(flags.get(entry, ()))),
+        }
+        for entry in entries
+    )
+
+
+def points_table(workspace: Workspace, entry: str) -> pd.DataFrame:
+    """The measured points in their order, and the model's current at each where there is a model."""
+    sweep, model = workspace.sweep(entry), workspace.fit(entry).model
+    units = Units.of(sweep.per_area)
+    columns = {
+        headed("V", "V"): sweep.voltage,
+        headed(units.letter, units.current): sweep.current * units.current_factor,
+        headed("P", units.power): sweep.voltage * sweep.current * units.power_factor,
+    }
+    if model is not None:
+        modelled = model.current(sweep.voltage)
+        columns[headed(f"{units.letter} of the model", units.current)] = modelled * units.current_factor
+        columns[headed("residual", units.current)] = (sweep.current - modelled) * units.current_factor
+    return pd.DataFrame(columns)
+
+
+def all_findings(workspace: Workspace, entries: Sequence[str]) -> Iterator[tuple[str, Finding]]:
+    """Entry and finding: of each sweep, its fit and its reading, of its gap, and of forward and reverse together."""
+    for entry in entries:
+        refined = workspace.refined(entry)
+        seen = set()
+        for finding in (*_of_gap(workspace, entry), *_of_sweep(workspace.sweep(entry), refined), *_of_pairs(workspace, entry, entries)):
+            if finding.what not in seen:
+                seen.add(finding.what)
+                yield entry, finding
+
+
+def _of_sweep(sweep: Sweep, refined: Refinement | None) -> Iterator[Finding]:
+    for row in readout.finding_rows(sweep, refined):
+        yield Finding(row["name"], row["severity"], row["what"], row["meaning"], row["remedy"])
+
+
+def _of_gap(workspace: Workspace, entry: str) -> tuple[Finding, ...]:
+    sweep, gap = workspace.sweep(entry), workspace.devices[workspace.entry(entry).device].band_gap
+    if gap is None or not sweep.lit or not sweep.per_area or sweep.series_cells > 1:
+        return ()
+    try:
+        return check_against_limit(readout.measured(sweep).jsc, gap, sweep.irradiance)
+    except ConditionRefused as refusal:
+        return (Finding("band gap", "caution", str(refusal), "", ""),)
+
+
+def _of_pairs(workspace: Workspace, entry: str, entries: Sequence[str]) -> Iterator[Finding]:
+    """Hysteresis, told once: at the forward sweep."""
+    device = workspace.entry(entry).device
+    for one, other in combinations([e for e in entries if workspace.entry(e).device == device], 2):
+        forward, reverse = sorted((one, other), key=lambda e: workspace.sweep(e).direction)
+        a, b = workspace.sweep(forward), workspace.sweep(reverse)
+        if forward == entry and (a.direction, b.direction) == ("forward", "reverse") and a.conditions == b.conditions and a.lit:
+            yield from check_pair(a, b)
+
+
+def _frame(rows: Iterable[Row]) -> pd.DataFrame:
+    """Columns in the order in which the rows bring them."""
+    rows = list(rows)
+    columns = list(dict.fromkeys(name for row in rows for name in row))
+    return pd.DataFrame(rows, columns=columns)
+
+
+def _identity(workspace: Workspace, entry_id: str) -> Row:
+    entry = workspace.entry(entry_id)
+    device = workspace.devices[entry.device]
+    return {"device": device.name, "group": device.group, "sweep": entry.name}
+
+
+def _metrics(sweep: Sweep) -> Row:
+    units, values = Units.of(sweep.per_area), readout.measured(sweep)
+    row: Row = {}
+    reasons = []
+    for metric in METRICS:
+        quantity: Quantity = getattr(values, metric)
+        name, (factor, unit) = metric_name(metric, units), metric_unit(metric, units)
+        row[headed(name, unit)] = _times(quantity.value, factor)
+        row[headed(f"{name} standard uncertainty", unit)] = _times(quantity.uncertainty, factor)
+        if quantity.reason:
+            reasons.append(f"{name}: {quantity.reason}")
+    return {**row, "remarks on metrics": "; ".join(reasons)}
+
+
+def _times(value: float | None, factor: float) -> float:
+    return math.nan if value is None else value * factor
+
+
+def _parameters(workspace: Workspace, entry: str) -> Row:
+    fit, refined = workspace.fit(entry), workspace.refined(entry)
+    units = Units.of(workspace.sweep(entry).per_area)
+    row: Row = {"model": _model_state(fit.model is not None, refined)}
+    for parameter in PARAMETERS:
+        name, unit, factor = parameter_name(parameter, units), units.parameter_unit(parameter), units.parameter_factor(parameter)
+        error, low, high, state = None, None, None, ""
+        if refined is not None:
+            error = refined.standard_errors.get(parameter)
+            low, high = refined.intervals.get(parameter, (None, None))
+            state = parameter_state(refined, parameter)
+        row[headed(name, unit)] = _times(None if fit.model is None else getattr(fit.model, parameter), factor)
+        row[headed(f"{name} standard error", unit)] = _times(error, factor)
+        row[headed(f"{name} interval from", unit)] = _times(low, factor)
+        row[headed(f"{name} interval to", unit)] = _times(high, factor)
+        row[f"{name} state"] = state
+    row[headed("rms residual", units.current)] = _times(None if refined is None else refined.rmse, units.current_factor)
+    row["points used"] = math.nan if refined is None else refined.points
+    row["confidence of intervals (%)"] = math.nan if refined is None else 100 * refined.settings.confidence
+    row["uncertainty of parameters"] = "" if refined is None else "fit noise only"
+    row["fit settings"] = settings_text(refined) if refined is not None else ""
+    return row
+
+
+def _model_state(there: bool, refined: Refinement | None) -> str:
+    if refined is not None:
+        return f"{refined.settings.model}, refined"
+    return "one diode, set by hand, not refined" if there else "none"
+
+
+def parameter_state(refined: Refinement, parameter: str) -> str:
+    """How well the data fix a parameter."""
+    if parameter not in refined.free:
+        return "held"
+    if refined.standard_errors.get(parameter) is not None:
+        return "free"
+    low, high = refined.intervals.get(parameter, (0.0, math.inf))
+    return "bounded only" if low > 0 or math.isfinite(high) else "not determined"
+
+
+def settings_text(refined: Refinement) -> str:
+    """The settings of a fit on one line."""
+    settings = refined.settings
+    window = "all voltages" if settings.window is None else f"{settings.window[0]:g} to {settings.window[1]:g} V"
+    held = ", ".join(p.replace("_", " ") for p in PARAMETERS if p in settings.hold) or "nothing"
+    bounds = ", ".join(f"{name.replace('_', ' ')} {low:g} to {high:g}" for name, (low, high) in settings.bounds.items())
+    return (
+        f"{settings.model}; {refined.weights} weights; {settings.loss} loss; {window}; "
+        f"{len(settings.excluded) or 'no'} points excluded; held: {held}; {'bounds: ' + bounds if bounds else 'built-in bounds'}"
+    )
+
+
+def _conditions(workspace: Workspace, entry_id: str) -> Row:
+    entry, sweep, assumed = workspace.entry(entry_id), workspace.sweep(entry_id), workspace.assumed(entry_id)
+    device, conditions = workspace.devices[entry.device], sweep.conditions
+    row: Row = {
+        "measured in": "light" if sweep.lit else "dark",
+        "direction": sweep.direction,
+        "area (cm²)": _times(conditions.area, 1.0),
+        "area in the file (cm²)": _times(conditions.file_area, 1.0),
+        "irradiance (mW cm⁻²)": conditions.irradiance * 1e3,
+        "irradiance given": _given("irradiance", assumed),
+        "temperature (°C)": round(celsius(conditions.temperature), 6),
+        "temperature given": _given("temperature", assumed),
+        "cells in series": conditions.series_cells,
+        "cells in series given": _given("series_cells", assumed),
+        "units given": _given("units", assumed),
+        "band gap (eV)": _times(device.band_gap, 1.0),
+        "scan rate (V s⁻¹)": _times(sweep.scan_rate, 1.0),
+        "points": sweep.voltage.size,
+        "file": entry.source_name,
+        "SHA-256 of the file": entry.source or "",
+    }
+    return row
+
+
+def _given(name: str, assumed: frozenset[str]) -> str:
+    return "assumed" if name in assumed else "given"

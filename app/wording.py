@@ -1,0 +1,116 @@
+"""Numbers and short phrases as the screen shows them."""
+
+from __future__ import annotations
+
+import math
+import re
+
+from core.errors import ConditionRefused
+
+_SUPERSCRIPT = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
+_PLAIN = str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻⁺", "0123456789-+")
+_POWER_OF_TEN = re.compile(r"[·×*]10(?:\^([+-]?\d+)|([⁺⁻]?[⁰¹²³⁴⁵⁶⁷⁸⁹]+))$")
+_LONE_POWER = re.compile(r"^([+-]?)(?=10[\^⁺⁻⁰¹²³⁴⁵⁶⁷⁸⁹])")
+_MOST_DIGITS = 7  # of a value whose uncertainty would allow still more
+
+
+def number(value: float | None, uncertainty: float | None = None, digits: int = 4) -> str:
+    """A value with as many digits as its standard uncertainty allows (two of its digits stay).
+
+    Without an uncertainty: ``digits`` significant digits.
+    """
+    if value is None or math.isnan(value):
+        return "–"
+    if math.isinf(value):
+        return "∞" if value > 0 else "−∞"
+    if uncertainty and math.isfinite(uncertainty) and uncertainty > 0:
+        last = _exponent(float(f"{uncertainty:.1e}")) - 1
+        if value:
+            last = max(last, _exponent(value) - _MOST_DIGITS + 1)
+    elif value:
+        last = _exponent(float(f"{value:.{digits - 1}e}")) - digits + 1
+    else:
+        return "0"
+    mantissa, _, power = _written(value, last)
+    return mantissa + power
+
+
+def _exponent(value: float) -> int:
+    """Power of ten of the first digit; what rounding left just below a power counts as it."""
+    return int(f"{value:.12e}".partition("e")[2])
+
+
+def _written(value: float, last: int) -> tuple[str, int, str]:
+    """A value rounded at a place, the power of ten written apart, and that power as text ("" for none)."""
+    rounded = round(value, -last) + 0.0  # no minus before a zero
+    exponent = _exponent(rounded) if rounded else last
+    apart = exponent if (exponent < -3 or exponent >= 6) and (rounded or last < -6) else 0
+    mantissa = f"{rounded / 10.0**apart:.{max(apart - last, 0)}f}".replace("-", "−")
+    return mantissa, apart, f"·10{str(apart).translate(_SUPERSCRIPT)}" if apart else ""
+
+
+def field(value: float | None) -> str:
+    """A value as a number field holds it: plain text that can be typed back."""
+    if value is None:
+        return ""
+    return "∞" if math.isinf(value) else f"{value:.5g}"
+
+
+def parse_number(text: str, what: str) -> float:
+    """The number that a person typed: ``1.2e-9``, ``1,2``, ``1.2·10⁻⁹``, ``inf``, ``∞``.
+
+    Raises
+    ------
+    ConditionRefused
+        With a sentence that quotes the text.
+    """
+    plain = "".join(text.split()).replace("−", "-")
+    plain = _LONE_POWER.sub(r"\g<1>1·", plain)
+    plain = _POWER_OF_TEN.sub(lambda found: "e" + (found[1] or found[2].translate(_PLAIN)), plain)
+    if plain.count(",") == 1 and "." not in plain:
+        plain = plain.replace(",", ".")
+    if plain.lower() in ("∞", "inf", "infinity"):
+        return math.inf
+    try:
+        value = float(plain)
+    except ValueError:
+        raise ConditionRefused(
+            f"{what}: “{text.strip()[:40]}” is not a number. Type it like 22.5, 1.2e-9 or 1,2."
+        ) from None
+    if math.isnan(value):
+        raise ConditionRefused(f"{what}: a number is needed. Type it like 22.5, 1.2e-9 or 1,2.")
+    return value
+
+
+def with_uncertainty(value: float | None, uncertainty: float | None) -> str:
+    """``22.012 ± 0.031``; just the value where no uncertainty is known."""
+    text = number(value, uncertainty)
+    if _nothing(value) or not uncertainty or not math.isfinite(uncertainty):
+        return text
+    return f"{text} ± {plus_minus(uncertainty)}"
+
+
+def concise(value: float | None, uncertainty: float | None) -> str:
+    """``22.01(3)``: the uncertainty of the last digits in brackets, as the Guide to the Expression of Uncertainty writes it."""
+    if _nothing(value) or not uncertainty or not math.isfinite(uncertainty):
+        return number(value)
+    uncertainty = float(f"{uncertainty:.0e}")
+    last = _exponent(uncertainty)
+    if value and _exponent(value) - last >= _MOST_DIGITS:
+        return number(value, uncertainty)
+    mantissa, apart, power = _written(value, last)
+    return f"{mantissa}({round(uncertainty / 10.0 ** min(last, apart))}){power}"
+
+
+def _nothing(value: float | None) -> bool:
+    return value is None or not math.isfinite(value)
+
+
+def power_change(change: float) -> str:
+    """A gain or loss in mW cm⁻² with its sign, to the hundredth that lamps and areas allow at best."""
+    text = f"{change:+.2f}".replace("-", "−")
+    return "0.00" if text in ("+0.00", "−0.00") else text
+
+
+def plus_minus(uncertainty: float) -> str:
+    return number(uncertainty, digits=2)

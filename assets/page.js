@@ -1,0 +1,167 @@
+/* The page: what arrives from the server's callbacks, shortcuts, theme, and the plot's own events. */
+(() => {
+  const bench = (window.sweepbench ??= {});
+  bench.view = {};
+  let arrived = false; // the first revision is the server's choice, not the user's
+  let seen = { workspace: null, revision: null };
+
+  bench.setProps = (id, props) => window.dash_clientside.set_props(id, props);
+  /** The workspace and revision that this tab has seen. */
+  bench.stamp = () => ({ workspace: seen.workspace, revision: seen.revision });
+  bench.changeView = (changes) => {
+    // At once, because the next change may come before this one has gone round.
+    bench.view = { ...bench.view, ...changes };
+    bench.setProps("view", { data: bench.view });
+  };
+
+  window.Plotly?.setPlotConfig?.({ showSendToCloud: false, displaylogo: false, plotlyServerURL: "" });
+
+  window.dash_clientside = window.dash_clientside ?? {};
+  window.dash_clientside.sweepbench = {
+    revision(data) {
+      if (!data) return;
+      if (data.workspace !== seen.workspace || data.revision !== seen.revision) bench.live.drop();
+      seen = { workspace: data.workspace, revision: data.revision };
+      if (bench.view.workspace !== seen.workspace && data.revision !== null && arrived) bench.changeView({ workspace: seen.workspace });
+      arrived = true;
+      if (data.event) bench.acknowledge(data.event);
+      if (data.sentence) bench.say(data.sentence);
+      bench.live.kick();
+    },
+    view(data) {
+      const first = !document.body.dataset.screen;
+      bench.view = data ?? {};
+      if (first) showScreen(location.pathname, false);
+      // A reloaded tab goes back to the workspace that it was on.
+      if (first && bench.view.workspace && seen.workspace && bench.view.workspace !== seen.workspace) {
+        bench.setProps("errand", { data: { kind: "open", workspace: bench.view.workspace, at: Date.now() } });
+      }
+    },
+    scene: (data) => bench.receiveScene(data),
+    tray: (data) => bench.receiveTray(data),
+    intervals: (data) => bench.receiveIntervals(data),
+    pair: (data) => bench.receivePair(data),
+    losses: (data) => bench.receiveLosses(data),
+    workspaces: (data) => bench.receiveWorkspaces(data),
+    notice: (data) => data && bench.say(data.sentence),
+    samples: (clicks) => clicks && bench.openSamples(),
+  };
+
+  /* The plot's events; the element is made by the framework some time after the page. */
+  function hookPlot() {
+    const graph = bench.graph();
+    if (!graph?.on || graph.dataset.hooked) return;
+    graph.dataset.hooked = "yes";
+    for (const event of ["plotly_afterplot", "plotly_relayouting", "plotly_autosize"]) graph.on(event, bench.afterPlot);
+    graph.on("plotly_doubleclick", () => window.Plotly.relayout(graph, graph.layout.meta?.whole ?? {}));
+    new ResizeObserver(() => bench.afterPlot()).observe(graph);
+    bench.afterPlot();
+  }
+  new MutationObserver(hookPlot).observe(document.documentElement, { childList: true, subtree: true });
+
+  /* Theme: the system's until the user chooses. */
+  const root = document.documentElement;
+  const dark = window.matchMedia("(prefers-color-scheme: dark)");
+  const applyTheme = () => (root.dataset.theme = localStorage.getItem("sweepbench-theme") ?? (dark.matches ? "dark" : "light"));
+  dark.addEventListener("change", applyTheme);
+  applyTheme();
+
+  /* Screens: the address chooses; nothing is loaded anew. */
+  function showScreen(address, remember) {
+    const links = [...document.querySelectorAll("nav [data-screen]")];
+    const link = links.find((each) => each.getAttribute("href") === address) ?? links[0];
+    if (!link) return;
+    if (remember) history.pushState(null, "", link.getAttribute("href"));
+    document.body.dataset.screen = link.dataset.screen;
+    for (const each of links) each.removeAttribute("aria-current");
+    link.setAttribute("aria-current", "page");
+    if (bench.view.screen !== link.dataset.screen) bench.changeView({ screen: link.dataset.screen });
+  }
+  window.addEventListener("popstate", () => showScreen(location.pathname, false));
+  document.addEventListener("click", (click) => {
+    const link = click.target.closest?.("nav [data-screen]");
+    if (!link || click.ctrlKey || click.metaKey || click.shiftKey) return;
+    click.preventDefault();
+    showScreen(link.getAttribute("href"), true);
+  });
+
+  async function savePicture(format, graph = bench.graph(), title = `${bench.scene.title} ${bench.scene.subtitle}`) {
+    const name = title.replace(/[^\p{L}\p{N}._-]+/gu, "-");
+    await window.Plotly.downloadImage(graph, { format, width: 1000, height: 720, scale: format === "png" ? 3 : 1, filename: name });
+  }
+
+  /** Hand a file out; what is asked for stands in the address. */
+  function download(path, query = {}) {
+    const link = document.createElement("a");
+    link.href = `/files/${path}?${new URLSearchParams(query)}`;
+    link.download = "";
+    link.click();
+  }
+  const here = () => encodeURIComponent(bench.stamp().workspace);
+
+  function saveReport() {
+    if (!bench.scene?.entry) return;
+    const { a, b } = document.body.dataset.screen === "pair" ? bench.pairChoice() : {};
+    if (a && b) return download(`report/${here()}`, { entries: `${a},${b}`, pair: `${a},${b}` });
+    const laid = (bench.view.overlay ?? []).filter((entry) => document.getElementById(`sweep-${entry}`));
+    download(`report/${here()}`, { entries: [bench.scene.entry, ...laid].join(",") });
+  }
+
+  const acts = {
+    theme() {
+      localStorage.setItem("sweepbench-theme", root.dataset.theme === "dark" ? "light" : "dark");
+      applyTheme();
+    },
+    help() {
+      const sheet = document.querySelector(".help");
+      sheet.hidden = !sheet.hidden;
+      if (!sheet.hidden) sheet.querySelector("button").focus();
+    },
+    "leave-out": () => bench.armLeaveOut(),
+    "use-all": () => bench.useAll(),
+    "pick-files": () => bench.pick(false),
+    "pick-folder": () => bench.pick(true),
+    "save-svg": () => savePicture("svg"),
+    "save-png": () => savePicture("png"),
+    "save-report": saveReport,
+    "save-csv": () => download(`table/${here()}.csv`),
+    "save-xlsx": () => download(`table/${here()}.xlsx`),
+  };
+  document.addEventListener("click", (click) => {
+    const act = click.target.closest?.("[data-act]")?.dataset.act;
+    if (act) (acts[act] ?? bench.workspaceActs[act])?.();
+    const save = click.target.closest?.("[data-save]")?.dataset;
+    if (save) savePicture(save.save, document.querySelector(`#${save.graph} .js-plotly-plot`), `${save.graph} ${bench.scene.title}`);
+    const strip = click.target.closest?.("[data-strip]");
+    if (strip) bench.changeView({ strip: strip.dataset.strip });
+    if (click.target.id === "notice-line") bench.say("");
+  });
+
+  const press = (id) => {
+    const button = document.getElementById(id);
+    if (button && !button.disabled) button.click();
+  };
+  const strips = { 1: "residuals", 2: "log", 3: "ideality" };
+  document.addEventListener("keydown", (key) => {
+    const typing = key.target.matches?.("input[type=text], input:not([type]), textarea, select");
+    const letter = key.key.toLowerCase();
+    if ((key.ctrlKey || key.metaKey) && !key.altKey && letter === "z" && !typing) {
+      key.preventDefault();
+      press(key.shiftKey ? "redo" : "undo");
+    }
+    if (typing || key.ctrlKey || key.metaKey || key.altKey) return;
+    if (letter === "e") bench.armLeaveOut();
+    if (letter === "g") press("first-guess");
+    if (letter === "r") press("refine");
+    if (letter === "h") {
+      const parameter = key.target.closest?.("[data-parameter]")?.dataset.parameter;
+      if (parameter) bench.toggleHold(parameter);
+    }
+    if (strips[key.key] && bench.scene?.entry) bench.changeView({ strip: strips[key.key] });
+    if (key.key === "Escape") {
+      document.querySelector(".help").hidden = true;
+      bench.toggleWorkspaces(false);
+      bench.armLeaveOut(false);
+    }
+  });
+})();

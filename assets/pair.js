@@ -1,0 +1,248 @@
+/* The pair and losses screens: choices, numbers, and the hand on their sliders. What follows is computed in core. */
+(() => {
+  const bench = (window.sweepbench ??= {});
+  bench.pair = null;
+  bench.losses = null;
+  let touched = {}; // targets that the hand has moved
+
+  const byId = (id) => document.getElementById(id);
+  const text = (element, words) => {
+    if (element && element.textContent !== words) element.textContent = words ?? "";
+  };
+  const refuse = (id, sentence) => {
+    text(byId(id), sentence);
+    byId(id).hidden = !sentence;
+  };
+  const check = (attribute, value) => {
+    for (const button of document.querySelectorAll(`[${attribute}]`)) {
+      button.setAttribute("aria-checked", String(button.getAttribute(attribute) === value));
+    }
+  };
+
+  function slider(host, title) {
+    let field = host.querySelector("input");
+    if (field) return field;
+    field = document.createElement("input");
+    Object.assign(field, { type: "range", min: 0, max: 1, step: 0.005, value: 0, autocomplete: "off" });
+    field.setAttribute("aria-label", title);
+    host.append(field);
+    return field;
+  }
+  const turn = (field, fraction) => {
+    field.value = fraction;
+    field.style.setProperty("--fill", `${100 * fraction}%`);
+  };
+
+  /* Which sweeps are compared */
+  function slot(name, chosen) {
+    const host = document.querySelector(`[data-slot=${name}]`);
+    const field = host.querySelector("select") ?? host.appendChild(document.createElement("select"));
+    field.setAttribute("aria-label", host.dataset.title);
+    const options = (bench.devices ?? []).flatMap((device) =>
+      device.sweeps.filter((sweep) => sweep.direction !== "dark").map((sweep) => new Option(`${device.name} ${sweep.label}`, sweep.entry)),
+    );
+    field.replaceChildren(...options);
+    field.value = chosen ?? "";
+  }
+
+  bench.receivePair = (data) => {
+    if (!data) return;
+    bench.pair = data;
+    slot("a", data.a);
+    slot("b", data.b);
+    check("data-pair-scale", data.normalised ? "normalised" : "absolute");
+    refuse("pair-refusal", data.refusal);
+    text(byId("pair-story"), data.story);
+    text(byId("pair-sources"), data.sources);
+    text(byId("pair-bars-note"), data.note);
+    text(byId("what-if-line"), data.whatIf);
+    for (const [name, cells] of Object.entries(data.compared ?? {})) {
+      const row = document.querySelector(`[data-compared=${name}]`);
+      for (const column of ["a", "b", "difference", "verdict"]) text(row.querySelector(`[data-column=${column}]`), cells[column]);
+      row.title = cells.reason;
+    }
+    for (const row of document.querySelectorAll(".what-if:not(.target)")) {
+      const field = slider(row.querySelector(".slider"), `Move ${row.dataset.title} of A to B`);
+      field.disabled = Boolean(data.refusal);
+      turn(field, 0);
+    }
+    for (const host of document.querySelectorAll("[data-budget]")) {
+      const field = host.querySelector("input") ?? host.appendChild(document.createElement("input"));
+      field.setAttribute("aria-label", host.dataset.title);
+      field.value = data.budget?.[host.dataset.budget] ?? "";
+    }
+    for (const button of document.querySelectorAll("[data-budget-switch]")) {
+      button.setAttribute("aria-checked", String(Boolean(data.budget?.[button.dataset.budgetSwitch])));
+    }
+    bench.paintSelection?.();
+  };
+
+  const budget = (changes) => bench.changeView({ budget: { ...bench.view.budget, ...changes } });
+
+  function whatIf() {
+    const rows = [...document.querySelectorAll(".what-if:not(.target)")];
+    const fractions = Object.fromEntries(rows.map((row) => [row.dataset.parameter, Number(row.querySelector("input").value)]));
+    for (const row of rows) turn(row.querySelector("input"), fractions[row.dataset.parameter]);
+    const { a, b, normalised } = bench.pair;
+    bench.live.push({ kind: "what-if", a, b, normalised, fractions }, (answer, status) => {
+      if (status !== 200) return bench.say(answer.sentence);
+      text(byId("what-if-line"), answer.words);
+      draw("#pair-plot .js-plotly-plot", "what-if", answer.x, answer.y);
+    });
+  }
+
+  /** Put points into one trace of a figure that stays. */
+  function draw(where, uid, x, y) {
+    const graph = document.querySelector(where);
+    const index = graph?.data?.findIndex((trace) => trace.uid === uid) ?? -1;
+    if (index < 0) return;
+    window.Plotly.animate(
+      graph,
+      { data: [{ x, y }], traces: [index] },
+      { mode: "immediate", transition: { duration: 0 }, frame: { duration: 0, redraw: false } },
+    );
+  }
+
+  /** The ladder is small and made of bars, which do not survive an animation: it is restyled. */
+  function mark(x, y) {
+    const graph = document.querySelector("#ladder .js-plotly-plot");
+    const index = graph?.data?.findIndex((trace) => trace.uid === "target") ?? -1;
+    if (index >= 0) window.Plotly.restyle(graph, { x: [x], y: [y] }, [index]);
+  }
+
+  /* Losses */
+  bench.receiveLosses = (data) => {
+    if (!data) return;
+    bench.losses = data;
+    touched = {};
+    text(byId("losses-title"), data.title);
+    text(byId("losses-subtitle"), data.subtitle);
+    refuse("losses-refusal", data.refusal);
+    check("data-ladder", data.ladder);
+    byId("losses-story").replaceChildren(...(data.story ?? []).map((words) => Object.assign(document.createElement("p"), { textContent: words })));
+    const gap = document.querySelector("[data-condition=band_gap]");
+    const field = gap.querySelector("input") ?? gap.querySelector(".value").appendChild(document.createElement("input"));
+    field.setAttribute("aria-label", "band gap");
+    field.value = data.bandGap?.text ?? "";
+    gap.querySelector(".assumed").hidden = !data.bandGap?.assumed;
+    const emission = byId("emission-choice");
+    const choice = emission.querySelector("select") ?? emission.appendChild(document.createElement("select"));
+    choice.setAttribute("aria-label", "emission from");
+    choice.replaceChildren(new Option("the front (mirror behind)", "front"), new Option("both faces", "both"));
+    choice.value = data.emission;
+    byId("losses-table").replaceChildren(...(data.rows ?? []).map(lossRow));
+    for (const [parameter, place] of Object.entries(data.targets ?? {})) {
+      const row = document.querySelector(`.target[data-parameter=${parameter}]`);
+      turn(slider(row.querySelector(".slider"), `Target of the ${row.dataset.title}`), place.fraction);
+      text(row.querySelector(".target-value"), place.text);
+    }
+    text(byId("target-line"), data.targetWords);
+    document.body.classList.toggle("projector", Boolean(data.projector));
+  };
+
+  function lossRow(row) {
+    const line = document.createElement("tr");
+    line.dataset.loss = row.parameter;
+    const name = document.createElement("th");
+    name.scope = "row";
+    if (row.movable) {
+      for (const [words, by, sign] of [["earlier", -1, "↑"], ["later", 1, "↓"]]) {
+        const button = Object.assign(document.createElement("button"), { className: "quiet order", textContent: sign });
+        button.setAttribute("aria-label", `${row.name}: ${words} in the ladder`);
+        button.addEventListener("click", () => reorder(row.parameter, by));
+        name.append(button);
+      }
+      line.draggable = true;
+    }
+    name.append(row.name);
+    line.append(name, ...[row.loss, row.share].map((words) => Object.assign(document.createElement("td"), { textContent: words })));
+    return line;
+  }
+
+  function reorder(parameter, by, before = null) {
+    const order = bench.losses.order.filter((name) => name !== parameter);
+    const old = bench.losses.order.indexOf(parameter);
+    const at = before === null ? Math.max(0, Math.min(order.length, old + by)) : order.indexOf(before);
+    order.splice(at, 0, parameter);
+    bench.changeView({ order });
+  }
+  let carried = null;
+  document.addEventListener("dragstart", (drag) => (carried = drag.target.closest?.("tr[data-loss]")?.dataset.loss ?? null));
+  document.addEventListener("dragover", (drag) => carried && drag.target.closest?.("tr[data-loss]") && drag.preventDefault());
+  document.addEventListener("drop", (drop) => {
+    const onto = drop.target.closest?.("tr[data-loss]")?.dataset.loss;
+    if (carried && onto && onto !== carried && bench.losses.order.includes(onto)) {
+      drop.preventDefault();
+      reorder(carried, 0, onto);
+    }
+    carried = null;
+  });
+
+  function target(field) {
+    const row = field.closest("[data-parameter]");
+    touched[row.dataset.parameter] = Number(field.value);
+    turn(field, Number(field.value));
+    const { entry, emission } = bench.losses;
+    bench.live.push({ kind: "target", entry, emission, fractions: touched }, (answer, status) => {
+      if (status !== 200) return bench.say(answer.sentence);
+      text(byId("target-line"), answer.words);
+      for (const [parameter, words] of Object.entries(answer.values)) {
+        text(document.querySelector(`.target[data-parameter=${parameter}] .target-value`), words);
+      }
+      mark(answer.x, answer.y);
+    });
+  }
+
+  document.addEventListener("input", (event) => {
+    if (event.target.matches?.(".target input")) target(event.target);
+    else if (event.target.matches?.(".what-if input")) whatIf();
+  });
+  document.addEventListener("change", (event) => {
+    const name = event.target.closest?.("[data-slot]")?.dataset.slot;
+    if (name) bench.changeView({ pair: { ...bench.pairChoice(), [name]: event.target.value } });
+    const known = event.target.closest?.("[data-budget]")?.dataset.budget;
+    if (known) budget({ [known]: event.target.value });
+    if (event.target.closest?.("#emission-choice")) bench.changeView({ emission: event.target.value });
+  });
+  bench.pairChoice = () => ({ a: bench.pair?.a ?? null, b: bench.pair?.b ?? null });
+  bench.swap = () => {
+    const { a, b } = bench.pairChoice();
+    bench.changeView({ pair: { a: b, b: a } });
+  };
+
+  document.addEventListener("click", (click) => {
+    const scale = click.target.closest?.("[data-pair-scale]");
+    if (scale) bench.changeView({ normalised: scale.dataset.pairScale === "normalised" });
+    const ladder = click.target.closest?.("[data-ladder]");
+    if (ladder) bench.changeView({ ladder: ladder.dataset.ladder });
+    const known = click.target.closest?.("[data-budget-switch]")?.dataset.budgetSwitch;
+    if (known) budget({ [known]: !bench.view.budget?.[known] });
+    if (click.target.closest?.("[data-act=swap]")) bench.swap();
+    if (click.target.closest?.("[data-act=projector]")) bench.projector(true);
+  });
+
+  /* The projector: one chart, large type, the whole screen */
+  bench.projector = async (on) => {
+    bench.changeView({ projector: on });
+    try {
+      if (on && !document.fullscreenElement) await document.documentElement.requestFullscreen();
+      if (!on && document.fullscreenElement) await document.exitFullscreen();
+    } catch {
+      // A browser that allows no full screen still shows the large chart.
+    }
+  };
+  document.addEventListener("fullscreenchange", () => {
+    if (!document.fullscreenElement && bench.view.projector) bench.changeView({ projector: false });
+  });
+  document.addEventListener("keydown", (key) => {
+    if (key.target.matches?.("input, select, textarea") || key.ctrlKey || key.metaKey || key.altKey) return;
+    const screen = document.body.dataset.screen;
+    if (screen === "pair" && key.key.toLowerCase() === "x") bench.swap();
+    if (screen !== "losses") return;
+    if (key.key.toLowerCase() === "p") bench.projector(!bench.view.projector);
+    if (!bench.view.projector) return;
+    if (key.key === "Escape") bench.projector(false);
+    if (["ArrowRight", "ArrowDown", "PageDown", " "].includes(key.key)) bench.nextDevice(1);
+    if (["ArrowLeft", "ArrowUp", "PageUp"].includes(key.key)) bench.nextDevice(-1);
+  });
+})();

@@ -1,0 +1,142 @@
+/* The panels beside the numbers: fit settings, points left out, correlation, intervals and estimates. */
+(() => {
+  const bench = (window.sweepbench ??= {});
+  const byId = (id) => document.getElementById(id);
+  const make = (tag, words, className = "") => Object.assign(document.createElement(tag), { textContent: words, className });
+
+  /** What the open panel shows, at rest. */
+  bench.paintPanel = (scene) => {
+    for (const button of document.querySelectorAll("[data-panel-choice]")) {
+      button.setAttribute("aria-checked", String(button.dataset.panelChoice === scene.panel));
+    }
+    for (const panel of document.querySelectorAll(".panel")) panel.hidden = panel.dataset.panel !== scene.panel;
+    if (scene.settings) paintSettings(scene.settings);
+    if (scene.correlation) paintCorrelation(scene.correlation);
+    if (scene.estimates) paintEstimates(scene.estimates);
+  };
+
+  function fieldOf(row) {
+    const host = row.querySelector(".value");
+    if (host.firstElementChild) return host.firstElementChild;
+    const options = row.dataset.options ? row.dataset.options.split("|") : [];
+    const field = document.createElement(options.length ? "select" : "input");
+    for (const option of options) field.append(new Option(option, option));
+    field.setAttribute("aria-label", row.dataset.title);
+    field.autocomplete = "off";
+    host.append(field);
+    return field;
+  }
+
+  function paintSettings(settings) {
+    for (const row of document.querySelectorAll("[data-setting]")) fieldOf(row).value = settings[row.dataset.setting];
+    document.querySelector("[data-setting=voltage_noise]").hidden = settings.weights !== "effective";
+    byId("left-out-line").textContent = settings.left_out;
+  }
+
+  /** Each cell's ink is the size of the correlation; its sign stands in the number. */
+  function paintCorrelation({ names, values }) {
+    byId("correlation-title").hidden = !names.length;
+    const head = document.createElement("tr");
+    head.append(document.createElement("th"), ...names.map((name) => make("th", name)));
+    const rows = values.map((row, i) => {
+      const line = document.createElement("tr");
+      line.append(make("th", names[i]));
+      row.forEach((value, j) => {
+        const cell = make("td", value === null ? "–" : i === j ? "" : value.toFixed(2).replace("-", "−"));
+        if (value !== null && i !== j) cell.style.setProperty("--size", `${(100 * value ** 2).toFixed(0)}%`);
+        cell.classList.toggle("strong", value !== null && i !== j && Math.abs(value) > 0.8);
+        line.append(cell);
+      });
+      return line;
+    });
+    byId("correlation").replaceChildren(...(names.length ? [head, ...rows] : []));
+  }
+
+  function paintEstimates({ rows, plateau, derived }) {
+    byId("plateau-line").textContent = plateau;
+    byId("estimate-rows").replaceChildren(
+      ...rows.flatMap((row) => {
+        const line = document.createElement("tr");
+        line.dataset.parameter = row.parameter;
+        const name = make("th", "");
+        name.append(make("span", "", "mark"), row.name);
+        line.append(name, make("td", row.value), make("td", row.fit));
+        const below = document.createElement("tr");
+        const method = make("td", [row.method, row.note].filter(Boolean).join(" "), "method");
+        method.colSpan = 3;
+        below.append(method);
+        return [line, below];
+      }),
+    );
+    byId("derived-rows").replaceChildren(
+      ...derived.map((row) => {
+        const line = document.createElement("tr");
+        line.title = row.note;
+        line.append(make("th", row.name), make("td", row.value));
+        return line;
+      }),
+    );
+  }
+
+  /** Intervals come after the scene: they take longer than a fit. */
+  bench.receiveIntervals = (data) => {
+    if (!data) return;
+    byId("intervals-table").replaceChildren(
+      ...(data.rows ?? []).map((row) => {
+        const line = make("p", "");
+        line.append(make("span", row.name, "label"), make("span", row.words));
+        return line;
+      }),
+      ...(data.sentence ? [make("p", data.sentence, "hint")] : []),
+    );
+    byId("model-choice").textContent = data.choice ?? "";
+  };
+
+  document.addEventListener("change", (event) => {
+    const name = event.target.closest?.("[data-setting]")?.dataset.setting;
+    if (name) bench.send({ kind: "setting", entry: bench.scene.entry, name, text: event.target.value });
+  });
+  document.addEventListener("click", (click) => {
+    const panel = click.target.closest?.("[data-panel-choice]");
+    if (panel) bench.changeView({ panel: panel.dataset.panelChoice });
+  });
+
+  /* A box over points leaves them out; a box over points that are all out takes them back. */
+  let armed = false;
+  let box = null;
+  bench.armLeaveOut = (on = !armed) => {
+    armed = on && Boolean(bench.scene?.entry);
+    byId("overlay").classList.toggle("armed", armed);
+    document.querySelector("[data-act=leave-out]").setAttribute("aria-checked", String(armed));
+    if (!armed) endBox();
+  };
+  bench.useAll = () => bench.scene?.entry && bench.send({ kind: "use-all", entry: bench.scene.entry });
+
+  function endBox() {
+    box?.element.remove();
+    box = null;
+  }
+  document.addEventListener("pointerdown", (pointer) => {
+    const host = byId("overlay");
+    if (!armed || pointer.target.closest?.(".grip") || !host.contains(pointer.target)) return;
+    pointer.preventDefault();
+    const at = bench.place(pointer);
+    box = { from: at, to: at, element: make("div", "", "leave-out-box") };
+    host.append(box.element);
+    host.setPointerCapture(pointer.pointerId);
+  });
+  document.addEventListener("pointermove", (pointer) => {
+    if (!box) return;
+    box.to = bench.place(pointer);
+    const [left, right] = [box.from.x, box.to.x].sort((p, q) => p - q);
+    const [top, bottom] = [box.from.y, box.to.y].sort((p, q) => p - q);
+    Object.assign(box.element.style, { left: `${left}px`, top: `${top}px`, width: `${right - left}px`, height: `${bottom - top}px` });
+  });
+  document.addEventListener("pointerup", () => {
+    if (!box) return;
+    const [x, y] = [bench.axis("x"), bench.axis("y")];
+    const corners = [x.value(box.from.x), x.value(box.to.x), y.value(box.from.y), y.value(box.to.y)];
+    endBox();
+    bench.send({ kind: "leave-out", entry: bench.scene.entry, box: corners });
+  });
+})();

@@ -1,0 +1,272 @@
+"""Which columns of a block are voltage and current, and in what units."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from .guesses import finite, level_at_zero, pairs_by_numbers, voltage_likeness
+from .refusal import Refusal
+from .table import Block
+from .units import Label, parse_label, parse_unit
+from .words import device_in
+
+# A voltage without unit beyond this is read as millivolts [V]; module strings end far below.
+_VOLTS_AT_MOST = 150.0
+# Single cells end below this [V]; their currents in A are rarely above the next figure.
+_CELL_VOLTS = 3.0
+_AMPERES_OF_CELL = 1.5
+_AMPERES_AT_MOST = 15.0
+# A density without unit above this at one sun cannot be in A cm⁻².
+_DENSITY_AT_MOST = 0.15
+
+
+@dataclass(frozen=True, slots=True)
+class Pair:
+    """A column of voltage and its column of current, with factors to V and to A or A cm⁻²."""
+
+    voltage: int
+    current: int
+    voltage_factor: float
+    current_factor: float
+    density: bool
+    direction: str | None = None
+    lit: bool | None = None
+    device: str = ""
+    area: float | None = None
+    magnitude: bool = False  # the file gives |current|
+    assumed_units: bool = False
+    notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class _Column:
+    index: int
+    label: Label
+    title: str
+    device: str = ""
+
+
+def pairs_of(block: Block) -> list[Pair]:
+    """Every pair of voltage and current in a block.
+
+    Raises
+    ------
+    Refusal
+        If the block has one column only, or no columns that can be a sweep.
+    """
+    line = int(block.lines[0])
+    usable = [c for c in range(block.values.shape[1]) if finite(block.values[:, c]).size >= 3]
+    if not usable:
+        raise Refusal("the table has fewer than three numbers in each column", "Check the export", line=line)
+    if len(usable) == 1:
+        raise Refusal(
+            "the table has only one column of numbers",
+            "A sweep needs a column of voltage and one of current; check the delimiter in the export",
+            line=line,
+        )
+    columns = _labelled(block)
+    columns = [c for c in columns if c.index in usable]
+    if any(c.label.kind in ("voltage", "current", "density") for c in columns):
+        found, notes = _by_label(block, columns)
+    else:
+        others = {c.index for c in columns if c.label.kind == "other"}
+        open_ones = [c for c in usable if c not in others]
+        found, notes = [], ()
+        if len(open_ones) > 1:
+            indices, notes = pairs_by_numbers(block.values, open_ones, line)
+            found = [(_Column(v, Label(), ""), _Column(c, Label(), "")) for v, c in indices]
+    if not found:
+        raise Refusal(
+            "the headings name no columns of voltage and current",
+            "Name the columns, for example “Voltage (V)” and “Current (A)”",
+            line=line,
+        )
+    return [_with_units(block, columns, voltage, current, notes) for voltage, current in found]
+
+
+def _labelled(block: Block) -> list[_Column]:
+    """Columns with what all the heading rows together say of each."""
+    width = block.values.shape[1]
+    rows = [tuple(row) for row in block.labels]
+    scores = [sum(parse_label(cell).kind is not None for cell in row) for row in rows]
+    main = int(np.argmax(scores)) if rows and max(scores) else len(rows) - 1
+    columns = []
+    for index in range(width):
+        title = _at(rows, main, index, width) if rows else ""
+        label = parse_label(title) if title else Label()
+        device = ""
+        for row in range(len(rows)):
+            if row == main:
+                continue
+            cell = _at(rows, row, index, width, fill=row < main)
+            unit = parse_unit(cell.strip("()[] ")) if cell else None
+            if unit is not None and row > main:
+                if label.kind is None or unit.kind == label.kind or {unit.kind, label.kind} == {"current", "density"}:
+                    label = replace(label, kind=unit.kind, factor=unit.factor)
+            elif cell and row < main and not scores[row]:
+                above = parse_label(cell)
+                label = replace(
+                    label,
+                    direction=label.direction or above.direction,
+                    lit=label.lit if label.lit is not None else above.lit,
+                )
+                device = device_in(cell)
+        columns.append(_Column(index, label, title, device))
+    return columns
+
+
+def _at(rows: Sequence[Sequence[str]], row: int, index: int, width: int, fill: bool = False) -> str:
+    """A heading's cell; with ``fill`` the one to its left where it is empty (merged cells)."""
+    cells = rows[row]
+    if index < len(cells) and cells[index].strip():
+        return cells[index].strip()
+    if fill:
+        return next((cells[i].strip() for i in range(min(index, len(cells) - 1), -1, -1) if cells[i].strip()), "")
+    return ""
+
+
+def _by_label(block: Block, columns: list[_Column]) -> tuple[list[tuple[_Column, _Column]], tuple[str, ...]]:
+    voltages = [c for c in columns if c.label.kind == "voltage"]
+    currents = [c for c in columns if c.label.kind in ("current", "density")]
+    currents = [c for c in currents if not c.label.magnitude] or currents
+    unknown = [c for c in columns if c.label.kind is None]
+    notes: list[str] = []
+    if voltages and not currents:
+        currents = unknown[:] if unknown else []
+        unknown = []
+    elif currents and not voltages and unknown:
+        best = max(unknown, key=lambda c: voltage_likeness(block.values[:, c.index]))
+        voltages, unknown = [best], [c for c in unknown if c is not best]
+    if not voltages or not currents:
+        return [], ()
+    if len(voltages) > 1 and len(voltages) != len(currents):
+        measured = [c for c in voltages if c.label.role == "measured"]
+        unset = [c for c in voltages if c.label.role != "set"]
+        chosen = measured or unset or voltages
+        if len(chosen) < len(voltages):
+            notes.append("Of several voltage columns the measured one is used.")
+        voltages = chosen
+    currents, more = _without_doubles(block, currents, voltages)
+    notes += more
+    if len(voltages) == len(currents):
+        found = list(zip(voltages, currents, strict=True))
+    else:
+        found = [(_nearest(voltages, c), c) for c in currents]
+    used = {c.index for pair in found for c in pair}
+    left = [c.title or f"column {c.index + 1}" for c in columns if c.index not in used]
+    if left:
+        names = ", ".join(f"“{name[:40]}”" for name in left[:5]) + (" and more" if len(left) > 5 else "")
+        notes.append(f"Not used: {names}.")
+    return found, tuple(notes)
+
+
+def _nearest(voltages: list[_Column], current: _Column) -> _Column:
+    """The voltage just left of a current, else the first to its right."""
+    left = [v for v in voltages if v.index < current.index]
+    return left[-1] if left else voltages[0]
+
+
+def _without_doubles(
+    block: Block, currents: list[_Column], voltages: list[_Column]
+) -> tuple[list[_Column], list[str]]:
+    """Drops a current that only repeats a density beside it (or the reverse), keeping the ratio as the area."""
+    densities = [c for c in currents if c.label.kind == "density"]
+    plain = [c for c in currents if c.label.kind == "current"]
+    if not densities or not plain:
+        return currents, []
+    doubles = []
+    for density, current in zip(densities, plain, strict=False):
+        if _area_between(block, density, current) is not None:
+            doubles.append(current)
+    kept = [c for c in currents if c not in doubles]
+    if doubles:
+        return kept, []
+    return (densities if len(voltages) == len(densities) else kept), []
+
+
+def _area_between(block: Block, density: _Column, current: _Column) -> float | None:
+    """Area [cm²] if the current is the density times one number."""
+    if density.label.factor is None or current.label.factor is None:
+        return None
+    j = block.values[:, density.index] * density.label.factor
+    i = block.values[:, current.index] * current.label.factor
+    good = np.isfinite(j) & np.isfinite(i)
+    if good.sum() < 3:
+        return None
+    j, i = j[good], i[good]
+    large = np.abs(j) > 0.1 * np.max(np.abs(j), initial=0.0)
+    if not large.any():
+        return None
+    ratio = np.abs(i[large] / j[large])
+    area = float(np.median(ratio))
+    if not (1e-12 < area < 1e9) or np.max(np.abs(ratio / area - 1)) > 0.05:
+        return None
+    return float(f"{area:.4g}")
+
+
+def _with_units(
+    block: Block, columns: list[_Column], voltage: _Column, current: _Column, notes: tuple[str, ...]
+) -> Pair:
+    said = list(notes)
+    volts = np.abs(finite(block.values[:, voltage.index]))
+    voltage_factor, current_factor = voltage.label.factor, current.label.factor
+    density = current.label.kind == "density"
+    assumed = False
+    if voltage.title == "V" and float(np.max(volts, initial=0.0)) > _VOLTS_AT_MOST:
+        voltage_factor = None  # the letter is the symbol, not the unit
+    if voltage_factor is None:
+        assumed = True
+        milli = float(np.max(volts, initial=0.0)) > _VOLTS_AT_MOST
+        voltage_factor = 1e-3 if milli else 1.0
+        voltage_unit = "mV" if milli else "V"
+    if current_factor is None:
+        level = level_at_zero(block.values[:, voltage.index] * voltage_factor, block.values[:, current.index])
+        cell = float(np.max(volts, initial=0.0)) * voltage_factor < _CELL_VOLTS
+        if current.label.kind == "density":
+            unit, current_factor = ("mA cm⁻²", 1e-3) if level > _DENSITY_AT_MOST else ("A cm⁻²", 1.0)
+        elif current.label.kind == "current":
+            unit, current_factor = ("mA", 1e-3) if level > _AMPERES_AT_MOST else ("A", 1.0)
+        elif cell and level > _AMPERES_OF_CELL:
+            unit, current_factor, density = "mA cm⁻²", 1e-3, True
+        else:
+            unit, current_factor = "A", 1.0
+        both = f"{voltage_unit} and {unit}" if assumed else unit
+        said.append(f"No unit given: read as {both}; check that this is right.")
+        assumed = True
+    elif assumed:
+        said.append(f"No unit given for the voltage: read as {voltage_unit}; check that this is right.")
+    device = current.device or voltage.device or _device_in_label(current.label)
+    area = None
+    if density and current.label.factor is not None:
+        for other in columns:
+            if other.label.kind == "current" and other.index != current.index:
+                area = _area_between(block, current, other)
+                if area is not None:
+                    said.append(
+                        f"The file gives current and density; their ratio, {area:.4g} cm², is taken as its area."
+                    )
+                    break
+    if voltage_factor == 1e-3 and voltage.label.factor is not None:
+        said.append("The voltage was read in mV.")
+    return Pair(
+        voltage.index,
+        current.index,
+        voltage_factor,
+        current_factor,
+        density,
+        direction=current.label.direction or voltage.label.direction,
+        lit=current.label.lit if current.label.lit is not None else voltage.label.lit,
+        device=device,
+        area=area,
+        magnitude=current.label.magnitude,
+        assumed_units=assumed,
+        notes=tuple(said),
+    )
+
+
+def _device_in_label(label: Label) -> str:
+    rest = device_in(label.rest)
+    return "" if rest.isdigit() or len(rest) < 2 else rest

@@ -1,0 +1,238 @@
+"""Delimited text: which character divides the cells, which marks decimals, and the rows."""
+
+from __future__ import annotations
+
+import csv
+import math
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from .header import is_entry
+from .limits import MAX_COLUMNS
+from .refusal import EXPORT_TEXT, Refusal
+from .table import Block, Gatherer
+from .units import parse_label, parse_unit, plain
+
+# Lines looked at to find the delimiter; longer ones are cut.
+_SAMPLE_LINES = 400
+_SAMPLE_WIDTH = 20_000
+# Characters of a line that is looked at as a whole; 1000 columns of 40 characters.
+_LONG_LINE = 40 * MAX_COLUMNS
+# More blank lines than this share of the others: the file is double spaced, blanks divide nothing.
+_DOUBLE_SPACED = 0.4
+_COMMENT = re.compile(r"^\s*\"?\s*(#+|%+|//+|!+)\s*")
+_NUMBER = re.compile(r"^[-+]?(\d+\.?\d*|\.\d+)([eEdD][-+]?\d{1,4})?$")
+_THOUSANDS = re.compile(r"^[-+]?\d{1,3}(,\d{3})+\.\d+$")
+
+
+@dataclass(frozen=True, slots=True)
+class Dialect:
+    delimiter: str | None  # None: runs of white space
+    decimal: str  # "." or ","
+    quoted: bool = False
+
+    def cells(self, line: str) -> list[str]:
+        if self.quoted and '"' in line:
+            try:
+                row = next(csv.reader([line], delimiter=self.delimiter or " ", skipinitialspace=True), [])
+            except csv.Error:
+                row = line.replace('"', "").split(self.delimiter)
+            return [c.strip() for c in row if self.delimiter or c]
+        return [c.strip() for c in line.split(self.delimiter)]
+
+    def number(self, cell: str) -> float | None:
+        """The number that a cell is, or None; inf and nan are not numbers here."""
+        return number_in(cell, self.decimal)
+
+    def split_heading(self, line: str, width: int) -> Sequence[str]:
+        """A heading in as many cells as the table has columns, if any way of cutting gives that."""
+        line = _COMMENT.sub("", line).strip("\n")
+        candidates = [self.cells(line)]
+        if len(candidates[0]) == width and (self.delimiter or _labels(candidates[0]) >= 2):
+            return candidates[0]
+        for delimiter in ("\t", ";", "|", ","):
+            if delimiter in line:
+                candidates.append([c.strip() for c in line.split(delimiter)])
+        candidates.append([c.strip() for c in re.split(r"\s{2,}", line.strip())])
+        candidates.append(_merged(line))
+        words = line.split()
+        if len(words) == 2 * width:  # "Voltage V Current mA"
+            candidates.append([" ".join(pair) for pair in zip(words[::2], words[1::2], strict=True)])
+        for cells in candidates:
+            if len(cells) == width and _labels(cells):
+                return cells
+        return max(candidates, key=lambda cells: (_labels(cells), len(cells) == width))
+
+
+def number_in(cell: str, decimal: str) -> float | None:
+    if len(cell) > 60:
+        return None
+    cell = cell.strip("\"' \u00a0").replace("−", "-").replace("–", "-")
+    if decimal == ",":
+        cell = cell.replace(",", ".") if cell.count(",") == 1 and "." not in cell else cell
+    elif "," in cell and _THOUSANDS.match(cell):
+        cell = cell.replace(",", "")
+    if not _NUMBER.match(cell):
+        return None
+    return float(cell.replace("d", "e").replace("D", "e"))
+
+
+def _labels(cells: Sequence[str]) -> int:
+    return sum(parse_label(c).kind is not None for c in cells[:50] if c)
+
+
+def _merged(line: str) -> list[str]:
+    """'Voltage (V) Current density (mA cm-2)' → two headings: a closing bracket ends one."""
+    found = re.findall(r"[^()\[\]]+[(\[][^()\[\]]*[)\]]|[^()\[\]]+$", plain(line))
+    cells = [c.strip() for c in found if c.strip()]
+    if len(cells) > 1:
+        return cells
+    merged: list[str] = []
+    for token in plain(line).split():
+        if merged and (token.lower() in ("density", "/") or merged[-1].endswith("/") or _continues(merged[-1], token)):
+            merged[-1] += " " + token
+        else:
+            merged.append(token)
+    return merged
+
+
+def _continues(before: str, token: str) -> bool:
+    return parse_unit(token) is not None and token not in ("V", "A") and parse_label(before).factor is None
+
+
+def read_text(text: str) -> list[Block]:
+    """All blocks of numbers in a text.
+
+    Raises
+    ------
+    Refusal
+        If the text has no rows of numbers, or one column only.
+    """
+    if text.lstrip()[:1] == "{" or text.lstrip()[:2] in ("[[", "[{"):
+        raise Refusal("this is a JSON file or the like, not a table of voltage and current", EXPORT_TEXT)
+    lines = text.split("\n")
+    if not text.strip():
+        raise Refusal("the file has nothing but blank lines", "Export the sweep again and drop that file")
+    dialect = _dialect(lines)
+    _refuse_commas_for_both(lines, dialect)
+    blanks = sum(1 for line in lines if not line or line.isspace())
+    gatherer = Gatherer(
+        split=dialect.split_heading,
+        number=dialect.number,
+        divided=dialect.delimiter is not None,
+        heed_blanks=blanks < _DOUBLE_SPACED * (len(lines) - blanks),
+    )
+    _feed(lines, dialect, gatherer)
+    blocks = gatherer.finish()
+    if not blocks:
+        if gatherer.stray_numbers:
+            rows = "one row" if gatherer.stray_numbers == 1 else f"{gatherer.stray_numbers} rows"
+            raise Refusal(
+                f"the file has only {rows} of numbers",
+                "A sweep needs at least three points; check that the export is complete",
+            )
+        raise Refusal("the text has no table of numbers", "A sweep needs a column of voltage and one of current")
+    return blocks
+
+
+def _feed(lines: list[str], dialect: Dialect, gatherer: Gatherer) -> None:
+    delimiter, comma = dialect.delimiter, dialect.decimal == ","
+    strip = " \t" if delimiter is None else delimiter + " \t"
+    worded: tuple[int, ...] = ()  # columns of words in the last row that had numbers as well
+    width = 0
+    for number, line in enumerate(lines, 1):
+        # The quick way for rows that are plain numbers; nearly all are.
+        if len(line) > _LONG_LINE:
+            line = _bounded(line, number, dialect)
+        quick = line.replace(",", ".") if comma else line
+        try:
+            values = list(map(float, quick.rstrip(strip).split(delimiter)))
+        except ValueError:
+            values = []  # as of a blank line between white space
+        if values:
+            if "n" in line or "N" in line:  # nan, inf
+                values = [v if v == v else math.inf for v in values]
+            gatherer.numbers(number, values)
+            continue
+        if worded:
+            # The same for rows with a column of words, such as a time of day or "OK".
+            cells = quick.split(delimiter)
+            try:
+                values = [math.nan if i in worded else float(c) for i, c in enumerate(cells)]
+            except ValueError:
+                values = []
+            if len(values) == width and "n" not in line.lower():
+                gatherer.numbers(number, values)
+                continue
+        if not line or line.isspace():
+            gatherer.blank()
+            continue
+        comment = _COMMENT.match(line)
+        bare = line[comment.end() :] if comment else line
+        cells = dialect.cells(bare)
+        if gatherer.mixed(number, bare, cells, comment is not None):
+            width = len(cells)
+            worded = tuple(i for i, cell in enumerate(cells) if dialect.number(cell) is None)
+            if width - len(worded) < 2:
+                worded = ()
+
+
+def _bounded(line: str, number: int, dialect: Dialect) -> str:
+    """A very long line: a table too wide, or prose that is cut."""
+    start = dialect.cells(line[:_LONG_LINE])
+    if sum(dialect.number(c) is not None for c in start) > MAX_COLUMNS // 10:
+        raise Refusal(
+            f"the table has more than {MAX_COLUMNS} columns",
+            "Keep the columns of voltage and current and leave the others out",
+            line=number,
+        )
+    return line[:_LONG_LINE]
+
+
+def _refuse_commas_for_both(lines: list[str], dialect: Dialect) -> None:
+    """'0,10,21,95' may be two numbers or four; a guess would be silent nonsense."""
+    if dialect.delimiter != "," or dialect.decimal != ".":
+        return
+    rows = [line.strip().split(",") for line in lines[:_SAMPLE_LINES] if line[:1] in "+-0123456789" and line.strip()]
+    rows = [row[:MAX_COLUMNS] for row in rows if len(row) == len(rows[0])]
+    if len(rows) < 5 or len(rows[0]) % 2 or len(rows[0]) < 4:
+        return
+    headings = (dialect.cells(line[:_SAMPLE_WIDTH]) for line in lines[:_SAMPLE_LINES] if line.count(",") == len(rows[0]) - 1)
+    if any(_labels(cells) >= 2 for cells in headings):
+        return  # as many headings as cells: no comma is a decimal mark
+    fractions = [cell for row in rows for cell in row[1::2]]
+    if all(cell.isdigit() for cell in fractions) and not any("." in cell for row in rows for cell in row):
+        if len({len(cell) for cell in fractions}) <= 2 and max(map(len, fractions)) > 1:
+            raise Refusal(
+                "commas seem to divide the cells and to mark decimals as well",
+                "Export again with semicolons between the cells, or with decimal points",
+            )
+
+
+def _dialect(lines: list[str]) -> Dialect:
+    """The delimiter and decimal mark that make most rows of numbers."""
+    # The beginning, the end and some in between: a short table under a long header must not be missed.
+    step = max(1, len(lines) // _SAMPLE_LINES)
+    sample = lines if step == 1 else [*lines[:_SAMPLE_LINES], *lines[::step], *lines[-_SAMPLE_LINES // 10 :]]
+    sample = [line[:_SAMPLE_WIDTH] for line in sample if line and not line.isspace()]
+    sample = [line for line in sample if not _COMMENT.match(line) and not is_entry(line)]
+    quoted = any('"' in line for line in sample)
+    best, best_score = Dialect(None, "."), (0.0, 0)
+    for rank, (delimiter, decimal) in enumerate(
+        (("\t", "."), ("\t", ","), (";", "."), (";", ","), ("|", "."), ("|", ","), (",", "."), (None, "."), (None, ","))
+        + (((",", ","),) if quoted else ())
+    ):
+        dialect = Dialect(delimiter, decimal, quoted)
+        score = 0.0
+        for line in sample:
+            if delimiter is not None and delimiter not in line:
+                continue
+            cells = dialect.cells(line)
+            numbers = sum(dialect.number(c) is not None for c in cells[:MAX_COLUMNS])
+            others = sum(1 for c in cells[:MAX_COLUMNS] if c) - numbers
+            if numbers >= 2:
+                score += 1.0 if not others else numbers / (numbers + 2 * others)
+        if score > 0 and (score, -rank) > best_score:
+            best, best_score = dialect, (score, -rank)
+    return best

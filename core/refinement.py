@@ -1,0 +1,103 @@
+"""The outcome of a fit: the model, how well its parameters are known, and what the data cannot tell."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from .diode import OneDiode
+from .fit_settings import FitSettings
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Refinement:
+    """A refined model with its statistics. Uncertainties are of fit noise only.
+
+    Attributes
+    ----------
+    model : OneDiode
+    settings : FitSettings
+        As asked for; ``weights`` says what automatic weights came to.
+    weights : "uniform" or "relative"
+    free : tuple of str
+        Parameters that were free, k of them.
+    standard_errors : dict of str to (float or None)
+        Of the five natural parameters; None where held, at a bound, or not determined.
+    covariance : ndarray, shape (k, k)
+        Of the free unknowns in the order of ``free``, scaled as Jph, ln J0, n, Rs, 1/Rsh. Infinite
+        variances belong to what the data do not determine.
+    intervals : dict of str to (low, high)
+        At ``settings.confidence``, for free parameters; an end may be a bound, ``inf`` for a shunt
+        that may be absent.
+    rmse : float
+        Root of the mean squared residual over all points used [unit of current].
+    points : int
+        Number of points used.
+    findings : tuple of str
+        Sentences on what the fit says, and what it cannot say.
+    """
+
+    model: OneDiode
+    settings: FitSettings
+    standard_errors: dict[str, float | None]
+    covariance: np.ndarray
+    free: tuple[str, ...]
+    intervals: dict[str, tuple[float, float]]
+    rmse: float
+    points: int
+    findings: tuple[str, ...] = ()
+    weights: str = "uniform"
+
+    def __post_init__(self):
+        covariance = np.array(self.covariance, dtype=float)
+        covariance.setflags(write=False)
+        object.__setattr__(self, "covariance", covariance)
+
+    @property
+    def correlation(self) -> np.ndarray:
+        """Correlation matrix of the free unknowns, shape (k, k); NaN where not determined."""
+        spread = np.sqrt(np.diag(self.covariance))
+        known = np.where(np.isfinite(spread) & (spread > 0), spread, np.nan)
+        return self.covariance / np.outer(known, known)
+
+    def to_dict(self) -> dict[str, Any]:
+        """As JSON-ready values; ``from_dict`` gives the same refinement back. Infinity is None."""
+        return {
+            "model": self.model.to_dict(),
+            "settings": self.settings.to_dict(),
+            "standard_errors": dict(self.standard_errors),
+            "covariance": [[_finite(value) for value in row] for row in self.covariance.tolist()],
+            "free": list(self.free),
+            "intervals": {name: [_finite(low), _finite(high)] for name, (low, high) in self.intervals.items()},
+            "rmse": self.rmse,
+            "points": self.points,
+            "findings": list(self.findings),
+            "weights": self.weights,
+        }
+
+    @classmethod
+    def from_dict(cls, values: Mapping[str, Any]) -> Refinement:
+        return cls(
+            **{
+                **values,
+                "model": OneDiode.from_dict(values["model"]),
+                "settings": FitSettings.from_dict(values["settings"]),
+                "covariance": np.array(
+                    [[math.inf if value is None else value for value in row] for row in values["covariance"]]
+                ).reshape(len(values["free"]), len(values["free"])),
+                "free": tuple(values["free"]),
+                "intervals": {
+                    name: (-math.inf if low is None else low, math.inf if high is None else high)
+                    for name, (low, high) in values["intervals"].items()
+                },
+                "findings": tuple(values["findings"]),
+            }
+        )
+
+
+def _finite(value: float) -> float | None:
+    return value if math.isfinite(value) else None

@@ -1,0 +1,200 @@
+"""One pass of voltage with its currents and the conditions it was measured under.
+
+Signs: current is positive where the device delivers power.
+Units: V; A cm⁻² where an area is known or the file gives a density, else A; W cm⁻²; K; V s⁻¹.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass, field, replace
+from typing import Any, Literal
+
+import numpy as np
+
+from .constants import ONE_SUN, STANDARD_TEMPERATURE
+from .errors import ConditionRefused
+
+Direction = Literal["forward", "reverse"]
+Quantity = Literal["current", "density"]
+
+
+@dataclass(frozen=True, slots=True)
+class Conditions:
+    """What a sweep was measured under; the part that a user may correct.
+
+    Attributes
+    ----------
+    area : float or None
+        Area that densities refer to [cm²]; None where nobody gave one.
+    file_area : float or None
+        Area that the file itself divided by [cm²]; matters only for files that give a density.
+    temperature : float
+        Device temperature [K].
+    irradiance : float
+        [W cm⁻²]; zero in the dark.
+    lit : bool
+        Light or dark sweep.
+    series_cells : int
+        Cells in series in the device.
+    """
+
+    area: float | None = None
+    file_area: float | None = None
+    temperature: float = STANDARD_TEMPERATURE
+    irradiance: float = ONE_SUN
+    lit: bool = True
+    series_cells: int = 1
+
+    def __post_init__(self):
+        for name, word in (("area", "The area"), ("file_area", "The area used by the file")):
+            value = getattr(self, name)
+            if value is not None and not (np.isfinite(value) and value > 0):
+                raise ConditionRefused(f"{word} must be a number above zero in cm², not {value}.")
+        if not (50 <= self.temperature <= 1000):
+            raise ConditionRefused(
+                f"A device temperature of {self.temperature - 273.15:.4g} °C is outside −223 to 727 °C; check the unit."
+            )
+        if not (np.isfinite(self.irradiance) and self.irradiance >= 0):
+            raise ConditionRefused("The irradiance must be zero (dark) or a number above zero.")
+        if self.series_cells != int(self.series_cells) or not 1 <= self.series_cells <= 10_000:
+            raise ConditionRefused("The number of cells in series must be a whole number from 1 to 10000.")
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Sweep:
+    """One monotonic pass of voltage, in the order it was measured.
+
+    Attributes
+    ----------
+    voltage : ndarray, shape (n,)
+        [V], monotonic; rising in a forward sweep, falling in a reverse sweep.
+    current : ndarray, shape (n,)
+        [A cm⁻²] if ``per_area`` else [A]; positive where the device delivers power.
+    per_area : bool
+    conditions : Conditions
+    direction : "forward" or "reverse"
+        Forward runs from short circuit to open circuit.
+    read_as : "current" or "density"
+        The quantity that the file gives.
+    scan_rate : float or None
+        [V s⁻¹]
+    name, device : str
+        As read from the file or its name.
+    notes : tuple of str
+        Sentences on what was done on reading (sign turned, millivolts read, rows left out).
+    header : mapping of str to str
+        What the file's header says, kept as it stands.
+    assumed : frozenset of str
+        Names of conditions that the file does not give: assumed until the user confirms them.
+    """
+
+    voltage: np.ndarray
+    current: np.ndarray
+    per_area: bool = False
+    conditions: Conditions = field(default_factory=Conditions)
+    direction: Direction = "forward"
+    read_as: Quantity = "current"
+    scan_rate: float | None = None
+    name: str = ""
+    device: str = ""
+    notes: tuple[str, ...] = ()
+    header: Mapping[str, str] = field(default_factory=dict)
+    assumed: frozenset[str] = frozenset({"temperature", "irradiance", "series_cells"})
+
+    def __post_init__(self):
+        for name in ("voltage", "current"):
+            array = np.array(getattr(self, name), dtype=float)  # a copy: nobody else holds it
+            array.setflags(write=False)
+            object.__setattr__(self, name, array)
+
+    # The names of the design's table, read through the conditions.
+    @property
+    def area(self) -> float | None:
+        return self.conditions.area
+
+    @property
+    def lit(self) -> bool:
+        return self.conditions.lit
+
+    @property
+    def irradiance(self) -> float:
+        return self.conditions.irradiance
+
+    @property
+    def temperature(self) -> float:
+        return self.conditions.temperature
+
+    @property
+    def series_cells(self) -> int:
+        return self.conditions.series_cells
+
+    def under(self, conditions: Conditions) -> Sweep:
+        """The same measurement with other conditions; currents are rescaled with the area.
+
+        Raises
+        ------
+        ConditionRefused
+            If the file gives a density without its area and another area is asked for:
+            the current that was measured is then not known.
+        """
+        return replace(
+            self,
+            current=self.current * self.rescaling(conditions),
+            per_area=self.read_as == "density" or conditions.area is not None,
+            conditions=_with_area_of_density(self.read_as, conditions),
+        )
+
+    def rescaling(self, conditions: Conditions) -> float:
+        """Factor by which ``under(conditions)`` multiplies the current. Raises as ``under`` does."""
+        if self.read_as == "current":
+            return (self.area or 1.0) / (conditions.area or 1.0)
+        before, after = (_with_area_of_density(self.read_as, c) for c in (self.conditions, conditions))
+        # A density is measured current over the file's area; undo one rescaling, do the other.
+        return _density_factor(after) / _density_factor(before)
+
+    def to_dict(self) -> dict[str, Any]:
+        """As JSON-ready values; ``from_dict`` gives the same sweep back."""
+        return {
+            "voltage": self.voltage.tolist(),
+            "current": self.current.tolist(),
+            "per_area": self.per_area,
+            "conditions": asdict(self.conditions),
+            "direction": self.direction,
+            "read_as": self.read_as,
+            "scan_rate": self.scan_rate,
+            "name": self.name,
+            "device": self.device,
+            "notes": list(self.notes),
+            "header": dict(self.header),
+            "assumed": sorted(self.assumed),
+        }
+
+    @classmethod
+    def from_dict(cls, values: Mapping[str, Any]) -> Sweep:
+        return cls(
+            **{
+                **values,
+                "conditions": Conditions(**values["conditions"]),
+                "notes": tuple(values["notes"]),
+                "assumed": frozenset(values["assumed"]),
+            }
+        )
+
+
+def _with_area_of_density(read_as: Quantity, conditions: Conditions) -> Conditions:
+    """For a density, the file's area stands for the area until another one is given."""
+    if read_as == "density" and conditions.area is None and conditions.file_area is not None:
+        return replace(conditions, area=conditions.file_area)
+    return conditions
+
+
+def _density_factor(conditions: Conditions) -> float:
+    if conditions.area is None:
+        return 1.0
+    if conditions.file_area is None:
+        raise ConditionRefused(
+            "The file gives a current density but not the area it was divided by, so a new area cannot rescale it. "
+            "Give the area that the file used first."
+        )
+    return conditions.file_area / conditions.area

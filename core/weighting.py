@@ -1,0 +1,80 @@
+"""How much each point counts in a fit."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from .fit_settings import Weights
+from .noise import noise_level
+from .sweep import Sweep
+
+# The currents nearest zero that show the noise floor of a sweep, as a share of its points.
+_LOW_SHARE = 0.4
+# Currents this many floors high show their scatter in proportion, if there are enough of them.
+_CLEAR, _ENOUGH = 30.0, 8
+# No model meets a device better than the least share, and a dark sweep weighted by less would hear its top alone.
+_SHARE_LEAST, _SHARE_USUAL, _SHARE_MOST = 0.003, 0.01, 0.3
+
+
+def resolved(weights: Weights, sweep: Sweep) -> Weights:
+    """What automatic weights come to: relative in the dark, uniform under light."""
+    if weights == "automatic":
+        return "uniform" if sweep.lit else "relative"
+    return weights
+
+
+def point_weights(sweep: Sweep, weights: Weights = "automatic") -> np.ndarray:
+    """Weight of each point's residual [-].
+
+    Relative weights are 1/√(floor² + (share·J)²), scaled to 1 at large currents; floor is the noise of the lowest
+    currents and share the scatter in proportion to the current of the higher ones. A point counts by its relative
+    miss, and where noise is all there is, by its miss in units of that noise.
+
+    Returns
+    -------
+    ndarray, shape (n,)
+        1 for uniform weights.
+    """
+    if resolved(weights, sweep) == "uniform":
+        return np.ones(sweep.voltage.size)
+    top = float(np.max(np.abs(sweep.current), initial=0.0))
+    if not top > 0:
+        return np.ones(sweep.voltage.size)
+    floor = noise_near_zero(sweep)
+    share = noise_in_proportion(sweep, floor)
+    return share * top / np.hypot(floor, share * sweep.current)
+
+
+def point_noise(sweep: Sweep, weights: Weights = "automatic") -> np.ndarray:
+    """Standard deviation of each point's current as the fit weighs it [unit of current]; above zero.
+
+    The level of the whole sweep with uniform weights; with relative ones √(floor² + (share·J)²), see ``point_weights``.
+
+    Returns
+    -------
+    ndarray, shape (n,)
+    """
+    if resolved(weights, sweep) == "uniform":
+        return np.full(sweep.voltage.size, noise_level(sweep))
+    floor = noise_near_zero(sweep)
+    return np.hypot(floor, noise_in_proportion(sweep, floor) * sweep.current)
+
+
+def noise_near_zero(sweep: Sweep) -> float:
+    """Noise of the lowest currents of a sweep [unit of current]; above zero."""
+    size = np.abs(sweep.current)
+    low = size <= np.quantile(size, _LOW_SHARE) if size.size > 8 else np.ones(size.size, dtype=bool)
+    floor = noise_level(replace(sweep, voltage=sweep.voltage[low], current=sweep.current[low]))
+    return max(floor, 1e-12 * float(np.max(size, initial=0.0)), 1e-300)
+
+
+def noise_in_proportion(sweep: Sweep, floor: float) -> float:
+    """Scatter of the currents clearly above the floor, as a share of the current [-]."""
+    size = np.abs(sweep.current)
+    high = size > _CLEAR * floor
+    if np.count_nonzero(high) < _ENOUGH:
+        return _SHARE_USUAL
+    scatter = noise_level(replace(sweep, voltage=sweep.voltage[high], current=np.log(size[high])))
+    return min(max(scatter, _SHARE_LEAST), _SHARE_MOST)

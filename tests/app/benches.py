@@ -1,0 +1,41 @@
+"""Invented sweeps on a bench, for the tests of what the screen shows."""
+
+from dataclasses import replace
+
+import numpy as np
+
+from core import steps
+from core.diode import OneDiode
+from core.sweep import Conditions, Sweep
+from tests.core.workspaces import entry_named, workspace_with
+
+CELL = OneDiode(0.022, 2e-11, 1.6, 3.0, 2000.0)  # A cm⁻²
+LAMP = Conditions(area=0.1)
+DARK = Conditions(area=0.1, lit=False, irradiance=0.0)
+
+
+def sweep_of(model, name="forward", *, device="A", conditions=LAMP, points=56, noise=2e-6, high=1.15, **fields):
+    """A sweep of a model with a little scatter, the same every time."""
+    voltage = np.linspace(0.0 if conditions.lit else 0.02, high, points)
+    scatter = np.random.default_rng(len(name)).normal(0.0, noise, points) if conditions.lit else 0.0
+    current = model.current(voltage) + scatter
+    fields = {"per_area": conditions.area is not None, "read_as": "current", **fields}
+    return Sweep(voltage, current, name=name, device=device, conditions=conditions, **fields)
+
+
+LIT = sweep_of(CELL)
+REVERSE = sweep_of(replace(CELL, ideality=1.5), "reverse", direction="reverse")
+IN_THE_DARK = sweep_of(replace(CELL, photocurrent=0.0), "dark", conditions=DARK)
+# The same device without its area: amperes and ohms.
+AMPERES = sweep_of(CELL.scaled(0.1), "amperes", device="B", conditions=Conditions(), noise=2e-7)
+OTHER = sweep_of(replace(CELL, photocurrent=0.02), "other", device="C")
+
+
+def bench(*sweeps, models=()):
+    """A workspace with these sweeps, and the ids of their entries in that order; models by place, None for none."""
+    workspace = workspace_with(*sweeps)
+    entries = [entry_named(workspace, sweep.name, sweep.device).id for sweep in sweeps]
+    for entry, model in zip(entries, models, strict=False):
+        if model is not None:
+            workspace = steps.apply(workspace, steps.set_model(workspace, entry, model))
+    return workspace, entries

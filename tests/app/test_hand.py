@@ -1,0 +1,191 @@
+"""Events of the page become moves and steps, or a sentence that says why not."""
+
+import json
+from dataclasses import replace
+
+import pytest
+
+from app.hand import MODEL_KINDS, moved, step_for
+from core import handles, steps
+from core.dials import dial_ranges
+from core.errors import ConditionRefused, StepRefused, SweepbenchError
+from core.sweep import Conditions
+from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, REVERSE, bench, sweep_of
+
+
+@pytest.fixture
+def lit():
+    workspace, (entry,) = bench(LIT, models=(CELL,))
+    return workspace, entry
+
+
+def after(workspace, event):
+    step, sentence = step_for(workspace, event)
+    json.dumps(step, allow_nan=False)
+    return steps.apply(workspace, step), sentence
+
+
+def test_a_drag_in_screen_units_is_the_drag_of_core(lit):
+    workspace, entry = lit
+    event = {"kind": "drag", "entry": entry, "parameter": "photocurrent", "x": 0.0, "y": 20.0}  # mA cm⁻²
+    expected = handles.drag(CELL, "photocurrent", 0.0, 0.020, span=(0.0, 1.15))
+    assert moved(workspace, event) == expected
+    changed, sentence = after(workspace, event)
+    assert changed.fit(entry).model == expected.model and sentence == ""
+    assert expected.model.landmarks().jsc == pytest.approx(0.020)
+
+
+def test_a_drag_without_an_area_is_in_amperes():
+    workspace, (entry,) = bench(AMPERES, models=(CELL.scaled(0.1),))
+    event = {"kind": "drag", "entry": entry, "parameter": "photocurrent", "x": 0.0, "y": 0.002}
+    assert moved(workspace, event).model.landmarks().jsc == pytest.approx(0.002)
+
+
+def test_a_drag_in_the_dark_is_one_of_the_dark_handles():
+    model = replace(CELL, photocurrent=0.0)
+    workspace, (entry,) = bench(IN_THE_DARK, models=(model,))
+    span = (IN_THE_DARK.voltage.min(), IN_THE_DARK.voltage.max())
+    event = {"kind": "drag", "entry": entry, "parameter": "series_resistance", "x": 1.1, "y": 60.0}
+    assert moved(workspace, event) == handles.drag(model, "series_resistance", 1.1, 0.060, lit=False, span=span)
+    assert moved(workspace, event).model.series_resistance != model.series_resistance
+
+
+@pytest.mark.parametrize("fraction", [0.0, 0.3, 1.0])
+@pytest.mark.parametrize("parameter", ["photocurrent", "series_resistance", "shunt_resistance"])
+def test_a_dial_turns_its_parameter_alone(lit, parameter, fraction):
+    workspace, entry = lit
+    model = moved(workspace, {"kind": "dial", "entry": entry, "parameter": parameter, "fraction": fraction}).model
+    assert model == replace(CELL, **{parameter: dial_ranges(LIT)[parameter].value(fraction)})
+
+
+def test_a_dial_with_shift_keeps_jsc_and_voc(lit):
+    workspace, entry = lit
+    event = {"kind": "dial", "entry": entry, "parameter": "ideality", "fraction": 0.2, "keep": True}
+    before, marks = CELL.landmarks(), moved(workspace, event).model.landmarks()
+    assert (marks.jsc, marks.voc) == (pytest.approx(before.jsc, rel=1e-9), pytest.approx(before.voc, rel=1e-9))
+    assert marks.fill_factor != pytest.approx(before.fill_factor, rel=1e-3)
+
+
+def test_a_typed_number_is_in_the_unit_beside_it(lit):
+    workspace, entry = lit
+    event = {"kind": "field", "entry": entry, "parameter": "saturation_current", "text": "1,5·10⁻⁹"}  # mA cm⁻²
+    changed, _ = after(workspace, event)
+    assert changed.fit(entry).model.saturation_current == pytest.approx(1.5e-12)
+    endless, _ = after(workspace, {"kind": "field", "entry": entry, "parameter": "shunt_resistance", "text": "∞"})
+    assert endless.fit(entry).model.shunt_resistance == float("inf")
+
+
+def test_what_changes_nothing_is_no_step_but_says_why(lit):
+    workspace, entry = lit
+    workspace = steps.apply(workspace, steps.set_hold(workspace, entry, "photocurrent", True))
+    event = {"kind": "drag", "entry": entry, "parameter": "photocurrent", "x": 0.0, "y": 20.0}
+    assert step_for(workspace, event) == (None, "Jph is held.")
+    same = {"kind": "field", "entry": entry, "parameter": "ideality", "text": "1.6"}
+    assert step_for(workspace, same) == (None, "")
+
+
+def test_a_move_stopped_at_an_edge_is_a_step_and_a_sentence(lit):
+    workspace, entry = lit
+    event = {"kind": "field", "entry": entry, "parameter": "series_resistance", "text": "-1"}
+    changed, sentence = after(workspace, event)
+    assert changed.fit(entry).model.series_resistance == 0.0
+    assert sentence.startswith("Rs ") and sentence.endswith(".")
+
+
+def test_a_step_is_called_what_the_user_did(lit):
+    workspace, entry = lit
+    moves = [{"kind": "drag", "x": 0.0, "y": 20.0}, {"kind": "dial", "fraction": 0.4}, {"kind": "field", "text": "20"}]
+    labels = [step_for(workspace, {"entry": entry, "parameter": "photocurrent", **move})[0]["label"] for move in moves]
+    assert labels == ["drag photocurrent", "turn photocurrent", "set photocurrent"]
+
+
+def test_holds_names_and_removals_become_their_steps():
+    workspace, (forward, reverse) = bench(LIT, REVERSE)
+    device = workspace.entries[forward].device
+    held, _ = after(workspace, {"kind": "hold", "entry": forward, "parameter": "ideality", "on": True})
+    assert held.fit(forward).settings.hold == {"ideality"}
+    free, _ = after(held, {"kind": "hold", "entry": forward, "parameter": "ideality", "on": False})
+    assert free.fit(forward).settings.hold == set()
+    renamed, _ = after(workspace, {"kind": "rename-sweep", "entry": forward, "text": "best"})
+    assert renamed.entries[forward].name == "best"
+    renamed, _ = after(workspace, {"kind": "rename-device", "device": device, "text": "K07"})
+    assert renamed.devices[device].name == "K07"
+    fewer, _ = after(workspace, {"kind": "remove", "entries": [reverse]})
+    assert list(fewer.entries) == [forward]
+
+
+@pytest.mark.parametrize(
+    ("name", "text", "value"),
+    [
+        ("area", "0,25", 0.25),
+        ("area", "", None),
+        ("area", "–", None),
+        ("temperature", "-10", 263.15),
+        ("irradiance", "50", 0.05),
+        ("series_cells", "4", 4),
+        ("lit", "dark", False),
+    ],
+)
+def test_a_condition_is_typed_in_the_units_of_the_lab(lit, name, text, value):
+    workspace, entry = lit
+    changed, _ = after(workspace, {"kind": "condition", "entry": entry, "name": name, "text": text})
+    assert getattr(changed.conditions(entry), name) == (pytest.approx(value) if isinstance(value, float) else value)
+
+
+def test_the_area_that_a_file_used_can_be_given():
+    density = sweep_of(CELL, "density", read_as="density", per_area=True, conditions=Conditions())
+    workspace, (entry,) = bench(density)
+    changed, _ = after(workspace, {"kind": "condition", "entry": entry, "name": "file_area", "text": "0.09"})
+    assert changed.conditions(entry).file_area == 0.09
+
+
+def test_assumed_conditions_are_confirmed_as_they_stand(lit):
+    workspace, entry = lit
+    changed, _ = after(workspace, {"kind": "confirm", "entry": entry, "names": ["temperature"]})
+    assert changed.assumed(entry) == workspace.assumed(entry) - {"temperature"}
+    assert changed.conditions(entry) == workspace.conditions(entry)
+
+
+REFUSED = [
+    {},
+    {"kind": "fly"},
+    *({"kind": kind} for kind in MODEL_KINDS),
+    {"kind": "drag", "entry": "gone", "parameter": "ideality", "x": 0.0, "y": 1.0},
+    {"kind": "drag", "parameter": "charm", "x": 0.0, "y": 1.0},
+    {"kind": "drag", "parameter": "ideality", "x": None, "y": 1.0},
+    {"kind": "drag", "parameter": "ideality", "x": 0.0, "y": "1"},
+    {"kind": "dial", "parameter": "ideality"},
+    {"kind": "field", "parameter": "ideality", "text": "much"},
+    {"kind": "field", "parameter": "ideality"},
+    {"kind": "hold", "parameter": "charm", "on": True},
+    {"kind": "hold", "entry": "gone", "parameter": "ideality", "on": True},
+    {"kind": "condition", "name": "weather", "text": "1"},
+    {"kind": "condition", "entry": "gone", "name": "area", "text": "1"},
+    {"kind": "condition", "name": "area", "text": "-1"},
+    {"kind": "condition", "name": "area", "text": "inf"},
+    {"kind": "condition", "name": "temperature", "text": "warm"},
+    {"kind": "condition", "name": "temperature", "text": "5000"},
+    {"kind": "condition", "name": "irradiance", "text": "-1"},
+    {"kind": "condition", "name": "series_cells", "text": "1.5"},
+    {"kind": "condition", "name": "series_cells", "text": "inf"},
+    {"kind": "confirm", "names": ["weather"]},
+    {"kind": "rename-sweep", "text": "  "},
+    {"kind": "rename-device", "device": "gone", "text": "x"},
+    {"kind": "remove", "entries": ["gone"]},
+]
+
+
+@pytest.mark.parametrize("event", REFUSED, ids=str)
+def test_what_cannot_be_done_is_told_in_a_sentence(lit, event):
+    workspace, entry = lit
+    with pytest.raises((StepRefused, ConditionRefused)) as refused:
+        step_for(workspace, {"entry": entry, **event} if event else event)
+    sentence = str(refused.value)
+    assert sentence[0].isupper() or sentence.split(":")[0] in ("ideality factor",)
+    assert sentence.endswith(".") and isinstance(refused.value, SweepbenchError)
+
+
+def test_without_a_curve_there_is_nothing_to_move():
+    workspace, (entry,) = bench(LIT)
+    with pytest.raises(StepRefused, match="first guess"):
+        moved(workspace, {"kind": "dial", "entry": entry, "parameter": "ideality", "fraction": 0.5})
