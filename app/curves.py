@@ -6,13 +6,14 @@ Each curve names the trace it stands for and the axis it hangs on; the figure ha
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from typing import Literal
 
 import numpy as np
 
-from core.diode import OneDiode
+from core.diode import Landmarks, OneDiode
 from core.local_ideality import local_ideality, model_local_ideality
 from core.metrics import noise_level
 from core.sweep import Sweep
@@ -31,6 +32,12 @@ STRIP_POINTS = 300  # more would not be seen, and the answer to a moving hand st
 
 # A sweep never changes, so its noise is judged once and a moving hand need not wait for it.
 noise_of = lru_cache(maxsize=4096)(noise_level)
+
+
+@lru_cache(maxsize=64)
+def landmarks_of(model: OneDiode) -> Landmarks:
+    """Landmarks of a model: lines, grips and numbers of one answer all ask for the same."""
+    return model.landmarks()
 noise_of_points = lru_cache(maxsize=4096)(point_noise)
 
 
@@ -59,7 +66,7 @@ def model_curves(sweep: Sweep, model: OneDiode, strip: Strip) -> list[Curve]:
 def _lit_lines(sweep: Sweep, model: OneDiode, units: Units) -> list[Curve]:
     voltage = voltage_grid(sweep, model)
     current = model.current(voltage)
-    marks = model.landmarks()
+    marks = landmarks_of(model)
     corner = np.array([[0, marks.jmp], [marks.vmp, marks.jmp], [marks.vmp, 0]])
     return [
         Curve("model", "y", voltage, current * units.current_factor),
@@ -77,7 +84,7 @@ def voltage_grid(sweep: Sweep, model: OneDiode) -> np.ndarray:
     """Voltages of the model line: evenly over the sweep, to Voc, and somewhat beyond."""
     low, high = float(sweep.voltage.min()), float(sweep.voltage.max())
     if sweep.lit:
-        voc = model.landmarks().voc
+        voc = landmarks_of(model).voc
         low = min(low, 0.0)
         if np.isfinite(voc):
             high = max(high, 1.02 * voc)
@@ -119,6 +126,8 @@ def squeezed(residual: np.ndarray) -> np.ndarray:
 
 def thinned(sweep: Sweep, most: int) -> tuple[np.ndarray, np.ndarray]:
     """Voltage and current of at most ``most`` points, ends included."""
+    if len(sweep.voltage) <= most:
+        return sweep.voltage, sweep.current
     chosen = chosen_points(sweep, most)
     return sweep.voltage[chosen], sweep.current[chosen]
 
@@ -147,11 +156,15 @@ def _positive(values: np.ndarray) -> np.ndarray:
 def _short(values: np.ndarray) -> list[float | None]:
     """Six significant digits of the largest value: finer than a screen, and short to send."""
     finite = np.isfinite(values)
-    if not finite.any():
+    whole = bool(finite.all())
+    known = values if whole else values[finite]
+    if not known.size:
         return [None] * len(values)
-    if (values[finite] > 0).all() and values[finite].max() > 1e3 * values[finite].min():
-        rounded = [float(f"{v:.6g}") if ok else None for v, ok in zip(values.tolist(), finite, strict=True)]
-        return rounded
-    largest = np.abs(values[finite]).max()
-    decimals = 6 - int(np.floor(np.log10(largest))) if largest > 0 else 6
-    return [v if ok else None for v, ok in zip(np.round(values, decimals).tolist(), finite, strict=True)]
+    low, high = float(known.min()), float(known.max())
+    if low > 0 and high > 1e3 * low:
+        rounded = [float(f"{value:.6g}") for value in values.tolist()]
+    else:
+        largest = max(-low, high)
+        decimals = 6 - math.floor(math.log10(largest)) if largest > 0 else 6
+        rounded = np.round(values, decimals).tolist()
+    return rounded if whole else [value if ok else None for value, ok in zip(rounded, finite.tolist(), strict=True)]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import replace
 from typing import Any
@@ -10,6 +11,7 @@ from core import steps
 from core.errors import ConditionRefused, StepRefused
 from core.fit_settings import FitSettings
 from core.point_choice import leave_out_box, use_all
+from core.repeats import noise_from_repeats
 from core.workspace import Workspace
 
 from .units import Units
@@ -54,6 +56,20 @@ def use_all_points(workspace: Workspace, event: Event) -> Step:
     return use_all(workspace, workspace.entry(event["entry"]).id)
 
 
+def noise_by_repeats(workspace: Workspace, event: Event) -> Step:
+    """Effective weights, with the noise of current and voltage judged from the device's like sweeps."""
+    entry = workspace.entry(event["entry"]).id
+    here = workspace.sweep(entry)
+    alike = [
+        s
+        for e in workspace.entries_of(workspace.entries[entry].device)
+        if (s := workspace.sweep(e.id)).conditions == here.conditions and s.direction == here.direction
+    ]
+    current, voltage = noise_from_repeats(alike)
+    settings = replace(workspace.fit(entry).settings, weights="effective", voltage_noise=voltage, current_noise=current)
+    return steps.set_fit_settings(workspace, entry, settings, label="noise from repeats")
+
+
 def _choice(name: str, text: str) -> str:
     if name not in CHOICES or text not in CHOICES[name]:
         raise StepRefused(f"The page asked for “{text}” as {name}, which this version does not know. Reload the page.")
@@ -64,10 +80,11 @@ def _window(workspace: Workspace, entry: str, settings: FitSettings, name: str, 
     voltage = workspace.sweep(entry).voltage
     whole = float(voltage.min()), float(voltage.max())
     low, high = settings.window or whole
+    typed = parse_number(text, "Voltage window") if text else math.inf
     if name == "window_low":
-        low = parse_number(text, "Voltage window") if text else whole[0]
+        low = typed if math.isfinite(typed) else whole[0]
     else:
-        high = parse_number(text, "Voltage window") if text else whole[1]
+        high = typed if math.isfinite(typed) else whole[1]
     if not low < high:
         raise ConditionRefused("The voltage window must run from a lower to a higher voltage.")
     return None if low <= whole[0] and high >= whole[1] else (low, high)

@@ -16,8 +16,9 @@ from core.handles import Move, drag, set_parameter
 from core.sweep import Sweep
 from core.workspace import Workspace
 
-from .fit_settings import change_setting, leave_out, use_all_points
+from .fit_settings import change_setting, leave_out, noise_by_repeats, use_all_points
 from .mechanisms import BY_PARAMETER
+from .together import refine_sweeps_together
 from .units import Units, kelvin
 from .wording import parse_number
 
@@ -138,6 +139,8 @@ _STEPS: dict[str, Callable[[Workspace, Event], Step | None]] = {
     "setting": change_setting,
     "leave-out": leave_out,
     "use-all": use_all_points,
+    "repeats": noise_by_repeats,
+    "together": refine_sweeps_together,
     "condition": _condition,
     "band-gap": _band_gap,
     "confirm": lambda w, e: steps.confirm_conditions(w, e["entry"], list(e["names"])),

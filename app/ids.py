@@ -11,6 +11,9 @@ class Id(StrEnum):
     HAND = "hand"  # what the user's hand did last: the event that becomes a step
     SCENE = "scene"  # everything that the thin layer paints beside the figure
     TRAY = "tray"
+    TRAY_DRAWN = "tray-drawn"  # which tray the tab shows, so that a model change need not send it again
+    TRAY_UNREAD = "tray-unread"  # sweeps whose lines the page still waits for
+    TRAY_READ = "tray-read"
     DRAWN = "drawn"  # which figure the tab shows, so that a model change need not send it again
     JOB = "job"
     JOB_CLOCK = "job-clock"

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from functools import lru_cache
 from typing import Any
 
 from core.derived import derive
-from core.errors import SweepbenchError
-from core.estimates import Estimate, estimates, plateau_reading
+from core.errors import FitFailed, SweepbenchError
+from core.estimates import Estimate, estimates, plateau_reading, shunt_confirmed
+from core.model_choice import compare_models
 from core.models import Model
 from core.point_choice import used
+from core.profile import Interval, profile_intervals
 from core.refinement import Refinement
 from core.sweep import Sweep
 from core.workspace import Workspace
@@ -20,6 +23,8 @@ from .units import Units
 from .wording import number, with_uncertainty
 
 _estimates = lru_cache(maxsize=64)(estimates)
+_models = lru_cache(maxsize=64)(compare_models)
+_profiles = lru_cache(maxsize=64)(profile_intervals)
 
 
 def settings_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
@@ -61,40 +66,57 @@ def interval_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     refined, sweep = workspace.refined(entry), workspace.sweep(entry)
     if refined is None:
         return {"rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": ""}
+    try:
+        found = _profiles(sweep, refined)
+    except FitFailed as failure:
+        return {"rows": [], "sentence": str(failure), "choice": ""}
     units = Units.of(sweep.per_area)
     rows = [
-        {"name": BY_PARAMETER[name].title, "words": interval_words(*refined.intervals[name], units, name)}
-        for name in refined.free
-        if name in refined.intervals
+        {"name": BY_PARAMETER[name].title, "words": interval_words(interval, units, name)} for name, interval in found.items()
     ]
     level = f"{100 * refined.settings.confidence:.4g} %"
-    return {"rows": rows, "sentence": f"{level} intervals, fit noise only.", "choice": ""}
+    return {"rows": rows, "sentence": f"{level} intervals by profile likelihood, fit noise only.", "choice": _choice(sweep, refined)}
 
 
-def interval_words(low: float, high: float, units: Units, parameter: str) -> str:
+def _choice(sweep: Sweep, refined: Refinement) -> str:
+    """One diode or two: what the data say."""
+    try:
+        return _models(sweep, replace(refined.settings, hold=None, bounds={}, confidence=0.95)).sentence
+    except FitFailed:
+        return ""
+
+
+def interval_words(interval: Interval, units: Units, parameter: str) -> str:
     """``4.1 to 4.6 Ω cm²``; ``> 4.1`` or ``< 0.2`` where the data only bound it."""
     factor, unit = units.parameter_factor(parameter), units.parameter_unit(parameter)
-    if math.isinf(high) and low <= 0:
+    low, high = interval.low * factor, interval.high * factor
+    if not interval.low_bounded and not interval.high_bounded:
         return "not determined"
-    if math.isinf(high):
-        return f"> {number(low * factor, digits=3)} {unit}".strip()
-    if low <= 0:
-        return f"< {number(high * factor, digits=3)} {unit}".strip()
+    if not interval.high_bounded:
+        return f"> {number(low, digits=3)} {unit}".strip()
+    if not interval.low_bounded:
+        return f"< {number(high, digits=3)} {unit}".strip()
     half = 0.5 * (high - low)
-    return f"{number(low * factor, half * factor)} to {number(high * factor, half * factor)} {unit}".strip()
+    return f"{number(low, half)} to {number(high, half)} {unit}".strip()
 
 
 def estimate_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     """Estimates beside the fit, the sentence on the plateau, and derived figures."""
     sweep, model = workspace.sweep(entry), workspace.fit(entry).model
     dark, levels = dark_of(workspace, entry), levels_of(workspace, entry)
+    plateau = plateau_reading(sweep, dark) if sweep.lit else ""
     rows = [_estimate(e, sweep, model) for e in _estimates(sweep, dark=dark, levels=levels, model=model)]
     gap = workspace.devices[workspace.entries[entry].device].band_gap
     return {
-        "rows": rows,
-        "plateau": plateau_reading(sweep, dark) if sweep.lit else "",
+        "rows": [row | {"note": ""} if row["note"] == plateau else row for row in rows],  # it stands above them already
+        "plateau": plateau,
         "derived": _derived(sweep, model, gap) if model is not None and sweep.lit else [],
     }
+
+
+def is_shunt(workspace: Workspace, entry: str) -> bool:
+    """Whether the dark sweep of the device confirms that the plateau's slope is a shunt."""
+    return shunt_confirmed(workspace.sweep(entry), dark_of(workspace, entry))
 
 
 def dark_of(workspace: Workspace, entry: str) -> Sweep | None:
@@ -120,9 +142,14 @@ def _estimate(estimate: Estimate, sweep: Sweep, model: Model | None) -> dict[str
         "name": estimate.name,
         "value": "–" if value is None else f"{with_uncertainty(value, uncertainty)} {unit}".strip(),
         "fit": "" if fitted is None else number(fitted * factor),
-        "method": f"{estimate.method}. {estimate.source}.",
+        "method": f"{_capital(estimate.method)}. {_capital(estimate.source)}.",
         "note": estimate.note,
     }
+
+
+def _capital(words: str) -> str:
+    """A sentence's beginning; a formula keeps its own."""
+    return words[:1].upper() + words[1:] if words[:2].isalpha() and words[:2].islower() else words
 
 
 def _unit(parameter: str, units: Units) -> tuple[float, str]:

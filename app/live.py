@@ -18,7 +18,7 @@ from core.sweep import Sweep
 from core.workspace import Workspace
 
 from . import readout
-from .curves import STRIPS, model_curves
+from .curves import STRIPS, landmarks_of, model_curves
 from .hand import MODEL_KINDS, moved, sweep_of
 from .losses_scene import answer_target
 from .pair_scene import answer_what_if
@@ -31,6 +31,8 @@ def register(server: Flask, store: Store) -> None:
     def live() -> tuple[Response, int]:
         event = request.get_json()
         try:
+            if not isinstance(event, dict) or not isinstance(event.get("workspace"), str) or "revision" not in event:
+                raise StepRefused("The page named no workspace. Reload the page.")
             workspace = store.current(event["workspace"])
             if workspace.revision != event["revision"]:
                 raise StaleRevision(event["revision"], workspace.revision)
@@ -68,7 +70,7 @@ def answer_bench(workspace: Workspace, event: dict[str, Any]) -> dict[str, Any]:
         "curves": [curve.to_dict() for curve in model_curves(sweep, move.model, strip)],
         "handles": _marks(event, sweep, workspace.fit(event["entry"]).model, move.model, hold),
         "dials": readout.dial_values(sweep, move.model),
-        "metrics": readout.live_metrics(sweep, move.model.landmarks()) if sweep.lit else {},
+        "metrics": readout.live_metrics(sweep, landmarks_of(move.model)) if sweep.lit else {},
     }
 
 

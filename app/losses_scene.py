@@ -19,7 +19,8 @@ from core.sweep import Sweep
 from core.workspace import Workspace
 
 from . import readout
-from .figures.ladder import ladder_figure
+from .figures.ladder import FOOT, ladder_figure
+from .insight import is_shunt
 from .mechanisms import BY_PARAMETER
 from .scene import View, active_entry, full_name, short_name
 from .states import State, state_of
@@ -128,7 +129,9 @@ def _story(workspace: Workspace, entry: str, found: Losses) -> tuple[str, ...]:
     top = limit(found.gap, found.sweep.temperature, found.sweep.irradiance, found.emission)
     assumed = sorted(workspace.assumed(entry) | ({"band_gap"} if found.assumed else set()))
     too_much = () if found.assumed else check_against_limit(readout.measured(found.sweep).jsc, found.gap, found.sweep.irradiance)
-    return (*tell_losses(found.name, found.shares, top, found.gap, assumed=assumed), *(f"{f.what} {f.meaning}" for f in too_much))
+    shunt = is_shunt(workspace, entry)
+    told = tell_losses(found.name, found.shares, top, found.gap, shunt_confirmed=shunt, assumed=assumed)
+    return (*told, *(f"{f.what} {f.meaning}" for f in too_much))
 
 
 def _row(parameter: str, name: str, loss: float, limit_power: float, *, movable: bool) -> dict[str, Any]:
@@ -184,7 +187,7 @@ def answer_target(workspace: Workspace, event: Mapping[str, Any]) -> dict[str, A
         "values": values,
         "words": f"With these targets: {_power_words(model, sweep)}, {power_change(gain)} mW cm⁻².",
         "x": [power * DENSITY.power_factor],
-        "y": [workspace.devices[workspace.entries[entry].device].name],
+        "y": [FOOT],
     }
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from typing import Any
 
 from plotly.graph_objects import Figure
@@ -11,12 +11,14 @@ from core.comparing import compare
 from core.diode import PARAMETERS, OneDiode
 from core.errors import ComparisonRefused, ConditionRefused, StepRefused
 from core.retelling import tell_difference
+from core.sentences import conditions, listed
 from core.shares import what_if
 from core.verdict import Verdict, budget_of, stands_out
 from core.workspace import Workspace
 
 from . import readout
 from .figures.pair import Side, pair_figure, shares_figure, what_if_line
+from .insight import is_shunt
 from .scene import View, active_entry, full_name
 from .states import State, state_of
 from .units import DENSITY, Units
@@ -38,7 +40,7 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
     """Both figures and the data of the screen; a refusal is its sentence."""
     a, b = chosen_pair(workspace, view)
     normalised = bool(view.get("normalised"))
-    data: dict[str, Any] = {"a": a, "b": b, "normalised": normalised, "whatIf": "", "story": "", "sources": "", "note": "", "refusal": ""}
+    data: dict[str, Any] = {"a": a, "b": b, "normalised": normalised, "whatIf": "", "story": "", "sources": "", "note": "", "notice": "", "refusal": ""}
     if a is None or b is None:
         refusal = "Two lit sweeps are needed to compare. Drop more files, or choose two in the tray."
         return Figure(), Figure(), {**data, "refusal": refusal}
@@ -49,8 +51,12 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
     states = state_of(workspace, a), state_of(workspace, b)
     sides = [Side(workspace.sweep(e), s.model if s else None, full_name(workspace, e)) for e, s in zip((a, b), states, strict=True)]
     curves = pair_figure(*sides, normalised=normalised, zoom_key=f"pair {a} {b} {normalised}")
-    verdict = _verdict(workspace, a, b, states, view.get("budget") or {})
     data["budget"] = view.get("budget") or {}
+    try:
+        known = {name: _relative(data["budget"].get(name)) for name in ("area", "lamp")}
+    except ConditionRefused as refused:  # the field keeps what was typed, and the screen goes on without it
+        known, data["notice"] = {}, str(refused)
+    verdict = _verdict(workspace, a, b, states, {**known, "area_shared": bool(data["budget"].get("area_shared"))})
     data["compared"] = _compared(workspace, a, b, verdict)
     try:
         if None in states:
@@ -74,10 +80,17 @@ def _shares(workspace: Workspace, a: str, b: str, states: tuple, verdict: Verdic
         intervals={name: (low * factor, high * factor) for name, (low, high) in shares.intervals.items()},
         rest=None if shares.residual is None else shares.residual * factor,
     )
+    story = tell_difference(
+        full_name(workspace, a), full_name(workspace, b), shares, verdict,
+        shunt_confirmed=is_shunt(workspace, a) and is_shunt(workspace, b),
+    )
+    note = "order-free shares" + ("; whiskers 95 %, fit noise only" if shares.intervals else "")
     assumed = workspace.assumed(a) | workspace.assumed(b)
-    story = tell_difference(full_name(workspace, a), full_name(workspace, b), shares, verdict, assumed=sorted(assumed))
-    note = "mW cm⁻², order-free shares" + ("; whiskers 95 %, fit noise only" if shares.intervals else "")
-    return bars, {"story": story, "note": note, "sources": _sources(states)}
+    return bars, {"story": story, "note": note, "sources": f"{_sources(states)} {_assumed(assumed)}".strip()}
+
+
+def _assumed(names: Collection[str]) -> str:
+    return f"Assumed, not given: {listed(conditions(names))}." if names else ""
 
 
 def _sources(states: tuple[State, State]) -> str:
@@ -92,7 +105,7 @@ def _verdict(
 ) -> Verdict:
     budget = budget_of(
         workspace, a, b, lambda entry: readout.measured(workspace.sweep(entry)),
-        area=_relative(known.get("area")), lamp=_relative(known.get("lamp")), area_shared=bool(known.get("area_shared")),
+        **known,
         ideality=states[0].model.ideality if states[0] else 1.0,
     )
     return stands_out(readout.measured(workspace.sweep(a)), readout.measured(workspace.sweep(b)), budget)

@@ -6,9 +6,9 @@ from dataclasses import replace
 from functools import lru_cache
 from typing import Any
 
-from core.checks import Finding, check
-from core.diode import PARAMETERS, Landmarks, OneDiode
+from core.checks import Finding, check, check_pair
 from core.dials import dial_ranges
+from core.diode import PARAMETERS, Landmarks, OneDiode
 from core.handles import Handle, handles
 from core.metrics import measure
 from core.quantity import Metrics, Quantity
@@ -23,6 +23,7 @@ from .wording import concise, field, number, plus_minus, with_uncertainty
 # A sweep never changes, so what is read off it is read once.
 measured = lru_cache(maxsize=4096)(measure)
 checked = lru_cache(maxsize=4096)(check)
+_paired = lru_cache(maxsize=512)(check_pair)
 _ranges = lru_cache(maxsize=256)(dial_ranges)  # of a sweep and a model's parameters
 
 
@@ -192,9 +193,20 @@ def condition_rows(workspace: Workspace, entry: str, sweep: Sweep) -> dict[str, 
     }
 
 
-def finding_rows(sweep: Sweep, refined: Refinement | None) -> list[dict[str, str]]:
+def pair_findings(workspace: Workspace, entry: str) -> tuple[Finding, ...]:
+    """What this sweep and the device's other direction say together; hysteresis is told beside both."""
+    here = workspace.sweep(entry)
+    for other in workspace.entries_of(workspace.entries[entry].device):
+        there = workspace.sweep(other.id)
+        if here.lit and there.conditions == here.conditions and there.direction != here.direction:
+            forward, reverse = (here, there) if here.direction == "forward" else (there, here)
+            return _paired(forward, reverse)
+    return ()
+
+
+def finding_rows(sweep: Sweep, refined: Refinement | None, paired: tuple[Finding, ...] = ()) -> list[dict[str, str]]:
     """What to know before trusting this sweep or its fit."""
-    rows = [_finding(f) for f in checked(sweep)]
+    rows = [_finding(f) for f in (*checked(sweep), *paired)]
     rows += [{"severity": "note", "name": "fit", "what": sentence, "meaning": "", "remedy": ""}
              for sentence in (refined.findings if refined else ())]
     rows += [{"severity": "note", "name": "read", "what": note, "meaning": "", "remedy": ""} for note in sweep.notes]

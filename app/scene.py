@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import math
+import time
+from collections.abc import Iterable, Mapping
 from functools import lru_cache
 from typing import Any
 
@@ -17,6 +19,7 @@ from core.workspace import Entry, Workspace
 from . import insight, readout
 from .curves import STRIPS, model_curves, thinned
 from .figures.bench import bench_figure, empty_figure
+from .together import offered
 from .units import Units
 from .wording import number
 
@@ -107,8 +110,9 @@ def scene(workspace: Workspace, view: View, history: History) -> dict[str, Any]:
         "dials": readout.dial_rows(workspace, entry, sweep),
         "metrics": readout.metric_rows(sweep, model.landmarks() if model and sweep.lit else None),
         "conditions": readout.condition_rows(workspace, entry, sweep),
-        "findings": readout.finding_rows(sweep, refined),
+        "findings": readout.finding_rows(sweep, refined, readout.pair_findings(workspace, entry)),
         "fit": _fit_line(sweep, refined),
+        "caution": next(iter(refined.findings), "") if refined else "",
         "panel": panel_of(view),
         **_panel(workspace, entry, view),
     }
@@ -124,6 +128,7 @@ def _panel(workspace: Workspace, entry: str, view: View) -> dict[str, Any]:
         return {
             "settings": insight.settings_rows(workspace, entry),
             "correlation": insight.correlation_rows(workspace.refined(entry)),
+            "together": offered(workspace, entry),
         }
     if panel_of(view) == "estimates":
         return {"estimates": insight.estimate_rows(workspace, entry)}
@@ -143,16 +148,35 @@ def _fit_line(sweep: Sweep, refined: Any) -> str:
     return f"rms residual {residual} over {refined.points} points; ± is fit noise only"
 
 
-def tray(workspace: Workspace) -> list[dict[str, Any]]:
-    """The tray: devices in order, each with its sweeps."""
+def tray_key(workspace: Workspace) -> str:
+    """Changes exactly when a line of the tray may: a step that only moves a model leaves these records alone."""
+    return f"{workspace.id} {hash((tuple(workspace.entries.values()), tuple(workspace.devices.values())))}"
+
+
+def tray(workspace: Workspace, until: float = math.inf) -> list[dict[str, Any]]:
+    """The tray: devices in order, each with its sweeps.
+
+    A sweep whose turn comes after ``until`` [s, monotonic clock] has ``read`` False and waits for ``tray_readings``.
+    """
     devices: dict[str, dict[str, Any]] = {}
     for entry in workspace.in_tray_order():
         device = workspace.devices[entry.device]
         row = devices.setdefault(
             device.id, {"device": device.id, "name": device.name, "group": device.group, "sweeps": []}
         )
-        row["sweeps"].append(_tray_row(workspace, entry))
+        row["sweeps"].append(_tray_row(workspace, entry, until))
     return list(devices.values())
+
+
+def tray_readings(workspace: Workspace, entries: Iterable[str], until: float = math.inf) -> dict[str, dict[str, Any]]:
+    """What the tray says of these sweeps, by id: of those that are still there, and of at least one until time is up."""
+    readings = {}
+    for entry in entries:
+        if entry in workspace.entries:
+            readings[entry] = _tray_reading(workspace.sweep(entry))
+            if time.monotonic() > until:
+                break
+    return readings
 
 
 def short_name(workspace: Workspace, entry: Entry) -> str:
@@ -168,15 +192,27 @@ def full_name(workspace: Workspace, entry: str) -> str:
     return device if label == device else f"{device} {label}"
 
 
-def _tray_row(workspace: Workspace, entry: Entry) -> dict[str, Any]:
-    sweep = workspace.sweep(entry.id)
-    findings = [f for f in readout.checked(sweep) if f.severity != "note"]
-    worst = "stop" if any(f.severity == "stop" for f in findings) else "caution" if findings else ""
+def _tray_row(workspace: Workspace, entry: Entry, until: float) -> dict[str, Any]:
+    reading = _tray_reading(workspace.sweep(entry.id)) if time.monotonic() < until else _UNREAD
     return {
         "entry": entry.id,
         "name": entry.name,
         "label": short_name(workspace, entry),
-        "direction": sweep.direction if sweep.lit else "dark",
+        "direction": entry.reading.direction if workspace.conditions(entry.id).lit else "dark",
+        **reading,
+    }
+
+
+_UNREAD = {"read": False, "value": "", "flag": "", "flags": "", "spark": ""}
+
+
+@lru_cache(maxsize=2**15)  # above the largest tray: one more than fits, read in turn, would never be found again
+def _tray_reading(sweep: Sweep) -> dict[str, Any]:
+    """What the points of a sweep say in its line; the sweep never changes, so they are read once."""
+    findings = [f for f in readout.checked(sweep) if f.severity != "note"]
+    worst = "stop" if any(f.severity == "stop" for f in findings) else "caution" if findings else ""
+    return {
+        "read": True,
         "value": readout.efficiency_text(readout.measured(sweep), sweep) if sweep.lit else "",
         "flag": worst,
         "flags": " ".join(f.what for f in findings),
@@ -184,7 +220,6 @@ def _tray_row(workspace: Workspace, entry: Entry) -> dict[str, Any]:
     }
 
 
-@lru_cache(maxsize=4096)
 def spark_path(sweep: Sweep) -> str:
     """The sweep as a tiny line: an SVG path in a box of 56 by 18."""
     voltage, current = thinned(sweep, 28)

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import contextlib
 import logging
 
 from dash import Dash, set_props
 
-from core.errors import SweepbenchError
+from core.errors import StoreFailed, SweepbenchError
 from core.store import Store
+from core.tables import FIRST_NAME
+from core.workspace import Workspace
 
 from . import callbacks, files, live
 from .door import Door
@@ -39,8 +42,8 @@ def create_app(store: Store, door: Door, jobs: Jobs) -> Dash:
     )
 
     def layout():
-        workspace_id = store.first()
-        return page(workspace_id, store.current(workspace_id).revision, token_cookie=door.csrf_cookie)
+        workspace = first_readable(store)
+        return page(workspace.id, workspace.revision, token_cookie=door.csrf_cookie)
 
     app.layout = layout
     for activity in callbacks.ACTIVITIES:
@@ -49,6 +52,14 @@ def create_app(store: Store, door: Door, jobs: Jobs) -> Dash:
     files.register(app.server, store)
     door.guard(app.server)
     return app
+
+
+def first_readable(store: Store) -> Workspace:
+    """The workspace used last, or the next one if that is damaged: a page can then still open, and say so."""
+    for info in store.workspaces():
+        with contextlib.suppress(StoreFailed):
+            return store.current(info.id)
+    return store.current(store.create(FIRST_NAME))
 
 
 def say_what_went_wrong(error: Exception) -> None:

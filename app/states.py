@@ -5,12 +5,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import lru_cache
 
+from core.comparing import alongside
 from core.diode import OneDiode
-from core.errors import FitFailed
+from core.errors import ComparisonRefused, FitFailed
 from core.first_guess import first_guess
+from core.models import one_diode_like
 from core.refine import refine
 from core.refinement import Refinement
 from core.sweep import Sweep
+from core.two_diode import TwoDiode
 from core.workspace import Workspace
 
 
@@ -21,27 +24,40 @@ class State:
     Attributes
     ----------
     model : OneDiode
-    known : Refinement or OneDiode
+        Mechanisms are those of one diode: for two diodes, the one-diode fit made alongside.
+    known : Refinement, OneDiode or TwoDiode
         The refinement where the model still stands where it left it; shares then have intervals.
     source : str
         For the user: how this model came about; "" for a refined one.
     """
 
     model: OneDiode
-    known: Refinement | OneDiode
+    known: Refinement | OneDiode | TwoDiode
     source: str = ""
 
 
 def state_of(workspace: Workspace, entry: str) -> State | None:
     """The state of a sweep, or None where no curve can be laid over it."""
     refined, model = workspace.refined(entry), workspace.fit(entry).model
+    sweep = workspace.sweep(entry)
+    if isinstance(model, TwoDiode):
+        return _through_one(sweep, refined or model, "" if refined else "laid by hand and not refined")
     if refined is not None:
         return State(refined.model, refined)
-    sweep = workspace.sweep(entry)
     if model is not None and model != _guessed(sweep):
         return State(model, model, "laid by hand and not refined")
     fitted = _fitted(sweep)
     return None if fitted is None else State(fitted.model, fitted, "fitted for this screen; refine on the bench to keep that")
+
+
+def _through_one(sweep: Sweep, known: Refinement | TwoDiode, source: str) -> State | None:
+    if not sweep.lit:  # nothing to compare, and the sentence that refuses says why
+        return State(one_diode_like(known.model if isinstance(known, Refinement) else known), known, source)
+    try:
+        one, _ = alongside(sweep, known)
+    except ComparisonRefused:
+        return None
+    return State(one.model, known, source)
 
 
 @lru_cache(maxsize=512)

@@ -39,6 +39,7 @@
     },
     scene: (data) => bench.receiveScene(data),
     tray: (data) => bench.receiveTray(data),
+    trayRead: (data) => bench.receiveReadings(data),
     intervals: (data) => bench.receiveIntervals(data),
     pair: (data) => bench.receivePair(data),
     losses: (data) => bench.receiveLosses(data),
@@ -75,7 +76,8 @@
     document.body.dataset.screen = link.dataset.screen;
     for (const each of links) each.removeAttribute("aria-current");
     link.setAttribute("aria-current", "page");
-    if (bench.view.screen !== link.dataset.screen) bench.changeView({ screen: link.dataset.screen });
+    // A fresh tab is on the bench; to say so would draw everything twice.
+    if ((bench.view.screen ?? "bench") !== link.dataset.screen) bench.changeView({ screen: link.dataset.screen });
   }
   window.addEventListener("popstate", () => showScreen(location.pathname, false));
   document.addEventListener("click", (click) => {
@@ -119,6 +121,8 @@
     },
     "leave-out": () => bench.armLeaveOut(),
     "use-all": () => bench.useAll(),
+    repeats: () => bench.send({ kind: "repeats", entry: bench.scene.entry }),
+    together: () => bench.refineTogether(),
     "pick-files": () => bench.pick(false),
     "pick-folder": () => bench.pick(true),
     "save-svg": () => savePicture("svg"),
@@ -131,7 +135,7 @@
     const act = click.target.closest?.("[data-act]")?.dataset.act;
     if (act) (acts[act] ?? bench.workspaceActs[act])?.();
     const save = click.target.closest?.("[data-save]")?.dataset;
-    if (save) savePicture(save.save, document.querySelector(`#${save.graph} .js-plotly-plot`), `${save.graph} ${bench.scene.title}`);
+    if (save) savePicture(save.save, document.querySelector(`#${save.graph} .js-plotly-plot`), bench.pictureName(save.graph));
     const strip = click.target.closest?.("[data-strip]");
     if (strip) bench.changeView({ strip: strip.dataset.strip });
     if (click.target.id === "notice-line") bench.say("");

@@ -142,6 +142,7 @@
     text(byId("bench-title"), scene.title);
     text(byId("bench-subtitle"), scene.subtitle === scene.title ? "" : scene.subtitle);
     text(byId("fit-line"), scene.fit);
+    text(byId("fit-caution"), scene.caution);
     text(byId("edge-line"), "");
     for (const letter of document.querySelectorAll(".metrics .letter")) text(letter, scene.letter);
     for (const button of document.querySelectorAll("[data-strip]")) {

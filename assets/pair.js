@@ -52,6 +52,7 @@
     slot("b", data.b);
     check("data-pair-scale", data.normalised ? "normalised" : "absolute");
     refuse("pair-refusal", data.refusal);
+    if (data.notice) bench.say(data.notice);
     text(byId("pair-story"), data.story);
     text(byId("pair-sources"), data.sources);
     text(byId("pair-bars-note"), data.note);
@@ -205,6 +206,11 @@
     if (event.target.closest?.("#emission-choice")) bench.changeView({ emission: event.target.value });
   });
   bench.pairChoice = () => ({ a: bench.pair?.a ?? null, b: bench.pair?.b ?? null });
+  /** What a picture of these screens is called: what it shows, of whom. */
+  bench.pictureName = (graph) => {
+    const [a, b] = ["a", "b"].map((name) => document.querySelector(`[data-slot=${name}] select`)?.selectedOptions[0]?.text ?? "");
+    return graph === "ladder" ? `${bench.losses?.title} losses` : `${a} and ${b}${graph === "pair-bars" ? " difference" : ""}`;
+  };
   bench.swap = () => {
     const { a, b } = bench.pairChoice();
     bench.changeView({ pair: { a: b, b: a } });

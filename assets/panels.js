@@ -12,6 +12,7 @@
     for (const panel of document.querySelectorAll(".panel")) panel.hidden = panel.dataset.panel !== scene.panel;
     if (scene.settings) paintSettings(scene.settings);
     if (scene.correlation) paintCorrelation(scene.correlation);
+    if (scene.together) paintTogether(scene.together);
     if (scene.estimates) paintEstimates(scene.estimates);
   };
 
@@ -29,7 +30,6 @@
 
   function paintSettings(settings) {
     for (const row of document.querySelectorAll("[data-setting]")) fieldOf(row).value = settings[row.dataset.setting];
-    document.querySelector("[data-setting=voltage_noise]").hidden = settings.weights !== "effective";
     byId("left-out-line").textContent = settings.left_out;
   }
 
@@ -51,6 +51,35 @@
     });
     byId("correlation").replaceChildren(...(names.length ? [head, ...rows] : []));
   }
+
+  /** Which other sweeps of the device are refined along, and what they share. */
+  function paintTogether({ sweeps, shared }) {
+    const host = byId("together");
+    if (!sweeps.length) return host.replaceChildren();
+    const chips = (items, name, checked) =>
+      items.map((item) => {
+        const chip = make("button", "", "chip");
+        chip.setAttribute("role", "switch");
+        chip.setAttribute("aria-checked", String(checked(item)));
+        chip.dataset[name] = item.entry ?? item.parameter;
+        if (item.symbol) chip.append(item.symbol, make("sub", item.index));
+        else chip.textContent = item.name;
+        return chip;
+      });
+    const along = make("div", "", "chips");
+    along.append(make("span", "with", "hint"), ...chips(sweeps, "along", () => false));
+    const common = make("div", "", "chips");
+    common.append(make("span", "one value for all", "hint"), ...chips(shared, "common", (item) => item.on));
+    const go = make("button", "refine together", "plain");
+    go.dataset.act = "together";
+    host.replaceChildren(make("h3", "Refine together"), along, common, go);
+  }
+  bench.refineTogether = () => {
+    const on = (selector) => [...document.querySelectorAll(selector)];
+    const entries = on("[data-along][aria-checked=true]").map((chip) => chip.dataset.along);
+    const shared = Object.fromEntries(on("[data-common]").map((chip) => [chip.dataset.common, chip.getAttribute("aria-checked") === "true"]));
+    bench.send({ kind: "together", entry: bench.scene.entry, entries, shared });
+  };
 
   function paintEstimates({ rows, plateau, derived }) {
     byId("plateau-line").textContent = plateau;
@@ -98,6 +127,8 @@
   });
   document.addEventListener("click", (click) => {
     const panel = click.target.closest?.("[data-panel-choice]");
+    const chip = click.target.closest?.(".chip");
+    if (chip) chip.setAttribute("aria-checked", String(chip.getAttribute("aria-checked") !== "true"));
     if (panel) bench.changeView({ panel: panel.dataset.panelChoice });
   });
 

@@ -52,6 +52,7 @@
       bench.reachable(false);
     } finally {
       gate.busy = false;
+      pump();
       run();
     }
   }
@@ -61,15 +62,18 @@
   let waiting = null;
 
   bench.send = (event) => {
-    outbox.push({ ...event, event: crypto.randomUUID() });
+    outbox.push({ ...event, event: crypto.randomUUID(), workspace: bench.stamp().workspace });
     pump();
   };
   bench.unsent = () => outbox.length;
 
   function pump() {
-    if (waiting || !outbox.length) return;
+    // The live request under way speaks of the revision before this step, so its answer comes first.
+    if (waiting || !outbox.length || gate.busy) return;
     const post = () => {
-      bench.setProps("hand", { data: { ...outbox[0], ...bench.stamp(), tries: (waiting?.tries ?? 0) + 1 } });
+      // The revision of the first try: what was built on one state must not be made on another.
+      outbox[0].revision ??= bench.stamp().revision;
+      bench.setProps("hand", { data: { ...outbox[0], tries: (waiting?.tries ?? 0) + 1 } });
       waiting = { tries: (waiting?.tries ?? 0) + 1, timer: setTimeout(again, RESEND) };
     };
     const again = () => {

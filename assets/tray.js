@@ -3,7 +3,11 @@
   const bench = (window.sweepbench ??= {});
   const FILES_A_BATCH = 100;
   const BYTES_A_BATCH = 4e6;
+  const ROWS_A_REQUEST = 200; // an answer carries as many of them as the server reads in a moment
+  const REREAD = 10000; // ms until lines that did not come are asked for again
   let devices = [];
+  let blocks = new Map(); // device id → {words, block}: what stands in the list
+  let rereading = null;
 
   const element = (tag, className, words) => Object.assign(document.createElement(tag), { className, textContent: words ?? "" });
   const list = () => document.getElementById("tray-list");
@@ -11,12 +15,55 @@
   const active = () => bench.scene?.entry ?? null;
   const overlay = () => bench.view?.overlay ?? [];
 
+  /** Only what differs is built anew: a tray may hold thousands of lines. */
   bench.receiveTray = (data) => {
     devices = data ?? [];
     bench.devices = devices;
-    list()?.replaceChildren(...devices.map(deviceBlock));
+    const before = blocks;
+    blocks = new Map();
+    for (const device of devices) {
+      const words = JSON.stringify(device);
+      const old = before.get(device.device);
+      blocks.set(device.device, old?.words === words ? old : { words, block: deviceBlock(device) });
+    }
+    const host = list();
+    const wanted = new Set([...blocks.values()].map(({ block }) => block));
+    for (const old of [...host.children]) if (!wanted.has(old)) old.remove();
+    let place = host.firstChild;
+    for (const block of wanted) {
+      if (block === place) place = place.nextSibling;
+      else host.insertBefore(block, place);
+    }
     bench.paintSelection();
+    readOn();
   };
+
+  /** Lines that were not read yet when the tray was sent. */
+  bench.receiveReadings = (readings) => {
+    for (const device of devices) {
+      for (const sweep of device.sweeps) {
+        const reading = readings?.[sweep.entry];
+        if (!reading || sweep.read) continue;
+        Object.assign(sweep, reading);
+        const row = rowOf(sweep.entry);
+        if (row) fill(row, sweep);
+      }
+    }
+    readOn();
+  };
+
+  function readOn() {
+    clearTimeout(rereading);
+    const entries = [];
+    for (const device of devices) {
+      for (const sweep of device.sweeps) if (!sweep.read && entries.length < ROWS_A_REQUEST) entries.push(sweep.entry);
+    }
+    if (!entries.length) return;
+    bench.setProps("tray-unread", { data: { workspace: bench.stamp().workspace, entries, at: Date.now() } });
+    rereading = setTimeout(readOn, REREAD);
+  }
+
+  const rowOf = (entry) => (entry ? document.getElementById(`sweep-${entry}`) : null);
 
   function deviceBlock(device) {
     const block = element("div", "device");
@@ -36,24 +83,32 @@
     row.setAttribute("role", "option");
     row.id = `sweep-${sweep.entry}`;
     row.dataset.entry = sweep.entry;
-    row.title = sweep.flags;
+    row.setAttribute("aria-selected", "false");
     const spark = document.createElementNS("http://www.w3.org/2000/svg", "svg");
     spark.setAttribute("class", "spark");
     spark.setAttribute("viewBox", "0 0 56 18");
     spark.setAttribute("aria-hidden", "true");
-    const line = document.createElementNS("http://www.w3.org/2000/svg", "path");
-    line.setAttribute("d", sweep.spark);
-    spark.append(line);
-    const flag = element("span", `flag ${sweep.flag}`, sweep.flag ? "!" : "");
-    if (sweep.flag) flag.setAttribute("aria-label", sweep.flags);
+    spark.append(document.createElementNS("http://www.w3.org/2000/svg", "path"));
     const beside = element("button", "beside quiet", "+");
     beside.title = "Lay this sweep beside the active one (Space)";
     beside.tabIndex = -1;
     const remove = element("button", "remove quiet", "×");
     remove.title = "Remove from the tray (Delete); undo brings it back";
     remove.tabIndex = -1;
-    row.append(spark, nameOf(sweep), element("span", "value", sweep.value), flag, beside, remove);
+    row.append(spark, nameOf(sweep), element("span", "value"), element("span", "flag"), beside, remove);
+    if (sweep.read) fill(row, sweep);
     return row;
+  }
+
+  /** What was read off the points. */
+  function fill(row, sweep) {
+    row.title = sweep.flags;
+    row.querySelector(".spark path").setAttribute("d", sweep.spark);
+    row.querySelector(".value").textContent = sweep.value;
+    const flag = row.querySelector(".flag");
+    flag.className = `flag ${sweep.flag}`;
+    flag.textContent = sweep.flag ? "!" : "";
+    if (sweep.flag) flag.setAttribute("aria-label", sweep.flags);
   }
 
   function nameOf(sweep) {
@@ -63,20 +118,29 @@
   }
 
   bench.paintSelection = () => {
-    for (const row of rows()) {
-      const here = row.dataset.entry === active();
-      row.setAttribute("aria-selected", String(here));
-      row.classList.toggle("laid", overlay().includes(row.dataset.entry));
-      const { a, b } = bench.pairChoice();
-      row.dataset.slotted = row.dataset.entry === a ? "A" : row.dataset.entry === b ? "B" : "";
-      if (here) list().setAttribute("aria-activedescendant", row.id);
+    select(active());
+    for (const row of document.querySelectorAll("#tray-list .sweep.laid")) row.classList.remove("laid");
+    for (const row of document.querySelectorAll("#tray-list .sweep[data-slotted]")) delete row.dataset.slotted;
+    for (const entry of overlay()) rowOf(entry)?.classList.add("laid");
+    const { a, b } = bench.pairChoice();
+    for (const [entry, slot] of [[b, "B"], [a, "A"]]) {
+      const row = rowOf(entry);
+      if (row) row.dataset.slotted = slot;
     }
   };
 
+  function select(entry) {
+    for (const row of document.querySelectorAll('#tray-list .sweep[aria-selected="true"]')) row.setAttribute("aria-selected", "false");
+    const row = rowOf(entry);
+    if (!row) return null;
+    row.setAttribute("aria-selected", "true");
+    list().setAttribute("aria-activedescendant", row.id);
+    return row;
+  }
+
   function choose(entry) {
     bench.changeView({ active: entry });
-    for (const row of rows()) row.setAttribute("aria-selected", String(row.dataset.entry === entry));
-    document.getElementById(`sweep-${entry}`)?.scrollIntoView({ block: "nearest" });
+    select(entry)?.scrollIntoView({ block: "nearest" });
   }
   /** On the pair screen a click fills B, with Shift A; a click on one of the two swaps them. */
   function fillSlot(entry, first) {

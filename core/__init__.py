@@ -19,14 +19,19 @@ from .errors import (
 )
 from .first_guess import first_guess
 from .fit_settings import FitSettings
+from .joint import JointRefinement, refine_together
 from .metrics import measure
+from .model_choice import ModelChoice, compare_models
+from .profile import Interval, ProfileCurve, profile_curve, profile_intervals
 from .quantity import Metrics, Quantity
 from .reading import read_sweeps
 from .refine import refine
 from .refinement import Refinement
+from .repeats import noise_from_repeats
 from .shares import Shares, difference_shares, loss_shares
 from .store import Store
 from .sweep import Conditions, Sweep
+from .two_diode import TwoDiode
 from .workspace import Device, Entry, Fit, Workspace
 
 __all__ = [
@@ -40,9 +45,13 @@ __all__ = [
     "Fit",
     "FitFailed",
     "FitSettings",
+    "Interval",
+    "JointRefinement",
     "Landmarks",
     "Metrics",
+    "ModelChoice",
     "OneDiode",
+    "ProfileCurve",
     "Quantity",
     "Refinement",
     "Shares",
@@ -52,15 +61,21 @@ __all__ = [
     "StoreFailed",
     "Sweep",
     "SweepbenchError",
+    "TwoDiode",
     "UnreadableFile",
     "Workspace",
     "check",
     "check_pair",
+    "compare_models",
     "difference_shares",
     "first_guess",
     "limit",
     "loss_shares",
     "measure",
+    "noise_from_repeats",
+    "profile_curve",
+    "profile_intervals",
     "read_sweeps",
     "refine",
+    "refine_together",
 ]

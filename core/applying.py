@@ -13,7 +13,13 @@ from types import MappingProxyType
 from typing import Any
 
 from .errors import StepRefused, SweepbenchError
-from .records import id_of_text, plain, reading_from_record, reading_record, reading_text
+from .records import (
+    id_of_text,
+    plain,
+    reading_from_record,
+    reading_record,
+    reading_text,
+)
 from .sweep import Sweep
 from .workspace import KINDS, Device, Entry, Fit, Workspace
 
@@ -128,7 +134,7 @@ def _table(old: Mapping[str, Any], put: Mapping[str, Any], kind: str, parse: Any
             table[name] = parse(record)
         except StepRefused:
             raise
-        except (SweepbenchError, KeyError, TypeError, ValueError, AttributeError, OverflowError) as problem:
+        except (SweepbenchError, LookupError, TypeError, ValueError, AttributeError, ArithmeticError) as problem:
             detail = f"{type(problem).__name__}: {problem}" if isinstance(problem, KeyError) else str(problem)
             raise StepRefused(f"The record of a {_WORDS[kind]} is not as it should be ({detail[:160]}).") from problem
     return MappingProxyType(table)

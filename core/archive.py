@@ -25,7 +25,7 @@ from typing import Any, NamedTuple
 
 from .applying import changed
 from .errors import StoreFailed, SweepbenchError
-from .records import canonical, reading_from_record
+from .records import canonical, reading_from_record, reading_record
 from .tray_steps import clean_name
 from .workspace import KINDS, Workspace
 
@@ -93,7 +93,7 @@ def unpack(data: bytes) -> Contents:
         raise StoreFailed(
             "The file is not a workspace file, or it is damaged: it cannot be unpacked. Nothing was changed."
         ) from problem
-    except (SweepbenchError, ValueError, KeyError, TypeError, AttributeError) as problem:
+    except (SweepbenchError, ValueError, LookupError, TypeError, AttributeError, ArithmeticError) as problem:
         if isinstance(problem, StoreFailed):
             raise
         detail = f"it lacks {problem}." if isinstance(problem, KeyError) else str(problem)
@@ -146,6 +146,8 @@ def _workspace(members: Mapping[str, bytes], readings: Mapping[str, str]) -> Wor
     sweeps = {name: reading_from_record(_parsed(text)) for name, text in readings.items()}
     workspace = changed(Workspace("", clean_name(body["name"])), {kind: body[kind] for kind in KINDS}, sweeps)
     canonical(workspace.records())  # refuses numbers that are none
+    for entry in workspace.entries:
+        reading_record(workspace.sweep(entry))  # refuses conditions that cannot be, or that leave no finite points
     originals = {found[1] for path in members if (found := _ORIGINAL.fullmatch(path))}
     if any(entry.source not in originals for entry in workspace.entries.values() if entry.source is not None):
         raise ValueError("an original file is missing from it.")

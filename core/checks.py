@@ -5,7 +5,15 @@ from __future__ import annotations
 import numpy as np
 
 from .constants import ONE_SUN
-from .curve_shape import Shape, bends_up, dark_offset, held_current, held_voltage, jumps, shape_of
+from .curve_shape import (
+    Shape,
+    bends_up,
+    dark_offset,
+    held_current,
+    held_voltage,
+    jumps,
+    shape_of,
+)
 from .finding import Finding
 from .hysteresis import check_pair
 from .sweep import Sweep
@@ -129,7 +137,7 @@ def _limits(shape: Shape) -> list[Finding]:
 
 def _of_lit(shape: Shape) -> list[Finding]:
     findings = []
-    sweep, voltage = shape.sweep, shape.voltage
+    voltage = shape.voltage
     if shape.jsc is None:
         findings.append(
             Finding(

@@ -64,7 +64,7 @@ def compare(
             f"{1e4 * sweep_b.irradiance:.5g} W m⁻²; shares of the mechanisms need equal irradiance. "
             "Choose sweeps of one irradiance, or correct the conditions."
         )
-    (state_a, note_a), (state_b, note_b) = _alongside(sweep_a, state_a), _alongside(sweep_b, state_b)
+    (state_a, note_a), (state_b, note_b) = alongside(sweep_a, state_a), alongside(sweep_b, state_b)
     model_a, model_b = _under(sweep_a, state_a), _under(sweep_b, state_b)
     metrics_a, metrics_b = metrics_a or measure(sweep_a), metrics_b or measure(sweep_b)
     power_a, power_b = metrics_a.pmp.value, metrics_b.pmp.value
@@ -107,7 +107,7 @@ def losses(
         If there is no limit for this gap.
     """
     _refuse_unfit(sweep)
-    state, notes = _alongside(sweep, state)
+    state, notes = alongside(sweep, state)
     model = _under(sweep, state)
     refuse_string(model)
     start = limiting_diode(band_gap, sweep.temperature, sweep.irradiance, emission)
@@ -119,7 +119,7 @@ def losses(
     return replace(shares, intervals=sampled.intervals, confidence=sampled.confidence, reason=sampled.reason)
 
 
-def _alongside(sweep: Sweep, state: State | TwoDiode) -> tuple[State, tuple[str, ...]]:
+def alongside(sweep: Sweep, state: State | TwoDiode) -> tuple[State, tuple[str, ...]]:
     """The state itself, or for two diodes a one-diode refinement of the same points with the sentence that says so."""
     model = state.model if isinstance(state, Refinement) else state
     if not isinstance(model, TwoDiode):

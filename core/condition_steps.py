@@ -17,7 +17,15 @@ from typing import Any
 from .applying import Step, make_step
 from .errors import ConditionRefused
 from .sweep import Conditions, Sweep
-from .workspace import DEVICE_CONDITIONS, ENTRY_CONDITIONS, Device, Entry, Fit, Workspace, conditions_of
+from .workspace import (
+    DEVICE_CONDITIONS,
+    ENTRY_CONDITIONS,
+    Device,
+    Entry,
+    Fit,
+    Workspace,
+    conditions_of,
+)
 
 _WORDS = {
     "area": "area",
@@ -119,17 +127,13 @@ def fit_under(fit: Fit, reading: Sweep, before: Conditions, after: Conditions) -
         model = model.scaled(factor)
     if model is not None:
         model = model.at(temperature=after.temperature, series_cells=after.series_cells)
-    scales = {
-        "photocurrent": factor,
-        "saturation_current": factor,
-        "ideality": ideality,
-        "series_resistance": 1 / factor,
-        "shunt_resistance": 1 / factor,
-    }
-    bounds = {
-        name: (low * scales[name], high * scales[name]) for name, (low, high) in fit.settings.bounds.items()
-    }
-    return Fit(model, replace(fit.settings, bounds=bounds), None)
+    bounds = {}
+    for name, (low, high) in fit.settings.bounds.items():
+        scale = ideality if name.startswith("ideality") else 1 / factor if name.endswith("resistance") else factor
+        bounds[name] = low * scale, high * scale
+    noise = fit.settings.current_noise
+    noise = None if noise is None else noise * factor
+    return Fit(model, replace(fit.settings, bounds=bounds, current_noise=noise), None)
 
 
 def _current_factor(reading: Sweep, conditions: Conditions) -> float:

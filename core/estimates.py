@@ -106,6 +106,20 @@ def estimates(
     return tuple(found)
 
 
+def shunt_confirmed(lit: Sweep, dark: Sweep | None) -> bool:
+    """Whether the dark sweep has the same slope at V = 0, so that the plateau's slope is a shunt and not collection."""
+    if dark is None or dark.lit or dark.per_area != lit.per_area:
+        return False
+    light, unlit = measure(lit).slope_resistance_jsc, measure(dark).slope_resistance_jsc
+    return light.value is not None and unlit.value is not None and _same_slope(light, unlit)
+
+
+def _same_slope(light: Quantity, unlit: Quantity) -> bool:
+    in_light, in_dark = 1.0 / light.value, 1.0 / unlit.value  # conductances, and the spread of their difference
+    spread = math.hypot((light.uncertainty or 0.0) * in_light**2, (unlit.uncertainty or 0.0) * in_dark**2)
+    return abs(in_light - in_dark) <= max(_SAME_SLOPE * in_light, _WIDTHS * spread)
+
+
 def plateau_reading(lit: Sweep, dark: Sweep | None = None) -> str:
     """What the slope of the plateau under light means, as one sentence.
 
@@ -125,13 +139,9 @@ def plateau_reading(lit: Sweep, dark: Sweep | None = None) -> str:
     if unlit.value is None:
         return f"{told} {either}; the dark sweep is flat within its noise there, which speaks for collection."
     in_light, in_dark = 1.0 / light.value, 1.0 / unlit.value
-    spread = math.hypot(
-        (light.uncertainty or 0.0) * in_light**2, (unlit.uncertainty or 0.0) * in_dark**2
-    )  # of the conductances
-    difference = in_light - in_dark
-    if abs(difference) <= max(_SAME_SLOPE * in_light, _WIDTHS * spread):
+    if _same_slope(light, unlit):
         return f"{told} is a shunt: the dark sweep has the same slope there, {_figure(unlit.value)} {unit}."
-    if difference > 0:
+    if in_light > in_dark:
         return (
             f"{told} {either}: the dark sweep, {_figure(unlit.value)} {unit} there, "
             f"accounts for {100 * in_dark / in_light:.0f} % of it as a shunt."

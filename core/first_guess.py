@@ -79,7 +79,7 @@ def starts(sweep: Sweep, hold: Mapping[str, float] = {}, count: int = 1) -> list
     usable = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
     if not np.all(usable):
         sweep = replace(sweep, voltage=sweep.voltage[usable], current=sweep.current[usable])
-    _refuse_if_hopeless(sweep.voltage, sweep.current)
+    refuse_if_hopeless(sweep.voltage, sweep.current)
     if not sweep.lit:
         hold = {"photocurrent": 0.0, **hold}
     with np.errstate(all="ignore"):  # a node far from wild points may leave the range of floats; it is ranked last
@@ -88,7 +88,7 @@ def starts(sweep: Sweep, hold: Mapping[str, float] = {}, count: int = 1) -> list
 
 def _ranked(sweep: Sweep, hold: Mapping[str, float], count: int) -> list[OneDiode]:
     size = scales(sweep)
-    voltage, current, weight = _condensed(sweep)
+    voltage, current, weight = condensed(sweep)
     slopes, resistances = _grid(sweep, hold, size, voltage, current)
     cost, solution = _solve_grid(voltage, current, weight, slopes, resistances, hold)
     cell_voltage = sweep.series_cells * thermal_voltage(sweep.temperature)
@@ -117,7 +117,7 @@ def _ranked(sweep: Sweep, hold: Mapping[str, float], count: int) -> list[OneDiod
     return [model for _, model in chosen[:count]]
 
 
-def _refuse_if_hopeless(voltage: np.ndarray, current: np.ndarray) -> None:
+def refuse_if_hopeless(voltage: np.ndarray, current: np.ndarray) -> None:
     if voltage.size < 3:
         raise FitFailed("This sweep has fewer than three points, so no diode curve can be laid over them.")
     if np.ptp(voltage) < _NO_SPAN:
@@ -126,7 +126,7 @@ def _refuse_if_hopeless(voltage: np.ndarray, current: np.ndarray) -> None:
         raise FitFailed("No current flows in this sweep, so no diode curve can be laid over it; check the contacts.")
 
 
-def _condensed(sweep: Sweep) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+def condensed(sweep: Sweep) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Voltage, current and weight of the points by rising voltage, neighbours averaged if there are many."""
     voltage, current, weight = sweep.voltage, sweep.current, point_weights(sweep)
     order = np.argsort(voltage, kind="stable")
@@ -156,13 +156,16 @@ def _grid(
         slopes = np.geomspace(low, high, _SLOPES)
     if "series_resistance" in hold:
         return slopes, np.array([hold["series_resistance"]])
-    # The curve is nowhere flatter than Rs alone would make it: its steepest end bounds Rs.
+    return slopes, steepest_resistance(size, voltage, current) * np.array(_RESISTANCES)
+
+
+def steepest_resistance(size: Scales, voltage: np.ndarray, current: np.ndarray) -> float:
+    """The largest Rs to try: the curve is nowhere steeper than Rs alone would make it, so its steepest end bounds Rs."""
     tail = max(3, voltage.size // 12)
     spread = voltage[-tail:] - np.mean(voltage[-tail:])
     steepness = -float(spread @ current[-tail:]) / max(float(spread @ spread), 1e-300)
     natural = size.voltage / size.current
-    steepest = min(1.1 / steepness, natural) if steepness * natural > 1 else natural
-    return slopes, steepest * np.array(_RESISTANCES)
+    return min(1.1 / steepness, natural) if steepness * natural > 1 else natural
 
 
 def _solve_grid(
@@ -196,9 +199,7 @@ def _solve_grid(
         if value is not None:
             solution[:, index] = value
             rows[:, 3] -= rows[:, index] * solution[:, index : index + 1]
-    # What the linear equation misses is 1 + Rs·(dJ/du) times what the curve misses at that voltage, and the slope
-    # of the measured curve tells that factor: 1/(1 + Rs·(dJ/du)) = 1 + Rs·(dJ/dV).
-    damping = np.clip(1.0 + resistances[:, None] * _steepness(voltage, current), _LEAST_DAMPING, 1.0)
+    damping = damping_of(resistances[:, None], voltage, current)
     rows *= (weight * np.tile(damping, (slopes.size, 1)))[:, None, :]
     free = [index for index, value in given.items() if value is None]
     cost = _non_negative(rows, free, solution)
@@ -246,6 +247,15 @@ def _non_negative(rows: np.ndarray, free: list[int], solution: np.ndarray) -> np
         if open_nodes.size == 0:
             break
     return best * norm[:, 3] ** 2
+
+
+def damping_of(resistance: np.ndarray | float, voltage: np.ndarray, current: np.ndarray) -> np.ndarray:
+    """What the curve misses at each voltage over what the linear equation misses there [-].
+
+    The equation misses 1 + Rs·(dJ/du) times what the curve misses at that voltage, and the slope of the measured curve
+    tells that factor: 1/(1 + Rs·(dJ/du)) = 1 + Rs·(dJ/dV).
+    """
+    return np.clip(1.0 + resistance * _steepness(voltage, current), _LEAST_DAMPING, 1.0)
 
 
 def _steepness(voltage: np.ndarray, current: np.ndarray) -> np.ndarray:

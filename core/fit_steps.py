@@ -6,15 +6,15 @@ from collections.abc import Mapping
 from dataclasses import replace
 
 from .applying import Step, make_step
-from .diode import PARAMETERS, OneDiode
+from .diode import OneDiode
 from .errors import StepRefused
-from .models import one_diode_like, two_diodes_like
+from .models import Model, one_diode_like, two_diodes_like
 from .refine import FitSettings, Refinement
 from .two_diode import TwoDiode
 from .workspace import Workspace
 
 
-def set_model(workspace: Workspace, entry_id: str, model: OneDiode | None, *, label: str = "change model") -> Step:
+def set_model(workspace: Workspace, entry_id: str, model: Model | None, *, label: str = "change model") -> Step:
     """Lay a model over a sweep, or take it away with None.
 
     Raises
@@ -29,9 +29,9 @@ def set_model(workspace: Workspace, entry_id: str, model: OneDiode | None, *, la
 
 def set_hold(workspace: Workspace, entry_id: str, parameter: str, on: bool) -> Step:
     """Hold a parameter, or let it go."""
-    if parameter not in PARAMETERS:
-        raise StepRefused(f"There is no parameter called “{parameter}” to hold.")
     fit = workspace.fit(entry_id)
+    if parameter not in fit.settings.parameters:
+        raise StepRefused(f"There is no parameter called “{parameter}” to hold.")
     hold = fit.settings.hold | {parameter} if on else fit.settings.hold - {parameter}
     label = f"{'hold' if on else 'release'} {parameter.replace('_', ' ')}"
     return make_step(label, fits={entry_id: replace(fit, settings=replace(fit.settings, hold=frozenset(hold)))})
@@ -52,10 +52,7 @@ def switch_model(workspace: Workspace, entry_id: str, name: str) -> Step:
         model = two_diodes_like(model)
     elif name == "one diode" and isinstance(model, TwoDiode):
         model = one_diode_like(model)
-    shared = fit.settings.hold & {"photocurrent", "series_resistance", "shunt_resistance"}
-    hold = shared | {"ideality_1", "ideality_2"} if name == "two diodes" else shared
-    settings = replace(fit.settings, model=name, hold=frozenset(hold), bounds={})
-    return make_step(f"switch to {name}", fits={entry_id: replace(fit, model=model, settings=settings)})
+    return make_step(f"switch to {name}", fits={entry_id: replace(fit, model=model, settings=fit.settings.of_model(name))})
 
 
 def record_refinement(workspace: Workspace, entry_id: str, refinement: Refinement) -> Step:
@@ -81,7 +78,7 @@ def record_refinements(workspace: Workspace, refinements: Mapping[str, Refinemen
     return make_step("refine" if len(fits) == 1 else f"refine {len(fits)} sweeps", fits=fits)
 
 
-def _same_conditions(workspace: Workspace, entry_id: str, model: OneDiode) -> None:
+def _same_conditions(workspace: Workspace, entry_id: str, model: Model) -> None:
     conditions = workspace.conditions(entry_id)
     if (model.series_cells, model.temperature) != (conditions.series_cells, conditions.temperature):
         raise StepRefused(

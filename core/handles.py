@@ -25,7 +25,13 @@ from dataclasses import dataclass
 from types import ModuleType
 from typing import Literal
 
-from . import dark_handles, lit_handles, moves, two_diode_dark_handles, two_diode_handles
+from . import (
+    dark_handles,
+    lit_handles,
+    moves,
+    two_diode_dark_handles,
+    two_diode_handles,
+)
 from .models import Model
 from .moves import Move, why_locked
 from .two_diode import TwoDiode

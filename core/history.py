@@ -46,14 +46,14 @@ def labels(database: sqlite3.Connection, workspace_id: str) -> History:
     return History(undo=found.get(0), redo=found.get(1))
 
 
-def last_event(database: sqlite3.Connection, workspace_id: str) -> str | None:
-    """Name of the page's event that the last step came from, if it carried one."""
-    found = database.execute(
-        "SELECT json_extract(step, '$.event') FROM history JOIN workspaces ON workspace = workspaces.id "
-        "WHERE workspace = ? AND position = cursor",
-        (workspace_id,),
-    ).fetchone()
-    return None if found is None else found[0]
+def made(database: sqlite3.Connection, workspace_id: str, event: str) -> bool:
+    """Whether a step that the history still holds came from this event, taken back or not."""
+    return bool(
+        database.execute(
+            "SELECT EXISTS (SELECT 1 FROM history WHERE workspace = ? AND json_extract(step, '$.event') = ?)",
+            (workspace_id, event),
+        ).fetchone()[0]
+    )
 
 
 def push(

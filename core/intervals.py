@@ -6,15 +6,18 @@ All of it is linear around the minimum, and of fit noise only.
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from scipy.special import log_ndtr, ndtri_exp, stdtrit
 
-from .diode import PARAMETERS, OneDiode
 from .least_squares import Minimum
-from .unknowns import Unknowns
+from .models import Model
+from .two_diode_unknowns import TwoDiodeUnknowns
+from .unknowns import Kind, Unknowns
+
+AnyUnknowns = Unknowns | TwoDiodeUnknowns
 
 # A combination of scaled unknowns whose curvature is this much below the largest is not determined at all.
 _FLAT = 1e-13
@@ -27,7 +30,7 @@ class Knowledge:
     Attributes
     ----------
     covariance : ndarray, shape (k, k)
-        Of the free unknowns, scaled as Jph, ln J0, n, Rs, 1/Rsh; infinite variance where not determined.
+        Of the free unknowns, each on the scale of its kind; infinite variance where not determined.
     standard_errors : dict of str to (float or None)
         Of natural parameters; None where held, at a bound or not determined.
     intervals : dict of str to (low, high)
@@ -43,38 +46,107 @@ class Knowledge:
     undetermined: frozenset[str]
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Curvature:
+    """The sum of squares around a minimum, to second order.
+
+    Attributes
+    ----------
+    place : ndarray, shape (k,)
+    inverse : ndarray, shape (k, k)
+        Pseudo-inverse of JᵀJ.
+    blind : ndarray, shape (k, b)
+        Directions that the points do not see.
+    drift : ndarray, shape (k,)
+        How far the minimum would move if no bound stood in its way, to first order.
+    variance : float
+        Of one weighted residual.
+    freedom : int
+        Points less free unknowns.
+    """
+
+    place: np.ndarray
+    inverse: np.ndarray
+    blind: np.ndarray
+    drift: np.ndarray
+    variance: float
+    freedom: int
+
+    @classmethod
+    def of(cls, minimum: Minimum) -> Curvature:
+        size = minimum.place.size
+        freedom = minimum.residual.size - size
+        if freedom < 1 or not size:
+            empty = np.zeros((size, size))
+            return cls(minimum.place, empty, empty, np.zeros(size), math.inf, freedom)
+        with np.errstate(all="ignore"):  # what leaves the range of floats is not determined
+            inverse, blind = _inverse(minimum.jacobian)
+            drift = inverse @ (-minimum.jacobian.T @ minimum.residual)
+        return cls(minimum.place, inverse, blind, drift, minimum.cost / freedom, freedom)
+
+    def of_these(self, columns: np.ndarray) -> Curvature:
+        """The same for some of the unknowns, with all others left free."""
+        return Curvature(
+            self.place[columns],
+            self.inverse[np.ix_(columns, columns)],
+            self.blind[columns],
+            self.drift[columns],
+            self.variance,
+            self.freedom,
+        )
+
+
 def knowledge(
-    minimum: Minimum, unknowns: Unknowns, limits: Mapping[str, tuple[float, float]], confidence: float
+    minimum: Minimum | Curvature,
+    unknowns: AnyUnknowns,
+    limits: Mapping[str, tuple[float, float]],
+    confidence: float,
 ) -> Knowledge:
     """Read covariance, errors and intervals off a minimum.
 
     Standard errors follow from the curvature in all free unknowns, those at a bound included, so that a bound does
     not make the others look better known than they are.
     """
-    with np.errstate(all="ignore"):  # what leaves the range of floats is not determined
-        return _knowledge(minimum, unknowns, limits, confidence)
+    with np.errstate(all="ignore"):
+        curvature = minimum if isinstance(minimum, Curvature) else Curvature.of(minimum)
+        return _knowledge(curvature, unknowns, limits, confidence)
+
+
+def opened(
+    known: Knowledge, names: Iterable[str], unknowns: AnyUnknowns, limits: Mapping[str, tuple[float, float]]
+) -> Knowledge:
+    """The same knowledge with nothing claimed of some free parameters: no errors, and intervals from bound to bound."""
+    names = [name for name in unknowns.free if name in set(names)]
+    covariance = known.covariance.copy()
+    for index in (unknowns.free.index(name) for name in names):
+        covariance[index, :] = covariance[:, index] = 0.0
+        covariance[index, index] = math.inf
+    return Knowledge(
+        covariance,
+        known.standard_errors | dict.fromkeys(names),
+        known.intervals | {name: limits[name] for name in names},
+        known.at_bound - set(names),
+        known.undetermined | set(names),
+    )
 
 
 def _knowledge(
-    minimum: Minimum, unknowns: Unknowns, limits: Mapping[str, tuple[float, float]], confidence: float
+    curvature: Curvature, unknowns: AnyUnknowns, limits: Mapping[str, tuple[float, float]], confidence: float
 ) -> Knowledge:
-    model = unknowns.model(minimum.place)
+    place, free = curvature.place, unknowns.free
+    model = unknowns.final(place)
     lower, upper = unknowns.box(limits)
-    count, free = minimum.residual.size, unknowns.free
-    freedom = count - len(free)
-    near = 1e-7 * np.maximum(np.abs(minimum.place), 1e-3)
-    bound = (minimum.place <= lower + near) | (minimum.place >= upper - near)
+    near = unknowns.near_bound(place)
+    bound = (place <= lower + near) | (place >= upper - near)
     at_bound = frozenset(name for name, flag in zip(free, bound, strict=True) if flag)
-    nothing: dict[str, float | None] = dict.fromkeys(PARAMETERS)
-    if freedom < 1 or not free:
+    nothing: dict[str, float | None] = dict.fromkeys(unknowns.parameters)
+    if curvature.freedom < 1 or not free:
         infinite = np.full((len(free), len(free)), math.inf)
-        open_ends = {name: _ends(name, -math.inf, math.inf) for name in free}
+        open_ends = {name: natural_ends(unknowns.kind(name), -math.inf, math.inf) for name in free}
         return Knowledge(infinite, nothing, open_ends, at_bound, frozenset(free) - at_bound)
 
-    rows = [PARAMETERS.index(name) for name in free]
-    inverse, blind = _inverse(minimum.jacobian)
-    chain = unknowns.chain(minimum.place)[rows]
-    covariance = chain @ inverse @ chain.T * (minimum.cost / freedom)
+    chain, blind = unknowns.scaled_chain(place), curvature.blind
+    covariance = chain @ curvature.inverse @ chain.T * curvature.variance
     # A parameter is open if it moves along a combination that the data do not see.
     blind_moves = np.linalg.norm(chain @ blind, axis=1) if blind.shape[1] else np.zeros(len(free))
     lengths = np.linalg.norm(chain, axis=1)
@@ -83,23 +155,22 @@ def _knowledge(
     covariance[open_ones, :] = covariance[:, open_ones] = 0.0
     covariance[open_ones, open_ones] = math.inf
 
-    # How far the minimum would lie beyond the bounds, to first order.
-    drift = chain @ (inverse @ (-minimum.jacobian.T @ minimum.residual)) if np.any(bound) else np.zeros(len(free))
-    quantile = float(stdtrit(freedom, 0.5 + confidence / 2))
-    natural = _scaled(model)[rows]
+    drift = chain @ curvature.drift if np.any(bound) else np.zeros(len(free))
+    quantile = float(stdtrit(curvature.freedom, 0.5 + confidence / 2))
     errors, intervals = nothing, {}
     for index, name in enumerate(free):
+        kind = unknowns.kind(name)
         spread = math.sqrt(max(float(covariance[index, index]), 0.0))
-        value, reach = float(natural[index]), quantile * spread
+        value, reach = scaled(kind, getattr(model, name)), quantile * spread
         if bound[index]:
             low, high = _one_sided(value, float(drift[index]), spread, confidence)
         else:
             low, high = value - reach, value + reach
-        low, high = _ends(name, low, high)
+        low, high = natural_ends(kind, low, high)
         low = float(max(low, limits[name][0]))
         intervals[name] = low, max(float(min(high, limits[name][1])), low)
         if not bound[index] and math.isfinite(spread):
-            errors[name] = _natural_error(name, model, spread)
+            errors[name] = _natural_error(kind, name, model, spread)
     return Knowledge(covariance, errors, intervals, at_bound, frozenset(np.array(free)[open_ones].tolist()))
 
 
@@ -126,32 +197,29 @@ def _inverse(jacobian: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     return sighted.T @ sighted, (blind / np.linalg.norm(blind, axis=1, keepdims=True)).T
 
 
-def _scaled(model: OneDiode) -> np.ndarray:
-    return np.array(
-        [
-            model.photocurrent,
-            math.log(max(model.saturation_current, 1e-300)),
-            model.ideality,
-            model.series_resistance,
-            1.0 / model.shunt_resistance,
-        ]
-    )
+def scaled(kind: Kind, value: float) -> float:
+    """A natural value on the scale of its kind."""
+    if kind == "log":
+        return math.log(max(value, 1e-300))
+    if kind == "inverse":
+        return 1.0 / value if value > 0 else math.inf
+    return value
 
 
-def _natural_error(name: str, model: OneDiode, spread: float) -> float | None:
-    if name == "saturation_current":
-        return model.saturation_current * spread
-    if name == "shunt_resistance":
-        error = spread * model.shunt_resistance**2
-        return error if math.isfinite(error) else None
-    return spread
-
-
-def _ends(name: str, low: float, high: float) -> tuple[float, float]:
-    """Natural ends of an interval of a scaled unknown; none of the parameters can be negative."""
-    if name == "saturation_current":
+def natural_ends(kind: Kind, low: float, high: float) -> tuple[float, float]:
+    """Natural ends of an interval on the scale of a kind; none of the parameters can be negative."""
+    if kind == "log":
         return (0.0 if low < -690 else math.exp(low), math.inf if high > 690 else math.exp(high))
     low = max(low, 0.0)
-    if name == "shunt_resistance":
+    if kind == "inverse":
         return (1.0 / high if high > 0 else math.inf, 1.0 / low if low > 0 else math.inf)
     return low, max(high, 0.0)
+
+
+def _natural_error(kind: Kind, name: str, model: Model, spread: float) -> float | None:
+    if kind == "log":
+        return getattr(model, name) * spread
+    if kind == "inverse":
+        error = spread * getattr(model, name) ** 2
+        return error if math.isfinite(error) else None
+    return spread

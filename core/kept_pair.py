@@ -5,7 +5,14 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass, replace
 
-from .moves import LARGEST_EXPONENT, SERIES_ALONE, SHUNT_ALONE, SMALLEST_DIODE_SHARE, SMALLEST_ROOM, STRAIGHT
+from .moves import (
+    LARGEST_EXPONENT,
+    SERIES_ALONE,
+    SHUNT_ALONE,
+    SMALLEST_DIODE_SHARE,
+    SMALLEST_ROOM,
+    STRAIGHT,
+)
 from .two_diode import TwoDiode
 
 SECOND_ALONE = "J0₂ alone would set Voc"

@@ -6,10 +6,23 @@ uncertainty. What the sweep does not reach is "not reached": nothing here is ext
 
 from __future__ import annotations
 
+from collections.abc import Callable, Iterable, Iterator
+from itertools import tee
+from operator import itemgetter
+
 import numpy as np
 
-from .local_fits import Estimate, LocalCurve, fit_drop, fit_polynomial, grow, until_it_bends, windows
-from .noise import Points, merged_points, noise_level
+from .local_fits import (
+    Estimate,
+    LocalCurve,
+    Reading,
+    fit_drop,
+    fit_line,
+    grow,
+    until_it_bends,
+    windows,
+)
+from .noise import Points, merged_points, noise_level, noise_of_points
 from .quantity import Metrics, Quantity
 from .sweep import Sweep
 
@@ -23,6 +36,8 @@ _READBACK = 0.1
 _POINTS_FOR_POWER = 5
 # The place of the largest power must be known to this share of its window.
 _FIRM = 0.02
+# Where the largest power is looked for first, in shares of a window.
+_GRID = np.linspace(0.0, 1.0, 33)
 
 
 def measure(sweep: Sweep) -> Metrics:
@@ -40,7 +55,8 @@ def measure(sweep: Sweep) -> Metrics:
     """
     # Wild points can carry a local fit out of the range of floats; what is not finite is then not read.
     with np.errstate(all="ignore"):
-        return _measure(sweep, merged_points(sweep), noise_level(sweep))
+        points = merged_points(sweep)
+        return _measure(sweep, points, noise_of_points(points))
 
 
 def _measure(sweep: Sweep, points: Points, noise: float) -> Metrics:
@@ -74,17 +90,18 @@ def _short_circuit(points: Points, noise: float) -> tuple[Estimate | None, Estim
     """Jsc and dJ/dV there."""
     if reason := _beside_zero_volt(points):
         return None, None, reason
-    lines = list(until_it_bends((fit_polynomial(points, window, 1) for window in windows(points, 0.0, 1)), noise))
-    level = grow(lines, lambda line: (line.current(0.0)[0], line.sensitivity(0.0), 0.0), points, noise)
+    lines = until_it_bends((fit_line(points, window) for window in windows(points, 0.0, 1)), noise)
+    levels, slopes = _each(2, lines, lambda line: _level_and_slope(line, 0.0))
+    level = grow(levels, points, noise)
     # The plateau is nearly straight and its slope hard to see: let only a clear disagreement end the window.
-    slope = grow(lines, lambda line: (line.current(0.0)[1], line.sensitivity(0.0, 1), 0.0), points, noise, 3.0)
+    slope = grow(slopes, points, noise, 3.0)
     return level, slope, ""
 
 
 def _beside_zero_volt(points: Points) -> str:
     if points.voltage.size < 2:
         return _TOO_FEW
-    tolerance = _READBACK * float(np.median(np.diff(points.voltage)))
+    tolerance = _READBACK * float(np.median(points.voltage[1:] - points.voltage[:-1]))
     if points.voltage[0] <= tolerance and points.voltage[-1] >= -tolerance:
         return ""
     return "not reached: the sweep does not come to V = 0"
@@ -97,52 +114,83 @@ def _open_circuit(points: Points, noise: float) -> tuple[Estimate | None, Estima
     if falls.size == 0:
         return None, None, "not reached: the current does not come to zero within the sweep"
     first = falls[falls.size // 2]  # noise makes neighbouring points cross more than once: take the middle one
-    near, far = voltage[first], voltage[first + 1]
-    crossing = near + (far - near) * current[first] / (current[first] - current[first + 1])
-    ceiling = _ceiling(points, noise)
-
-    def root(curve: LocalCurve) -> float | None:
-        place = crossing
-        low, high = voltage[curve.window][[0, -1]]
-        for _ in range(20):
-            value, slope, _ = curve.current(place)
-            if not slope < 0:
-                return None
-            step = value / slope
-            place = min(max(place - step, low), high)
-            if abs(step) < 1e-13 * max(abs(place), 1e-3):
-                return place
-        return place if abs(value) < noise else None
-
-    def read_voltage(curve: LocalCurve) -> tuple[float, np.ndarray, float] | None:
-        place = root(curve)
-        if place is None:
-            return None
-        return place, -curve.sensitivity(place) / curve.current(place)[1], place
-
-    def read_slope(curve: LocalCurve) -> tuple[float, np.ndarray, float] | None:
-        place = root(curve)
-        if place is None:
-            return None
-        _, slope, bend = curve.current(place)
-        return slope, curve.sensitivity(place, 1) - bend / slope * curve.sensitivity(place), place
-
-    curves = _drops(points, crossing, 3, ceiling, noise)
-    voc = grow(curves, read_voltage, points, noise)
+    near, far = float(voltage[first]), float(voltage[first + 1])
+    crossing = near + (far - near) * float(current[first] / (current[first] - current[first + 1]))
+    curves = _drops(points, crossing, 3, _ceiling(points, noise), noise)
+    voltages, slopes = _each(2, curves, lambda curve: _at_zero_current(curve, points, crossing, noise))
+    voc = grow(voltages, points, noise)
     if voc is None:  # too rough for a smooth fit: the straight line between the two points that bracket J = 0
-        line = fit_polynomial(points, slice(first, first + 2), 1)
-        voc = grow([line], read_voltage, points, noise)
-    return voc, grow(curves, read_slope, points, noise), "" if voc else "not reached: no clear crossing of J = 0"
+        line = fit_line(points, slice(first, first + 2))
+        voc = grow(_each(2, [line], lambda curve: _at_zero_current(curve, points, crossing, noise))[0], points, noise)
+    return voc, grow(slopes, points, noise), "" if voc else "not reached: no clear crossing of J = 0"
 
 
-def _drops(points: Points, centre: float, order: int, ceiling: float, noise: float) -> list[LocalCurve | None]:
+def _each(
+    count: int, curves: Iterable[LocalCurve | None], read: Callable[[LocalCurve], tuple[Reading, ...] | None]
+) -> list[Iterator[Reading | None]]:
+    """The readings of each curve, as ``count`` streams. A curve is fitted and read once, when the first stream that
+    gets so far asks for it."""
+    nothing = (None,) * count
+    return _streams(count, ((curve and read(curve)) or nothing for curve in curves))
+
+
+def _streams(count: int, rows: Iterable[tuple[Reading | None, ...]]) -> list[Iterator[Reading | None]]:
+    return [map(itemgetter(place), copy) for place, copy in enumerate(tee(rows, count))]
+
+
+def _level_and_slope(curve: LocalCurve, place: float) -> tuple[Reading, Reading]:
+    level, slope, _ = curve.current(place)
+    of_level, of_slope = curve.sensitivity(place)
+    return Reading(curve, level, of_level, place), Reading(curve, slope, of_slope, place)
+
+
+def _at_zero_current(
+    curve: LocalCurve, points: Points, crossing: float, noise: float
+) -> tuple[Reading, ...] | None:
+    """Where a curve falls through J = 0, and its slope there; None where it does not."""
+    place, (low, high) = crossing, _ends(points, curve)
+    for _ in range(20):
+        value, slope, bend = curve.current(place)
+        if not slope < 0:
+            return None
+        step = value / slope
+        place = min(max(place - step, low), high)
+        if abs(step) < 1e-13 * max(abs(place), 1e-3):
+            break
+    else:
+        if not abs(value) < noise:
+            return None
+    _, slope, bend = curve.current(place)
+    of_level, of_slope = curve.sensitivity(place)
+    return (
+        Reading(curve, place, -of_level / slope, place),
+        Reading(curve, slope, of_slope - bend / slope * of_level, place),
+    )
+
+
+def _drops(points: Points, centre: float, order: int, ceiling: float, noise: float) -> Iterator[LocalCurve | None]:
     """Fits over growing windows, from the first window on whose currents differ by clearly more than noise."""
     if points.voltage.size < 4:
-        return [fit_polynomial(points, window, 1) for window in windows(points, centre, 1)][:1]
-    ranges = [
-        window for window in windows(points, centre, max(order - 1, 2)) if np.ptp(points.current[window]) > 10 * noise
-    ] or [slice(0, points.voltage.size)]
-    return list(until_it_bends((fit_drop(points, window, order, ceiling) for window in ranges), noise))
+        return iter([fit_line(points, next(windows(points, centre, 1)))])
+    ranges = _clear(points, windows(points, centre, max(order - 1, 2)), noise)
+    return until_it_bends((fit_drop(points, window, order, ceiling) for window in ranges), noise)
+
+
+def _clear(points: Points, nested: Iterator[slice], noise: float) -> Iterator[slice]:
+    """The windows whose currents differ by clearly more than noise, each wider than the one before; else all points."""
+    clear = False
+    for window in nested:
+        current = points.current[window]
+        clear = clear or current.max() - current.min() > 10 * noise
+        if clear:
+            yield window
+    if not clear:
+        yield slice(0, points.voltage.size)
+
+
+def _ends(points: Points, curve: LocalCurve) -> tuple[float, float]:
+    """Lowest and highest voltage of a curve's window."""
+    return float(points.voltage[curve.window.start]), float(points.voltage[curve.window.stop - 1])
 
 
 def _ceiling(points: Points, noise: float) -> float:
@@ -170,64 +218,64 @@ def _largest_power(
     if best - span // 2 <= 0 or best + span // 2 >= voltage.size - 1:
         return *nothing, "not reached: the power still rises at the end of the sweep"
     curves = _drops(points, _between(voltage, power, best), 4, _ceiling(points, noise), noise)
-    peaks = [None if curve is None else _peak(curve, voltage[curve.window]) for curve in curves]
-    found = [(curve, place) for curve, place in zip(curves, peaks, strict=True) if place is not None]
-    # In a window where noise could carry the peak across, its place would look better known than it is.
-    firm = [(c, place) for c, place in found if noise * np.linalg.norm(_shift(c, place)) < _FIRM * 2 * c.width]
-    found = firm or found[-1:]
-    place_of = {id(curve): place for curve, place in found}
-    curves = [curve for curve, _ in found]
-
-    def read(what: str):
-        def reader(curve: LocalCurve) -> tuple[float, np.ndarray, float] | None:
-            place = place_of[id(curve)]
-            value, slope, _ = curve.current(place)
-            steady, shift = curve.sensitivity(place), _shift(curve, place)
-            return {
-                "power": (place * value, place * steady, place),
-                "voltage": (place, shift, place),
-                "current": (value, steady + slope * shift, place),
-            }[what]
-
-        return reader
-
-    pmp = grow(curves, read("power"), points, noise)
+    of_power, of_voltage, of_current = _streams(3, _peaks(points, curves, noise))
+    pmp = grow(of_power, points, noise)
     if pmp is None:
         return *nothing, "not reached: the points show no clear largest power"
-    vmp = grow(curves, read("voltage"), points, noise)
-    jmp = grow(curves, read("current"), points, noise)
-    return pmp, vmp, jmp, ""
+    return pmp, grow(of_voltage, points, noise), grow(of_current, points, noise), ""
 
 
-def _shift(curve: LocalCurve, place: float) -> np.ndarray:
-    """Change of Vmp per change of each current: P' = J + V·J' is zero there, and a disturbance moves it by −δP'/P''."""
-    _, slope, bend = curve.current(place)
-    return -(curve.sensitivity(place) + place * curve.sensitivity(place, 1)) / (2 * slope + place * bend)
+def _peaks(
+    points: Points, curves: Iterable[LocalCurve | None], noise: float
+) -> Iterator[tuple[Reading, Reading, Reading]]:
+    """Largest power, its voltage and its current of each curve that has a firm peak; else of the widest with any peak.
+
+    In a window where noise could carry the peak across, its place would look better known than it is.
+    """
+    widest, any_firm = None, False
+    for curve in curves:
+        place = None if curve is None else _peak(curve, *_ends(points, curve))
+        if place is None:
+            continue
+        value, slope, bend = curve.current(place)
+        of_level, of_slope = curve.sensitivity(place)
+        # P' = J + V·J' is zero there, and a disturbance moves the place by −δP'/P''.
+        shift = -(of_level + place * of_slope) / (2 * slope + place * bend)
+        widest = (
+            Reading(curve, place * value, place * of_level, place),
+            Reading(curve, place, shift, place),
+            Reading(curve, value, of_level + slope * shift, place),
+        )
+        if noise * curve.spread(shift) < _FIRM * 2 * curve.width:
+            any_firm = True
+            yield widest
+    if widest is not None and not any_firm:
+        yield widest
 
 
 def _between(voltage: np.ndarray, power: np.ndarray, best: int) -> float:
     """The voltage from which windows grow: beside the best point, on the side of its better neighbour."""
     neighbour = best + 1 if power[best + 1] > power[best - 1] else best - 1
-    return 0.5 * (voltage[best] + voltage[neighbour])
+    return 0.5 * float(voltage[best] + voltage[neighbour])
 
 
-def _peak(curve: LocalCurve, voltage: np.ndarray) -> float | None:
-    """Voltage of the largest power inside the window, None if it lies at an end or is no maximum."""
-    places = np.linspace(voltage[0], voltage[-1], 33)
+def _peak(curve: LocalCurve, low: float, high: float) -> float | None:
+    """Voltage of the largest power between the ends of the window, None if it lies at one or is no maximum."""
+    places = low + (high - low) * _GRID
     best = int(np.argmax(places * curve.currents(places)))
     if best in (0, places.size - 1):
         return None
-    place = places[best]
+    low, place, high = places[best - 1 : best + 2].tolist()
     for _ in range(20):
         value, slope, bend = curve.current(place)
         curvature = 2 * slope + place * bend
         if not curvature < 0:
             return None
         step = (value + place * slope) / curvature
-        place = min(max(place - step, places[best - 1]), places[best + 1])
+        place = min(max(place - step, low), high)
         if abs(step) < 1e-12 * abs(place):
             break
-    return float(place)
+    return place
 
 
 def _fill_factor(jsc: Estimate | None, voc: Estimate | None, pmp: Estimate | None, reason: str) -> Quantity:

@@ -67,13 +67,19 @@ def noise_level(sweep: Sweep) -> float:
     ----------
     Median absolute deviation as a robust scale: F. R. Hampel, J. Am. Stat. Assoc. 69 (1974) 383 (from memory).
     """
-    points = merged_points(sweep)
-    largest = float(np.max(np.abs(points.current), initial=0.0))
+    return noise_of_points(merged_points(sweep))
+
+
+def noise_of_points(points: Points) -> float:
+    """``noise_level`` of points that are merged already."""
+    largest = float(np.abs(points.current).max(initial=0.0))
     floor = max(1e-15 * largest, 1e-300)
-    misses = np.concatenate([_misses(points), points.scatter])
+    misses = _misses(points)
+    if points.scatter.size:
+        misses = np.concatenate([misses, points.scatter])
     if misses.size == 0:
         return floor
-    level = float(np.median(np.abs(misses))) / _MEDIAN_DEVIATION
+    level = _median(np.abs(misses)) / _MEDIAN_DEVIATION
     if level <= floor:
         # Most neighbours agree exactly: the noise hides in the rounding of the file.
         steps = np.diff(np.unique(points.current))
@@ -89,15 +95,22 @@ def _misses(points: Points) -> np.ndarray:
     inner = voltage.size - 2 * reach
     if inner < 1:
         return np.empty(0)
-    shifts = [slice(shift, shift + inner) for shift in range(2 * reach + 1)]
-    middle = shifts.pop(reach)
-    here = voltage[middle]
+    middle, *nodes = (slice(shift, shift + inner) for shift in (reach, *range(reach), *range(reach + 1, 2 * reach + 1)))
+    places = [voltage[node] for node in nodes]
+    ahead = [voltage[middle] - place for place in places]
     predicted, variance = np.zeros(inner), 1.0 / count[middle]
-    for node in shifts:
-        share = np.ones(inner)  # Lagrange's weight
-        for other in shifts:
-            if other is not node:
-                share *= (here - voltage[other]) / (voltage[node] - voltage[other])
+    for i, node in enumerate(nodes):
+        above, below = 1.0, 1.0
+        for j in range(len(nodes)):
+            if j != i:
+                above, below = above * ahead[j], below * (places[i] - places[j])
+        share = above / below  # Lagrange's weight
         predicted += share * current[node]
-        variance += share**2 / count[node]
+        variance += share * share / count[node]
     return (current[middle] - predicted) / np.sqrt(variance)
+
+
+def _median(values: np.ndarray) -> float:
+    """As numpy's, without what that does for arrays of many axes; this runs once for every sweep of a batch."""
+    ordered, middle = np.sort(values), values.size // 2
+    return float(ordered[middle] if values.size % 2 else 0.5 * (ordered[middle - 1] + ordered[middle]))

@@ -17,6 +17,9 @@ import numpy as np
 from .errors import StepRefused
 from .sweep import Sweep
 
+# No bench measures so much; numbers far beyond overflow in the formulas. What is read from files keeps to it too.
+_LARGEST = 1e30
+
 
 def canonical(value: Any) -> str:
     """JSON text with one spelling for one value: keys sorted, no spaces.
@@ -98,7 +101,8 @@ def reading_from_record(record: Any) -> Sweep:
             sweep.voltage.ndim == 1
             and sweep.voltage.shape == sweep.current.shape
             and sweep.voltage.size > 0
-            and bool(np.isfinite(sweep.voltage).all() and np.isfinite(sweep.current).all())
+            and bool((np.abs(sweep.voltage) <= _LARGEST).all() and (np.abs(sweep.current) <= _LARGEST).all())
+            and _monotonic(sweep)
             and isinstance(sweep.per_area, bool)
             and isinstance(sweep.lit, bool)
             and sweep.direction in ("forward", "reverse")
@@ -106,11 +110,16 @@ def reading_from_record(record: Any) -> Sweep:
             and all(isinstance(text, str) for text in texts)
             and (sweep.scan_rate is None or bool(np.isfinite(sweep.scan_rate)))
         )
-    except (KeyError, TypeError, ValueError, AttributeError, OverflowError) as problem:
+    except (LookupError, TypeError, ValueError, AttributeError, ArithmeticError) as problem:
         raise StepRefused(f"A reading is not written as a sweep ({_short(problem)}).") from problem
     if not sound:
         raise StepRefused("A reading is not written as a sweep: its points or its texts are not of the right kind.")
     return sweep
+
+
+def _monotonic(sweep: Sweep) -> bool:
+    steps = np.diff(sweep.voltage)
+    return bool((steps >= 0).all() or (steps <= 0).all())
 
 
 def _short(problem: Exception) -> str:

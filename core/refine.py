@@ -3,45 +3,47 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import replace
 
 import numpy as np
 
-from .diode import PARAMETERS, OneDiode
+from .diode import PARAMETERS
 from .errors import FitFailed
-from .first_guess import scales, starts
+from .first_guess import starts
 from .fit_findings import findings
+from .fit_problem import Problem, laid_over, points_used
 from .fit_settings import FitSettings
-from .intervals import knowledge
-from .least_squares import Minimum, minimise
-from .noise import noise_level
+from .intervals import Curvature, Knowledge, knowledge, opened
+from .least_squares import Minimum
+from .models import Model, two_diodes_like
 from .refinement import Refinement
-from .residuals import Structure, looks_s_shaped, structure
+from .residuals import Structure, looks_s_shaped
 from .sweep import Sweep
+from .two_diode_guess import USUAL, two_diode_starts
 from .unknowns import Unknowns
-from .weighting import point_weights, resolved
+from .weighting import resolved
 
 __all__ = ["FitSettings", "Refinement", "refine"]
 
 # A fit whose residuals look like noise, and exceed it by no more than its estimate is uncertain, needs no second start.
 _LENIENCY = 2.5
 _STARTS = 4
-_ROUNDING = 1e-9
-# Huber's constant: 95 % efficiency for normal noise; P. J. Huber, Ann. Math. Stat. 35 (1964) 73 (from memory).
-_HUBER = 1.345
-_HUBER_PASSES = 20
+_OF_THE_DIODE = ("saturation_current", "ideality", "series_resistance")
+_DECADES = 1e8  # J0 whose interval spans more is not known at all
+_SAME = 1e-8  # minima whose sums of squares differ by less are one
 
 
-def refine(sweep: Sweep, start: OneDiode | None = None, settings: FitSettings = FitSettings()) -> Refinement:
-    """Refine a one-diode model on a sweep by least squares in the current.
+def refine(sweep: Sweep, start: Model | None = None, settings: FitSettings = FitSettings()) -> Refinement:
+    """Refine a diode model on a sweep by least squares in the current.
 
     Parameters
     ----------
     sweep : Sweep
-    start : OneDiode or None
-        Where the dials stand, and the values of held parameters; None starts from the first guess. The first
-        guess is tried in any case if the fit from here ends above the noise.
+    start : OneDiode, TwoDiode or None
+        Where the dials stand, and the values of held parameters; None starts from the first guess (n₁ = 1 and n₂ = 2
+        of two diodes). The first guess is tried in any case if the fit from here ends above the noise. A start of the
+        other model is turned into nearly the same curve.
     settings : FitSettings
 
     Returns
@@ -60,27 +62,37 @@ def refine(sweep: Sweep, start: OneDiode | None = None, settings: FitSettings = 
     used = points_used(sweep, settings)
     if used.voltage.size < 3:
         raise FitFailed(f"Only {used.voltage.size} points are left for the fit; widen the window or exclude fewer.")
-    cold = [] if start is not None else starts(used, {}, _STARTS)
-    base = cold[0] if start is None else _under_conditions(start, sweep)
-    hold = settings.hold
-    if not sweep.lit:
-        base = base if "photocurrent" in hold and start is not None else replace(base, photocurrent=0.0)
-        hold = hold | {"photocurrent"}
-    unknowns = Unknowns.of(base, hold, scales(used), settings.bounds)
-    if used.voltage.size < len(unknowns.free):
+    cold = [] if start is not None else _cold(used, settings)
+    base = cold[0] if start is None else laid_over(start, sweep, settings.model)
+    if not sweep.lit and (start is None or "photocurrent" not in settings.hold):
+        base = replace(base, photocurrent=0.0)
+    problem = Problem.of(used, settings, base)
+    free = problem.unknowns.free
+    if used.voltage.size < len(free):
         raise FitFailed(
-            f"There are {used.voltage.size} points for {len(unknowns.free)} free parameters; "
+            f"There are {used.voltage.size} points for {len(free)} free parameters; "
             "hold some of them, or measure more points."
         )
-    limits = unknowns.limits(settings.bounds)
-    weight = point_weights(used, settings.weights)
+    minimum, pattern = _best(problem, _candidates(problem, base, cold))
+    problem, polished = problem.polished(minimum)
+    if polished is not minimum:
+        minimum, pattern = polished, problem.pattern(polished)
+    return refinement_of(sweep, problem, minimum, Curvature.of(minimum), pattern)
 
-    minimum, pattern = _best(_candidates(used, unknowns, base, cold), unknowns, used, weight, limits)
-    if settings.loss == "robust":
-        minimum = _robust(minimum, unknowns, used, weight, limits)
-        pattern = _pattern(minimum, used, weight)
-    model = unknowns.model(minimum.place)
-    known = knowledge(minimum, unknowns, limits, settings.confidence)
+
+def refinement_of(
+    sweep: Sweep, problem: Problem, minimum: Minimum, curvature: Curvature, pattern: Structure
+) -> Refinement:
+    """What a minimum says, as the outcome of a fit."""
+    used, settings, unknowns, limits = problem.sweep, problem.settings, problem.unknowns, problem.limits
+    model = unknowns.final(minimum.place)
+    s_shaped = sweep.lit and pattern.systematic and looks_s_shaped(used)
+    reaches_voc = not sweep.lit or bool(np.min(used.current) <= 0)
+    known = knowledge(curvature, unknowns, limits, settings.confidence)
+    if s_shaped:  # a curve that no diode can follow has no parameters to be known
+        known = opened(known, unknowns.free, unknowns, limits)
+    elif not reaches_voc and not (minimum.settled and _knows_the_diode(model, known)):
+        known = opened(known, [name for name in unknowns.free if name.startswith(_OF_THE_DIODE)], unknowns, limits)
     residual = model.current(used.voltage) - used.current
     return Refinement(
         model=model,
@@ -100,99 +112,92 @@ def refine(sweep: Sweep, start: OneDiode | None = None, settings: FitSettings = 
             confidence=settings.confidence,
             resistance_unit="Ω cm²" if sweep.per_area else "Ω",
             settled=minimum.settled,
-            s_shaped=sweep.lit and pattern.systematic and looks_s_shaped(used),
+            s_shaped=s_shaped,
             lit=sweep.lit,
+            reaches_voc=reaches_voc,
         ),
         weights=resolved(settings.weights, sweep),
     )
 
 
-def points_used(sweep: Sweep, settings: FitSettings) -> Sweep:
-    """The sweep with only the points that the settings leave for the fit."""
-    keep = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
-    keep[[index for index in settings.excluded if 0 <= index < keep.size]] = False
-    if settings.window is not None:
-        keep &= (sweep.voltage >= settings.window[0]) & (sweep.voltage <= settings.window[1])
-    if np.all(keep):
-        return sweep
-    return replace(sweep, voltage=sweep.voltage[keep], current=sweep.current[keep])
+def _knows_the_diode(model: Model, known: Knowledge) -> bool:
+    """Whether a fit knows every free J0 to a few decades and every free n to its half."""
+    for name, (low, high) in known.intervals.items():
+        if name in known.undetermined or (name.startswith("ideality") and high - low > getattr(model, name)):
+            return False
+        if name == "saturation_current" and not 0 < high < low * _DECADES:
+            return False
+    return True
 
 
-def residuals_of(
-    unknowns: Unknowns, sweep: Sweep, weight: np.ndarray
-) -> Callable[[np.ndarray], tuple[np.ndarray, np.ndarray]]:
-    """Weighted residuals, model less measured, and their Jacobian in the unknowns."""
-    voltage, current = sweep.voltage, sweep.current
-
-    def evaluate(place: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-        modelled, jacobian = unknowns.model(place).current_and_jacobian(voltage)
-        return weight * (modelled - current), (weight[:, None] * jacobian) @ unknowns.chain(place)
-
-    return evaluate
+def _cold(sweep: Sweep, settings: FitSettings) -> list[Model]:
+    """Starts without any dials, best first."""
+    if settings.model == "one diode":
+        return list(starts(sweep, {}, _STARTS))
+    held = {name: usual for name, usual in zip(("ideality_1", "ideality_2"), USUAL, strict=True) if name in settings.hold}
+    return list(two_diode_starts(sweep, held, settings.bounds))
 
 
-def _under_conditions(model: OneDiode, sweep: Sweep) -> OneDiode:
-    """The start's curve read under the sweep's temperature and cells in series."""
-    if (model.temperature, model.series_cells) == (sweep.temperature, sweep.series_cells):
-        return model
-    return model.at(temperature=sweep.temperature, series_cells=sweep.series_cells)
-
-
-def _candidates(sweep: Sweep, unknowns: Unknowns, base: OneDiode, cold: list[OneDiode]) -> Iterator[OneDiode]:
+def _candidates(problem: Problem, base: Model, cold: list[Model]) -> Iterator[Model]:
     """Starts in the order of promise, made only as they are asked for."""
     yield base
-    held = {name: getattr(base, name) for name in set(PARAMETERS) - set(unknowns.free)}
-    if cold and not held.keys() - {"photocurrent"}:
-        yield from cold[1:]
-    else:
-        yield from starts(sweep, held, _STARTS)
+    sweep, unknowns = problem.sweep, problem.unknowns
+    held = {name: getattr(base, name) for name in unknowns.parameters if name not in unknowns.free}
+    if isinstance(unknowns, Unknowns):
+        if cold and not held.keys() - {"photocurrent"}:
+            yield from cold[1:]
+        else:
+            yield from starts(sweep, held, _STARTS)
+        return
+    yield from cold[1:] if cold else two_diode_starts(sweep, held, problem.limits)
+    # One diode, refined, tells Rs and Rsh better than a grid does.
+    shared = {name: value for name, value in held.items() if name in PARAMETERS}
+    guesses = starts(sweep, shared, 2)
+    settings = replace(problem.settings, model="one diode", hold=frozenset(shared), bounds={})
+    alike = Problem.of(sweep, settings, guesses[0])
+    one = alike.unknowns.model(_best(alike, guesses)[0].place)
+    yield replace(two_diodes_like(one), **held)
 
 
-def _best(
-    candidates: Iterator[OneDiode],
-    unknowns: Unknowns,
-    sweep: Sweep,
-    weight: np.ndarray,
-    limits: dict[str, tuple[float, float]],
-) -> tuple[Minimum, Structure]:
-    """The lowest minimum with the structure of its residuals; no further starts once one leaves nothing but noise."""
-    evaluate = residuals_of(unknowns, sweep, weight)
-    lower, upper = unknowns.box(limits)
+def _best(problem: Problem, candidates: Iterable[Model]) -> tuple[Minimum, Structure]:
+    """The lowest minimum with the structure of its residuals; no further starts once one leaves nothing but noise.
+
+    Two diodes whose n are free have several minima at the noise; there the search ends once three starts agree.
+    """
+    patient = bool({"ideality_1", "ideality_2"} & set(problem.unknowns.free))
     best: tuple[Minimum, Structure] | None = None
+    agreeing = 0
     for candidate in candidates:
-        minimum = minimise(evaluate, unknowns.place(candidate), lower, upper)
-        if not np.isfinite(minimum.cost) or (best is not None and minimum.cost >= best[0].cost):
+        minimum = problem.minimum_from(candidate)
+        if not np.isfinite(minimum.cost):
             continue
-        pattern = _pattern(minimum, sweep, weight)
-        best = minimum, pattern
-        if not pattern.systematic and pattern.excess <= 1.0 + _LENIENCY / math.sqrt(pattern.count):
+        if best is not None and minimum.cost >= best[0].cost * (1.0 - _SAME):
+            agreeing += minimum.cost <= best[0].cost * (1.0 + _SAME)
+            if agreeing >= 2 and patient:
+                break
+            continue
+        pattern = problem.pattern(minimum)
+        best, agreeing = (minimum, pattern), 0
+        if not patient and not pattern.systematic and pattern.excess <= 1.0 + _LENIENCY / math.sqrt(pattern.count):
             break
     if best is None:
-        raise FitFailed("No one-diode curve could be laid over these points; check units and signs of the sweep.")
-    return best
+        words = {"one diode": "one-diode", "two diodes": "two-diode"}[problem.settings.model]
+        raise FitFailed(f"No {words} curve could be laid over these points; check units and signs of the sweep.")
+    return _in_order(problem, best[0]), best[1]
 
 
-def _pattern(minimum: Minimum, sweep: Sweep, weight: np.ndarray) -> Structure:
-    """Structure of the weighted residuals, in units of the noise that they show between neighbours."""
-    order = np.argsort(sweep.voltage, kind="stable")
-    noise = noise_level(replace(sweep, current=minimum.residual))
-    # What is left on exact curves is rounding, whose structure means nothing.
-    rounding = _ROUNDING * float(np.max(np.abs(sweep.current * weight)))
-    return structure(minimum.residual[order], max(noise, rounding))
-
-
-def _robust(
-    minimum: Minimum, unknowns: Unknowns, sweep: Sweep, weight: np.ndarray, limits: dict[str, tuple[float, float]]
-) -> Minimum:
-    """Huber's loss by repeated weighting; weights are frozen within a pass."""
-    lower, upper = unknowns.box(limits)
-    evaluate = residuals_of(unknowns, sweep, weight)
-    share = np.ones(sweep.voltage.size)
-    for _ in range(_HUBER_PASSES):
-        residual = evaluate(minimum.place)[0]
-        scale = max(float(np.median(np.abs(residual))) / 0.6745, 1e-300)
-        previous, share = share, np.sqrt(1.0 / np.maximum(np.abs(residual) / (_HUBER * scale), 1.0))
-        if np.max(np.abs(share - previous)) < 1e-6:
-            break
-        minimum = minimise(residuals_of(unknowns, sweep, weight * share), minimum.place, lower, upper)
-    return minimum
+def _in_order(problem: Problem, minimum: Minimum) -> Minimum:
+    """Of two diodes that are free alike, the one of lower n stands first."""
+    free, settings = problem.unknowns.free, problem.settings
+    if not {"saturation_current_1", "saturation_current_2", "ideality_1", "ideality_2"} <= set(free):
+        return minimum
+    if any(settings.bounds.get(f"{name}_1") != settings.bounds.get(f"{name}_2") for name in ("saturation_current", "ideality")):
+        return minimum
+    first, second = free.index("ideality_1"), free.index("ideality_2")
+    if minimum.place[first] >= minimum.place[second]:  # the unknowns of n run the other way
+        return minimum
+    swap = np.arange(len(free))
+    for name in ("saturation_current", "ideality"):
+        pair = [free.index(f"{name}_1"), free.index(f"{name}_2")]
+        swap[pair] = swap[pair[::-1]]
+    return replace(minimum, place=minimum.place[swap], jacobian=minimum.jacobian[:, swap])

@@ -9,8 +9,8 @@ from typing import Any
 
 import numpy as np
 
-from .diode import OneDiode
 from .fit_settings import FitSettings
+from .models import Model, model_from_dict
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -19,17 +19,18 @@ class Refinement:
 
     Attributes
     ----------
-    model : OneDiode
+    model : OneDiode or TwoDiode
     settings : FitSettings
         As asked for; ``weights`` says what automatic weights came to.
-    weights : "uniform" or "relative"
+    weights : "uniform", "relative" or "effective"
     free : tuple of str
         Parameters that were free, k of them.
     standard_errors : dict of str to (float or None)
-        Of the five natural parameters; None where held, at a bound, or not determined.
+        Of all natural parameters; None where held, at a bound, or not determined.
     covariance : ndarray, shape (k, k)
-        Of the free unknowns in the order of ``free``, scaled as Jph, ln J0, n, Rs, 1/Rsh. Infinite
-        variances belong to what the data do not determine.
+        Of the free unknowns in the order of ``free``, scaled as Jph, ln J0, n, Rs, 1/Rsh; a J0 of the two-diode
+        model whose n is held stands as it is, since it may be zero. Infinite variances belong to what the data do
+        not determine.
     intervals : dict of str to (low, high)
         At ``settings.confidence``, for free parameters; an end may be a bound, ``inf`` for a shunt
         that may be absent.
@@ -39,9 +40,11 @@ class Refinement:
         Number of points used.
     findings : tuple of str
         Sentences on what the fit says, and what it cannot say.
+    others : int
+        Sweeps that it was refined together with.
     """
 
-    model: OneDiode
+    model: Model
     settings: FitSettings
     standard_errors: dict[str, float | None]
     covariance: np.ndarray
@@ -51,6 +54,7 @@ class Refinement:
     points: int
     findings: tuple[str, ...] = ()
     weights: str = "uniform"
+    others: int = 0
 
     def __post_init__(self):
         covariance = np.array(self.covariance, dtype=float)
@@ -77,6 +81,7 @@ class Refinement:
             "points": self.points,
             "findings": list(self.findings),
             "weights": self.weights,
+            "others": self.others,
         }
 
     @classmethod
@@ -84,7 +89,7 @@ class Refinement:
         return cls(
             **{
                 **values,
-                "model": OneDiode.from_dict(values["model"]),
+                "model": model_from_dict(values["model"]),
                 "settings": FitSettings.from_dict(values["settings"]),
                 "covariance": np.array(
                     [[math.inf if value is None else value for value in row] for row in values["covariance"]]

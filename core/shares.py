@@ -19,7 +19,14 @@ from .constants import ONE_SUN, thermal_voltage
 from .detailed_balance import Emission, limiting_diode
 from .diode import PARAMETERS, OneDiode
 from .errors import ComparisonRefused
-from .mixtures import coordinates, diode_at, largest_power, mixtures, reference_photocurrent, shapley
+from .mixtures import (
+    coordinates,
+    diode_at,
+    largest_power,
+    mixtures,
+    reference_photocurrent,
+    shapley,
+)
 
 # Temperatures [K] that count as equal; a tenth of a kelvin is some 0.2 mV of Voc.
 EQUAL_TEMPERATURE = 0.1

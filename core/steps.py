@@ -6,7 +6,14 @@ does not hold together, whoever made the step.
 
 from .applying import Step, apply, inverse
 from .condition_steps import confirm_conditions, set_band_gap, set_conditions
-from .fit_steps import record_refinement, record_refinements, set_fit_settings, set_hold, set_model, switch_model
+from .fit_steps import (
+    record_refinement,
+    record_refinements,
+    set_fit_settings,
+    set_hold,
+    set_model,
+    switch_model,
+)
 from .tray_steps import (
     add_sweeps,
     already_loaded,

@@ -115,10 +115,10 @@ class Store:
         with self._reading() as database:
             return history.labels(database, workspace_id)
 
-    def last_event(self, workspace_id: str) -> str | None:
-        """Name of the event that the last step carried under "event": a page that never heard the answer asks again."""
+    def made(self, workspace_id: str, event: str) -> bool:
+        """Whether a step carried this name under "event": a page that never heard the answer asks again."""
         with self._reading() as database:
-            return history.last_event(database, workspace_id)
+            return history.made(database, workspace_id, event)
 
     # Changing
 

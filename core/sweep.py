@@ -51,12 +51,16 @@ class Conditions:
             value = getattr(self, name)
             if value is not None and not (np.isfinite(value) and value > 0):
                 raise ConditionRefused(f"{word} must be a number above zero in cm², not {value}.")
+            if value is not None and not 1e-12 <= value <= 1e12:
+                raise ConditionRefused(f"{word} of {value:.3g} cm² is that of no device; check the unit.")
         if not (50 <= self.temperature <= 1000):
             raise ConditionRefused(
                 f"A device temperature of {self.temperature - 273.15:.4g} °C is outside −223 to 727 °C; check the unit."
             )
         if not (np.isfinite(self.irradiance) and self.irradiance >= 0):
             raise ConditionRefused("The irradiance must be zero (dark) or a number above zero.")
+        if self.irradiance > 1e6:
+            raise ConditionRefused(f"An irradiance of {self.irradiance:.3g} W cm⁻² is that of no lamp; check the unit.")
         if self.series_cells != int(self.series_cells) or not 1 <= self.series_cells <= 10_000:
             raise ConditionRefused("The number of cells in series must be a whole number from 1 to 10000.")
 

@@ -93,7 +93,7 @@ def load(database: sqlite3.Connection, workspace_id: str, row: Row, old: Workspa
             readings[name] = reading_from_record(json.loads(text))
         # ``changed`` counts the step that it makes.
         return changed(Workspace(workspace_id, row.name, row.revision - 1), put, readings)
-    except (SweepbenchError, ValueError, KeyError, TypeError) as problem:
+    except (SweepbenchError, ValueError, LookupError, TypeError, AttributeError, ArithmeticError) as problem:
         raise StoreFailed(
             f"The workspace “{row.name}” cannot be read: {problem} Its file was left as it is; "
             "put a copy from a backup in its place, or choose another workspace."

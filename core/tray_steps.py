@@ -122,6 +122,12 @@ def _given_name(name: str) -> str:
     return name
 
 
+def _group_of(sweep: Sweep) -> str:
+    """What the file's header calls the group; the names are common practice."""
+    words = {key.strip().lower(): value for key, value in sweep.header.items()}
+    return next((clean_name(words[key]) for key in ("group", "batch", "gruppe", "charge") if words.get(key)), "")
+
+
 class _Frame:
     """What a file says of the device behind a sweep: area, file's area, cells in series; None: nothing."""
 
@@ -197,6 +203,7 @@ class _Tray:
             area=area,
             file_area=file_area,
             series_cells=sweep.series_cells,
+            group=_group_of(sweep),
             confirmed=frozenset() if cells is None else frozenset({"series_cells"}),
         )
         self._by_name.setdefault(device.name, []).append(device.id)

@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import ClassVar, Literal
 
 import numpy as np
 
@@ -20,6 +21,7 @@ from .first_guess import Scales
 
 # Physical bounds of n; wider where the sweep's voltage shows that the cells in series are not what they are said to be.
 _IDEALITY = (0.3, 10.0)
+Kind = Literal["plain", "log", "inverse"]
 _LARGEST_LOG = 690.0  # exp() of more is not a float
 
 
@@ -43,16 +45,48 @@ class Unknowns:
     scales: Scales
     coupled: bool
 
+    parameters: ClassVar[tuple[str, ...]] = PARAMETERS
+
     @classmethod
-    def of(cls, base: OneDiode, hold: frozenset[str], scales: Scales, bounds: Mapping[str, tuple[float, float]]):
-        """Unknowns for all parameters but the held ones. Raises FitFailed for names that do not exist."""
+    def of(
+        cls,
+        base: OneDiode,
+        hold: frozenset[str],
+        scales: Scales,
+        bounds: Mapping[str, tuple[float, float]],
+        *,
+        coupled: bool = True,
+    ) -> Unknowns:
+        """Unknowns for all parameters but the held ones; J0 and n are coupled where that is allowed and both are free.
+
+        Raises
+        ------
+        FitFailed
+            For names that do not exist.
+        """
         for name in (*hold, *bounds):
             if name not in PARAMETERS:
                 raise FitFailed(f"The one-diode model has no parameter called “{name}”.")
         free = tuple(name for name in PARAMETERS if name not in hold)
         # Bounds on J0 are a box only where J0 itself is the unknown.
-        coupled = {"saturation_current", "ideality"} <= set(free) and "saturation_current" not in bounds
-        return cls(free, base, scales, coupled)
+        both = {"saturation_current", "ideality"} <= set(free)
+        return cls(free, base, scales, coupled and both and "saturation_current" not in bounds)
+
+    def kind(self, name: str) -> Kind:
+        """The scale on which the uncertainty of a parameter is nearly normal."""
+        return {"saturation_current": "log", "shunt_resistance": "inverse"}.get(name, "plain")
+
+    def near_bound(self, place: np.ndarray) -> np.ndarray:
+        """How close to its bound an unknown counts as lying on it, shape (k,)."""
+        return 1e-7 * np.maximum(np.abs(place), 1e-3)
+
+    def final(self, place: np.ndarray) -> OneDiode:
+        """The model at a place where a fit came to rest."""
+        return self.model(place)
+
+    def scaled_chain(self, place: np.ndarray) -> np.ndarray:
+        """∂(free parameters, each on the scale of its kind)/∂unknowns, shape (k, k)."""
+        return self.chain(place)[[PARAMETERS.index(name) for name in self.free]]
 
     @property
     def cell_voltage(self) -> float:

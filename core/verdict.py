@@ -33,7 +33,7 @@ _TITLES = {
     "jsc": "Jsc",
     "voc": "Voc",
     "fill_factor": "FF",
-    "pmp": "Pmax",
+    "pmp": "Pmp",
     "efficiency": "PCE",
 }
 _PER_AREA = frozenset({"jsc", "pmp", "efficiency"})
@@ -110,7 +110,7 @@ def stands_out(measured_a: Metrics, measured_b: Metrics, budget: Budget = Budget
     Returns
     -------
     Verdict
-        For Jsc, Voc, FF, Pmax and PCE.
+        For Jsc, Voc, FF, Pmp and PCE.
     """
     return Verdict({metric: _weigh(metric, measured_a, measured_b, budget) for metric in METRICS})
 

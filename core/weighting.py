@@ -6,7 +6,9 @@ from dataclasses import replace
 
 import numpy as np
 
+from .constants import thermal_voltage
 from .fit_settings import Weights
+from .models import Model
 from .noise import noise_level
 from .sweep import Sweep
 
@@ -35,9 +37,9 @@ def point_weights(sweep: Sweep, weights: Weights = "automatic") -> np.ndarray:
     Returns
     -------
     ndarray, shape (n,)
-        1 for uniform weights.
+        1 for uniform weights, and for effective ones, which need the slope of a model (``effective_weights``).
     """
-    if resolved(weights, sweep) == "uniform":
+    if resolved(weights, sweep) != "relative":
         return np.ones(sweep.voltage.size)
     top = float(np.max(np.abs(sweep.current), initial=0.0))
     if not top > 0:
@@ -56,10 +58,47 @@ def point_noise(sweep: Sweep, weights: Weights = "automatic") -> np.ndarray:
     -------
     ndarray, shape (n,)
     """
-    if resolved(weights, sweep) == "uniform":
+    if resolved(weights, sweep) != "relative":
         return np.full(sweep.voltage.size, noise_level(sweep))
     floor = noise_near_zero(sweep)
     return np.hypot(floor, noise_in_proportion(sweep, floor) * sweep.current)
+
+
+def effective_weights(sweep: Sweep, model: Model, voltage_noise: float, current_noise: float | None = None) -> np.ndarray:
+    """Weight of each point's residual by its effective variance, σ_J/√(σ_J² + (dJ/dV)²·σ_V²) [-].
+
+    Parameters
+    ----------
+    sweep : Sweep
+    model : OneDiode or TwoDiode
+        Gives the slope dJ/dV at each point.
+    voltage_noise, current_noise : float, float or None
+        σ_V [V] and σ_J [unit of current]; None: σ_J is judged from the sweep.
+
+    Returns
+    -------
+    ndarray, shape (n,)
+
+    References
+    ----------
+    J. Orear, Am. J. Phys. 50 (1982) 912 (from memory).
+    """
+    noise = noise_level(sweep) if not current_noise else current_noise
+    return noise / np.hypot(noise, slope(model, sweep.voltage) * voltage_noise)
+
+
+def slope(model: Model, voltage: np.ndarray) -> np.ndarray:
+    """dJ/dV of a model [unit of current per V], shape of ``voltage``; negative."""
+    _, jacobian = model.current_and_jacobian(voltage)
+    damping = jacobian[..., 0]  # 1/(1 + Rs·G) with the conductance G of the junction
+    steep = damping / model.shunt_resistance
+    of_one = model.series_cells * thermal_voltage(model.temperature)
+    for column, name in enumerate(model.parameters):
+        if name.startswith("saturation_current"):
+            ideality = getattr(model, name.replace("saturation_current", "ideality"))
+            emission = getattr(model, name) * damping - jacobian[..., column]  # times the damping
+            steep = steep + emission / (ideality * of_one)
+    return -steep
 
 
 def noise_near_zero(sweep: Sweep) -> float:

@@ -15,9 +15,10 @@ from types import MappingProxyType
 from typing import Any
 
 from .constants import ONE_SUN
-from .diode import PARAMETERS, OneDiode
 from .errors import ConditionRefused, StepRefused
-from .refine import FitSettings, Refinement
+from .fit_settings import FitSettings
+from .models import Model, model_from_dict
+from .refinement import Refinement
 from .sweep import Conditions, Sweep
 
 DEVICE_CONDITIONS = ("area", "file_area", "series_cells")  # of the device, hence of all its sweeps
@@ -123,7 +124,7 @@ class Entry:
 class Fit:
     """The model laid over one sweep, the settings it is refined with, and the last refinement."""
 
-    model: OneDiode | None = None
+    model: Model | None = None
     settings: FitSettings = field(default_factory=FitSettings)
     refinement: Refinement | None = None
 
@@ -143,7 +144,7 @@ class Fit:
     def from_dict(cls, values: Mapping[str, Any]) -> Fit:
         model, refinement = values["model"], values["refinement"]
         return cls(
-            None if model is None else OneDiode.from_dict(model),
+            None if model is None else model_from_dict(model),
             FitSettings.from_dict(values["settings"]),
             None if refinement is None else Refinement.from_dict(refinement),
         )
@@ -307,15 +308,22 @@ def _numbers(record: Any, *names: str) -> None:
             raise ValueError(f"{name} is not a number")
 
 
-def _check_model(model: OneDiode) -> None:
-    finite = all(math.isfinite(getattr(model, name)) for name in (*PARAMETERS[:-1], "temperature"))
-    positive = min(model.saturation_current, model.ideality, model.shunt_resistance, model.temperature) > 0
-    if not (finite and positive and model.series_resistance >= 0 and model.series_cells >= 1):
+def _check_model(model: Model) -> None:
+    saturations = [getattr(model, name) for name in model.parameters if name.startswith("saturation_current")]
+    above_zero = [getattr(model, name) for name in model.parameters if name.startswith("ideality")]
+    finite = [getattr(model, name) for name in model.parameters if name != "shunt_resistance"]
+    sound = (
+        all(math.isfinite(value) for value in (*finite, model.temperature))
+        and min(*above_zero, model.shunt_resistance, model.temperature, max(saturations)) > 0
+        and min(model.series_resistance, *saturations) >= 0
+        and model.series_cells >= 1
+    )
+    if not sound:
         raise ValueError("the parameters of a model are not numbers of the right sign")
 
 
 def _check_settings(settings: FitSettings) -> None:
     numbers = [*settings.excluded, *(settings.window or ())]
     names = {*settings.hold, *settings.bounds}
-    if not names <= set(PARAMETERS) or not all(math.isfinite(number) for number in numbers):
+    if not names <= set(settings.parameters) or not all(math.isfinite(number) for number in numbers):
         raise ValueError("the settings of a fit name an unknown parameter or a point that is not a number")

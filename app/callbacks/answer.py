@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import Any
 
-from core.errors import SweepbenchError
+from app.answers import sentence_for
+from core.errors import StoreFailed
 from core.store import Store
 from core.workspace import Workspace
 
@@ -13,7 +14,9 @@ Change = Callable[[], tuple[Workspace, str]]
 
 
 def answered(store: Store, workspace_id: str, change: Change, *, event: str | None = None) -> dict[str, Any]:
-    """Make the change and report; an expected error becomes its sentence, and nothing has changed.
+    """Make the change and report; an error becomes its sentence, and nothing has changed.
+
+    Bugs too: a page that never heard of its event would send it again for ever.
 
     Parameters
     ----------
@@ -24,6 +27,14 @@ def answered(store: Store, workspace_id: str, change: Change, *, event: str | No
     """
     try:
         workspace, sentence = change()
-    except SweepbenchError as error:
-        workspace, sentence = store.current(workspace_id), str(error)
+    except Exception as error:
+        workspace, sentence = _standing(store, workspace_id), sentence_for(error)
     return {"workspace": workspace.id, "revision": workspace.revision, "event": event, "sentence": sentence}
+
+
+def _standing(store: Store, workspace_id: str) -> Workspace:
+    """The workspace as it stands, or the last used one where another tab has deleted it."""
+    try:
+        return store.current(workspace_id)
+    except StoreFailed:
+        return store.current(store.first())

@@ -13,6 +13,7 @@ RECEIVERS = {
     "view": Input(Id.VIEW, "data"),
     "scene": Input(Id.SCENE, "data"),
     "tray": Input(Id.TRAY, "data"),
+    "trayRead": Input(Id.TRAY_READ, "data"),
     "intervals": Input(Id.INTERVALS, "data"),
     "pair": Input(Id.PAIR, "data"),
     "losses": Input(Id.LOSSES, "data"),

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import json
+from collections.abc import Sequence
+from hashlib import sha256
 from typing import Any
 
 from dash import Dash, Input, Output, State, no_update
 
 from app.ids import Id
-from app.jobs import Jobs
+from app.jobs import Jobs, Status
 from core import steps
 from core.errors import StaleRevision
 from core.refine import refine
@@ -33,7 +36,7 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
         fits = [workspace.fit(entry) for entry in entries]
         arguments = [(workspace.sweep(e), fit.model, fit.settings) for e, fit in zip(entries, fits, strict=True)]
         name = jobs.submit(refine, arguments, label="refining")
-        return {"job": name, "workspace": workspace.id, "entries": entries}
+        return {"job": name, "workspace": workspace.id, "entries": entries, "stamps": [stamp(workspace, e) for e in entries]}
 
     @app.callback(
         Output(Id.JOB_CLOCK, "disabled"),
@@ -58,14 +61,11 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
         status = jobs.status(job["job"])
         if not status.finished:
             return f"{status.label} {status.done} of {status.total}", no_update, no_update
-        results = {job["entries"][place]: result for place, result in jobs.take(job["job"])}
-        sentence = f"{len(results)} of {status.total} sweeps refined."
-        if status.failures:
-            first = status.failures[0]
-            sentence += f" {len(status.failures)} could not be; the first said: {first.sentence}"
+        results = [(job["entries"][place], job["stamps"][place], result) for place, result in jobs.take(job["job"])]
 
         def change() -> tuple[Workspace, str]:
-            return record(store, job["workspace"], results), sentence
+            workspace, kept = record(store, job["workspace"], results)
+            return workspace, outcome(status, len(results), kept)
 
         return "", None, answered(store, job["workspace"], change)
 
@@ -75,16 +75,44 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
             jobs.cancel(job["job"])
 
 
-def record(store: Store, workspace_id: str, results: dict[str, Refinement]) -> Workspace:
-    """Enter results as one step on whatever state stands now; what has left the tray meanwhile is left out."""
+def stamp(workspace: Workspace, entry: str) -> str:
+    """Short for the conditions and settings that a sweep is refined under."""
+    asked = [repr(workspace.conditions(entry)), workspace.fit(entry).settings.to_dict()]
+    return sha256(json.dumps(asked).encode()).hexdigest()[:12]
+
+
+def record(store: Store, workspace_id: str, results: Sequence[tuple[str, str, Refinement]]) -> tuple[Workspace, int]:
+    """Enter results as one step on whatever state stands now, and say how many.
+
+    What has left the tray meanwhile is left out, and what now has other conditions or settings: its result is in units
+    of an area, or of points, that the sweep no longer has.
+
+    Parameters
+    ----------
+    results : sequence of (entry, stamp at the start, Refinement)
+    """
     for attempt in range(TRIES):
         workspace = store.current(workspace_id)
-        present = {entry: result for entry, result in results.items() if entry in workspace.entries}
+        present = {e: found for e, before, found in results if e in workspace.entries and stamp(workspace, e) == before}
         if not present:
-            return workspace
+            return workspace, 0
         try:
-            return store.commit(workspace_id, steps.record_refinements(workspace, present), seen=workspace.revision)
+            step = steps.record_refinements(workspace, present)
+            return store.commit(workspace_id, step, seen=workspace.revision), len(present)
         except StaleRevision:
             if attempt == TRIES - 1:
                 raise
-    return workspace
+    return workspace, 0
+
+
+def outcome(status: Status, found: int, kept: int) -> str:
+    """What the user hears at the end."""
+    if status.state == "lost":
+        return "The server was started anew while it was refining, so nothing was kept. Refine again."
+    sentences = [f"{kept} of {status.total} sweeps refined."]
+    if found > kept:
+        were = "was" if found - kept == 1 else "were"
+        sentences.append(f"{found - kept} {were} changed or removed meanwhile and left alone.")
+    if status.failures:
+        sentences.append(f"{len(status.failures)} could not be; the first said: {status.failures[0].sentence}")
+    return " ".join(sentences)

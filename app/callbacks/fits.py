@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 from dash import Dash, Input, Output, State, ctx
@@ -10,8 +11,10 @@ from app.ids import Id
 from app.jobs import Jobs
 from app.scene import active_entry
 from core import steps
+from core.diode import PARAMETERS
 from core.errors import StepRefused
 from core.first_guess import first_guess
+from core.models import Model, two_diodes_like
 from core.refine import refine
 from core.store import Store
 from core.workspace import Workspace
@@ -46,7 +49,10 @@ def guess_step(workspace: Workspace, entry: str) -> dict[str, Any]:
     """Parameters read off the sweep; held ones keep their value."""
     fit = workspace.fit(entry)
     held = {name: getattr(fit.model, name) for name in fit.settings.hold} if fit.model else {}
-    return steps.set_model(workspace, entry, first_guess(workspace.sweep(entry), held), label="first guess")
+    guess: Model = first_guess(workspace.sweep(entry), {name: held[name] for name in held if name in PARAMETERS})
+    if fit.settings.model == "two diodes":
+        guess = replace(two_diodes_like(guess), **held)
+    return steps.set_model(workspace, entry, guess, label="first guess")
 
 
 def refine_step(workspace: Workspace, entry: str) -> dict[str, Any]:

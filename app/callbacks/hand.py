@@ -23,15 +23,29 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
         prevent_initial_call=True,
     )
     def take_step(event: dict[str, Any]) -> dict[str, Any]:
-        def change() -> tuple[Workspace, str]:
-            workspace = store.current(event["workspace"])
-            if event.get("tries", 1) > 1 and store.last_event(workspace.id) == event["event"]:
-                return workspace, ""  # it was made before, and only the answer got lost
-            if workspace.revision != event["revision"]:
-                raise StaleRevision(event["revision"], workspace.revision)
-            step, sentence = step_for(workspace, event)
-            if step is None:
-                return workspace, sentence
-            return store.commit(workspace.id, {**step, "event": event.get("event")}, seen=event["revision"]), sentence
+        return answered(store, event["workspace"], lambda: take(store, event), event=event["event"])
 
-        return answered(store, event["workspace"], change, event=event.get("event"))
+
+def take(store: Store, event: dict[str, Any]) -> tuple[Workspace, str]:
+    """Make the step of an event, once, however often the page sends it because it heard no answer.
+
+    Raises
+    ------
+    StaleRevision
+        If the workspace has moved on and not by this event.
+    """
+    if event.get("tries", 1) > 1 and store.made(event["workspace"], event["event"]):
+        return store.current(event["workspace"]), ""
+    try:
+        workspace = store.current(event["workspace"])
+        if workspace.revision != event["revision"]:
+            raise StaleRevision(event["revision"], workspace.revision)
+        step, sentence = step_for(workspace, event)
+        if step is None:
+            return workspace, sentence
+        return store.commit(workspace.id, {**step, "event": event["event"]}, seen=event["revision"]), sentence
+    except StaleRevision:
+        # The first try may have been slow and not lost: then it was this very event that moved it on.
+        if store.made(event["workspace"], event["event"]):
+            return store.current(event["workspace"]), ""
+        raise

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from typing import Any
 
 from dash import Dash, Input, Output, State, no_update
@@ -10,6 +11,8 @@ from app import scene
 from app.ids import Id
 from app.jobs import Jobs
 from core.store import Store
+
+SLICE = 0.15  # [s] that one answer may spend on reading sweeps for the tray
 
 
 def register(app: Dash, store: Store, jobs: Jobs) -> None:
@@ -33,10 +36,26 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
 
     @app.callback(
         Output(Id.TRAY, "data"),
+        Output(Id.TRAY_DRAWN, "data"),
         inputs={"revision": Input(Id.REVISION, "data")},
+        state={"drawn": State(Id.TRAY_DRAWN, "data")},
     )
-    def show_tray(revision: dict[str, Any]) -> list[dict[str, Any]]:
-        return scene.tray(store.current(revision["workspace"]))
+    def show_tray(revision: dict[str, Any], drawn: str) -> tuple:
+        workspace = store.current(revision["workspace"])
+        key = scene.tray_key(workspace)
+        if key == drawn:
+            return no_update, no_update
+        return scene.tray(workspace, until=time.monotonic() + SLICE), key
+
+    @app.callback(
+        Output(Id.TRAY_READ, "data"),
+        Input(Id.TRAY_UNREAD, "data"),
+        prevent_initial_call=True,
+    )
+    def read_on(unread: dict[str, Any]) -> dict[str, dict[str, Any]]:
+        """The page asks for the lines of a long tray slice by slice, so that nothing else has to wait for them."""
+        workspace = store.current(unread["workspace"])
+        return scene.tray_readings(workspace, unread["entries"], until=time.monotonic() + SLICE)
 
     @app.callback(
         Output(Id.UNDO, "disabled"),

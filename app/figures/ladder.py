@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from html import escape
 
 import plotly.graph_objects as go
 
@@ -10,6 +11,10 @@ from app.mechanisms import BY_PARAMETER
 from app.wording import number, power_change
 
 from .style import FAINT, HAIR, INK, SOFT, quiet_axis, quiet_layout
+
+# Rows are told apart by words of our own, because a device may have any name, that of a mechanism too.
+TOP, FOOT = "top", "foot"
+LONGEST_LABEL = 32  # characters; a longer name would take the chart's room
 
 
 def ladder_figure(
@@ -52,42 +57,54 @@ def ladder_figure(
         words.append(_words(change, limit))
         levels.append((level, level + change))
         level += change
-    size = 22 if large else 13
+    size, thickness = (22, 0.62) if large else (13, 0.5)
+    words_of_device = f"{number(device)} mW cm⁻², {100 * device / limit:.1f} % of the limit"
+    # Words that the foot has no room for stand beside it.
+    inside = device > 0.55 * limit
     ends = go.Bar(
-        y=[limit_name, device_name], x=[limit, device], orientation="h", width=0.5, marker={"color": [SOFT, INK]}, uid="ends",
-        text=[f"{number(limit)} mW cm⁻²", f"{number(device)} mW cm⁻², {100 * device / limit:.1f} % of the limit"],
-        textposition="inside", insidetextanchor="start", textfont={"size": size, "color": "#fffdf9"}, hoverinfo="skip",
+        y=[TOP, FOOT], x=[limit, device], orientation="h", width=thickness, marker={"color": [SOFT, INK]}, uid="ends",
+        text=[f"{number(limit)} mW cm⁻²", words_of_device if inside else ""],
+        textposition="inside", insidetextanchor="start", constraintext="none", textfont={"size": size, "color": "#fffdf9"}, hoverinfo="skip",
     )
     rungs = go.Bar(
-        y=names, x=widths, base=bases, orientation="h", width=0.5, uid="rungs", hoverinfo="skip",
+        y=names, x=widths, base=bases, orientation="h", width=thickness, uid="rungs", hoverinfo="skip",
         marker={"color": colours, "pattern": {"shape": hatches, "fgcolor": "rgba(255,255,255,0.75)", "size": 6, "solidity": 0.25}},
     )
     # Words stand where there is room: left of a rung that is far to the right, else right of it.
     left = [min(pair) > 0.4 * limit for pair in levels]
     labels = go.Scatter(
-        y=names, x=[min(pair) if to_left else max(pair) for pair, to_left in zip(levels, left, strict=True)], mode="text",
-        text=[f"  {w}  " for w in words], textposition=["middle left" if to_left else "middle right" for to_left in left],
-        textfont={"size": size}, hoverinfo="skip", cliponaxis=False, uid="labels",
+        y=[*names, *([] if inside else [FOOT])],
+        x=[*(min(pair) if to_left else max(pair) for pair, to_left in zip(levels, left, strict=True)), *([] if inside else [device])],
+        text=[f"  {w}  " for w in (*words, *([] if inside else [words_of_device]))],
+        textposition=[*("middle left" if to_left else "middle right" for to_left in left), *([] if inside else ["middle right"])],
+        mode="text", textfont={"size": size}, hoverinfo="skip", cliponaxis=False, uid="labels",
     )
     target = go.Scatter(x=[], y=[], mode="markers", uid="target", hoverinfo="skip",
                         marker={"symbol": "line-ns", "size": 26 if not large else 44, "line": {"width": 3, "color": FAINT}})
     figure = go.Figure([ends, rungs, labels, target])
-    rows = [limit_name, *names, device_name]
+    rows = [TOP, *names, FOOT]
+    shown = [_label(limit_name), *names, _label(device_name)]
     for place, (start, _) in enumerate([*levels, (level, level)]):
         # A plumb line from each level to the next rung, so that the eye can go down.
-        figure.add_shape(type="line", x0=start, x1=start, y0=place + 0.25, y1=place + 0.75, line={"color": FAINT, "width": 1})
+        figure.add_shape(type="line", x0=start, x1=start, y0=place + thickness / 2, y1=place + 1 - thickness / 2, line={"color": FAINT, "width": 1})
     return figure.update_layout(
         quiet_layout(
             "ladder",
             barmode="overlay",
             xaxis=quiet_axis("power (mW cm⁻²)", range=[0, 1.04 * max(limit, *(max(pair) for pair in levels))], fixedrange=True, tickfont={"size": size}),
-            yaxis={"categoryorder": "array", "categoryarray": rows, "autorange": "reversed", "showgrid": False, "ticks": "",
+            yaxis={"type": "category", "categoryorder": "array", "categoryarray": rows, "tickvals": rows, "ticktext": shown,
+                   "autorange": "reversed", "showgrid": False, "ticks": "",
                    "showline": True, "linecolor": HAIR, "fixedrange": True, "tickfont": {"size": size}, "automargin": True},
             xaxis_title_font={"size": size},
             margin={"l": 40, "r": 24, "t": 8, "b": 48},
             dragmode=False,
         )
     )
+
+
+def _label(name: str) -> str:
+    """A name as a tick: Plotly would take some of its characters for HTML."""
+    return escape(name if len(name) <= LONGEST_LABEL else f"{name[: LONGEST_LABEL - 1]}…", quote=False)
 
 
 def _words(change: float, limit: float) -> str:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from html import escape
 
 import numpy as np
 import plotly.graph_objects as go
@@ -47,7 +48,7 @@ def pair_figure(a: Side, b: Side, *, normalised: bool = False, zoom_key: str = "
         marker = {"size": 6, "color": "rgba(255,255,255,0)" if hollow else SOFT, "line": {"width": 1.2 if hollow else 0, "color": INK}}
         figure.add_trace(
             go.Scatter(x=voltage / x_unit, y=current / y_unit, mode="markers", marker=marker, uid=f"points-{'b' if hollow else 'a'}",
-                       customdata=[[side.name]] * len(voltage), hovertemplate="%{x:.4f}<br>%{y:.4g}<extra>%{customdata[0]}</extra>")
+                       customdata=[[escape(side.name, quote=False)]] * len(voltage), hovertemplate="%{x:.4f}<br>%{y:.4g}<extra>%{customdata[0]}</extra>")
         )
         line_x, line_y = ([], []) if side.model is None else _line(side, x_unit, y_unit)
         figure.add_trace(
@@ -128,26 +129,38 @@ def shares_figure(
         y=names, x=values, orientation="h", uid="shares", width=0.62, hoverinfo="skip",
         marker={"color": colours, "pattern": {"shape": hatches, "fgcolor": "rgba(255,255,255,0.75)", "size": 6, "solidity": 0.25},
                 "line": {"width": 0}},
-        text=[power_change(v) for v in values], textposition="outside", cliponaxis=False,
-        textfont={"size": 18 if large else 13},
         error_x=_errors(values, intervals or {}),
     )
-    reach = 1.35 * max((abs(v) for v in values), default=1.0) or 1.0
-    return go.Figure(bars).update_layout(
+    # Words stand beyond the whisker, so that neither hides the other.
+    known = [(intervals or {}).get(m.parameter) for m in MECHANISMS]
+    tips = [_tip(v, known[i] if i < len(known) else None) for i, v in enumerate(values)]
+    words = go.Scatter(
+        y=names, x=tips, mode="text", text=[f" {power_change(v)} " for v in values], uid="share-words", hoverinfo="skip",
+        textposition=["middle left" if v < 0 else "middle right" for v in values], textfont={"size": 18 if large else 13}, cliponaxis=False,
+    )
+    reach = 1.35 * max(abs(v) for v in (*values, *tips)) or 1.0
+    return go.Figure([bars, words]).update_layout(
         quiet_layout(
             "shares",
             xaxis=quiet_axis("mW cm⁻²", range=[-reach, reach], zeroline=True, zerolinecolor=FAINT, zerolinewidth=1, fixedrange=True),
             yaxis={"autorange": "reversed", "showgrid": False, "ticks": "", "showline": False, "fixedrange": True,
                    "tickfont": {"size": 18 if large else 13}, "automargin": True},
-            margin={"l": 150, "r": 24, "t": 4, "b": 40},
+            margin={"l": 166, "r": 24, "t": 4, "b": 40},
             dragmode=False,
         )
     )
 
 
+def _tip(value: float, interval: tuple[float, float] | None) -> float:
+    """The end of a bar, or of its whisker where that reaches farther."""
+    low, high = interval or (value, value)
+    return min(value, low) if value < 0 else max(value, high)
+
+
 def _errors(values: list[float], intervals: Mapping[str, tuple[float, float]]) -> dict:
     known = [intervals.get(m.parameter) for m in MECHANISMS]
     known += [None] * (len(values) - len(known))
-    up = [max(i[1] - v, 0.0) if i else 0.0 for i, v in zip(known, values, strict=True)]
-    down = [max(v - i[0], 0.0) if i else 0.0 for i, v in zip(known, values, strict=True)]
+    # A bar without an interval has no whisker, not one of no length.
+    up = [max(i[1] - v, 0.0) if i else None for i, v in zip(known, values, strict=True)]
+    down = [max(v - i[0], 0.0) if i else None for i, v in zip(known, values, strict=True)]
     return {"type": "data", "array": up, "arrayminus": down, "color": INK, "thickness": 1.2, "width": 3, "visible": bool(intervals)}

@@ -44,6 +44,7 @@ def side() -> html.Aside:
                 ],
             ),
             html.Div(id="fit-line", className="fit-line"),
+            html.Div(id="fit-caution", className="fit-caution", role="status"),
             html.Div(
                 className="tabs",
                 role="radiogroup",

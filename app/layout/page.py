@@ -14,7 +14,6 @@ from .pair import pair
 from .tray import tray
 from .workspaces import workspace_sheet
 
-
 # All screens stay mounted; the address chooses which one is seen.
 SCREENS = (("bench", "/", "Bench"), ("pair", "/pair", "Pair"), ("losses", "/losses", "Losses"))
 SCREENS_LAID_OUT = (
@@ -48,6 +47,9 @@ def _stores(workspace_id: str, revision: int) -> list:
         dcc.Store(id=Id.HAND),
         dcc.Store(id=Id.SCENE),
         dcc.Store(id=Id.TRAY),
+        dcc.Store(id=Id.TRAY_DRAWN, data=""),
+        dcc.Store(id=Id.TRAY_UNREAD),
+        dcc.Store(id=Id.TRAY_READ),
         dcc.Store(id=Id.DRAWN, data=""),
         dcc.Store(id=Id.INTERVALS),
         dcc.Store(id=Id.NOTICE),

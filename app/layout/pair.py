@@ -27,8 +27,6 @@ def pair() -> list:
                         html.Div(
                             className="picture",
                             children=[
-                                _choice("absolute", "pair-scale", "absolute"),
-                                _choice("normalised", "pair-scale", "normalised"),
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.PAIR_PLOT}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.PAIR_PLOT}),
@@ -36,7 +34,18 @@ def pair() -> list:
                         ),
                     ],
                 ),
-                dcc.Graph(id=Id.PAIR_PLOT, config=PLOT_CONFIG, className="pair-plot", responsive=True),
+                html.Div(
+                    className="pair-plot-room",
+                    children=[
+                        dcc.Graph(id=Id.PAIR_PLOT, config=PLOT_CONFIG, className="pair-plot", responsive=True),
+                        html.Div(
+                            className="scale-choice",
+                            role="radiogroup",
+                            **{"aria-label": "Axes of the plot"},
+                            children=[_choice("absolute", "pair-scale", "absolute"), _choice("normalised", "pair-scale", "normalised")],
+                        ),
+                    ],
+                ),
                 html.Div(
                     className="bars-head",
                     children=[
@@ -67,7 +76,7 @@ def pair() -> list:
                     children=[
                         html.Span("known besides noise:", className="hint"),
                         _known("area", "area ±", "%", "Standard uncertainty of each area"),
-                        _known("lamp", "lamp ±", "%", "What the lamp may have changed between the two"),
+                        _known("lamp", "lamp ±", "%", "Standard uncertainty of the irradiance of each measurement, without what both have in common"),
                         html.Button("one aperture", role="switch", className="quiet", **{"data-budget-switch": "area_shared", "aria-checked": "false"}),
                     ],
                 ),

@@ -53,8 +53,12 @@ def estimates_panel() -> list:
 
 
 def _setting(name: str, words: str, unit: str, options: str) -> html.Div:
+    extra = []
+    if name == "voltage_noise":
+        title = "Judge it from this device's repeated sweeps under the same conditions"
+        extra = [html.Button("from repeats", className="quiet", title=title, **{"data-act": "repeats"})]
     return html.Div(
         className="condition",
         **{"data-setting": name, "data-title": words, "data-options": options},
-        children=[html.Span(words, className="label"), html.Span(className="value"), html.Span(unit, className="unit")],
+        children=[html.Span(words, className="label"), html.Span(className="value"), html.Span(unit, className="unit"), *extra],
     )

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from app import tables
+from app.insight import is_shunt
 from app.readout import measured
+from app.states import state_of
 from app.units import Units
 from app.wording import concise, number
-from app.states import state_of
 from core.budget import budget_of
 from core.comparing import compare
 from core.errors import ComparisonRefused, ConditionRefused
@@ -83,7 +84,8 @@ def _shares(workspace: Workspace, entry_a: str, entry_b: str, names: tuple[str, 
     except (ComparisonRefused, ConditionRefused) as refusal:
         return [head, paragraph(str(refusal))]
     assumed = workspace.assumed(entry_a) | workspace.assumed(entry_b)
-    words = tell_difference(*names, shares, _verdict(workspace, entry_a, entry_b), assumed=assumed)
+    verdict, shunt = _verdict(workspace, entry_a, entry_b), is_shunt(workspace, entry_a) and is_shunt(workspace, entry_b)
+    words = tell_difference(*names, shares, verdict, shunt_confirmed=shunt, assumed=assumed)
     caption = (
         f"What each mechanism adds on the way from {names[0]} ({number(1e3 * shares.start)} mW cm⁻²) "
         f"to {names[1]} ({number(1e3 * shares.end)} mW cm⁻²)."

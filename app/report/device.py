@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from app import tables
+from app.insight import is_shunt
 from app.losses_scene import Losses, losses_of
 from app.mechanisms import MECHANISMS
 from app.readout import measured
@@ -125,7 +126,8 @@ def _losses_of(workspace: Workspace, entry: str, name: str, drawing: str) -> lis
         return [paragraph(f"{name}: {refusal}", class_="under")]
     shares = found.shares
     assumed = workspace.assumed(entry) | ({"band_gap"} if found.assumed else set())
-    told = tell_losses(found.name, shares, best, found.gap, assumed=assumed)
+    shunt = is_shunt(workspace, entry)
+    told = tell_losses(found.name, shares, best, found.gap, shunt_confirmed=shunt, assumed=assumed)
     gap = f"limit, {found.gap:.3g} eV assumed" if found.assumed else f"limit at {found.gap:.4g} eV"
     picture = ladder(1e3 * best.pmp, shares, order_of(shares.by_mechanism), drawing, limit_name=gap, device_name=found.name)
     caption = "The largest loss first; a bar is the mechanism’s share, whatever the order."

@@ -10,7 +10,14 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from .header import is_entry, key_value
-from .limits import MAX_CELLS, MAX_COLUMNS, MAX_HEADER, MAX_TEXT_LINES, MAX_WORDS, MIN_POINTS
+from .limits import (
+    MAX_CELLS,
+    MAX_COLUMNS,
+    MAX_HEADER,
+    MAX_TEXT_LINES,
+    MAX_WORDS,
+    MIN_POINTS,
+)
 from .refusal import EXPORT_TEXT, Refusal
 from .units import parse_label
 from .words import direction_in, light_in
@@ -193,7 +200,8 @@ class Gatherer:
             row = rows[-1]
             cells = tuple(self.split(row.raw, width)) if row.raw else row.cells
             known = _sum_of_labels(cells)
-            if row.has_number or (known < 2 and (key_value(row.raw) is not None)):
+            # Above a heading, "Comment: voltage, current" is an entry of the header and no second heading.
+            if row.has_number or (key_value(row.raw) is not None and (known < 2 or labels)):
                 break
             if known >= 2 or (known and len(cells) == width) or (len(cells) >= 2 and not labels):
                 labels.insert(0, cells)

@@ -6,7 +6,15 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from app.curves import STRIPS, Curve, model_curves, noise_of, squeezed, strip_points, thinned
+from app.curves import (
+    STRIPS,
+    Curve,
+    model_curves,
+    noise_of,
+    squeezed,
+    strip_points,
+    thinned,
+)
 from app.units import Units
 from core.noise import noise_level
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, sweep_of
@@ -93,7 +101,7 @@ def test_the_ideality_strip_shows_that_of_the_points_and_of_the_model():
     line = curves(IN_THE_DARK, DARK_CELL, "ideality")["strip-model"]
     middle = (points.x > 0.5) & (points.x < 0.7)
     assert middle.sum() > 3
-    np.testing.assert_allclose(points.y[middle], np.interp(points.x[middle], line.x, line.y), rtol=0.03)
+    np.testing.assert_allclose(points.y[middle], np.interp(points.x[middle], line.x, line.y), rtol=0.06)
 
 
 @pytest.mark.parametrize("strip", STRIPS)
@@ -124,6 +132,6 @@ def test_many_points_are_thinned_to_what_can_be_seen_with_both_ends_kept():
     assert len(voltage) == len(current) == 300
     assert (voltage[0], voltage[-1], current[-1]) == (many.voltage[0], many.voltage[-1], many.current[-1])
     assert set(current) <= set(many.current)
-    assert thinned(LIT, 300)[0] is LIT.voltage
+    np.testing.assert_array_equal(thinned(LIT, 300), (LIT.voltage, LIT.current))
     sent = [curve.to_dict() for curve in model_curves(many, CELL, "residuals")]
     assert max(len(curve["x"]) for curve in sent) <= 300

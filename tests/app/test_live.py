@@ -134,7 +134,7 @@ def test_the_route_answers_without_writing(client, store, on_disk):
 def test_a_stale_page_is_told_to_read_again(client, on_disk, revision):
     answer = client.post("/live", json={**on_disk, "revision": revision, **dragged(0.5, 12.0)})
     assert answer.status_code == 409
-    assert answer.json["stale"] is True and answer.json["sentence"].endswith(".")
+    assert answer.json["revision"] == 2 and answer.json["sentence"].endswith(".")
 
 
 @pytest.mark.parametrize(

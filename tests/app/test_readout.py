@@ -13,6 +13,7 @@ from core.diode import PARAMETERS
 from core.metrics import measure
 from core.refine import FitSettings, Refinement
 from core.sweep import Conditions
+from core.two_diode import TwoDiode
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, bench, sweep_of
 
 
@@ -40,8 +41,15 @@ def refined_dials(made):
 
 
 def test_there_is_one_mechanism_for_each_parameter_with_hue_and_shape_of_its_own():
-    assert tuple(BY_PARAMETER) == PARAMETERS
+    assert tuple(m.parameter for m in MECHANISMS) == PARAMETERS
     assert len({m.hue for m in MECHANISMS}) == len({m.shape for m in MECHANISMS}) == len(PARAMETERS)
+
+
+def test_with_two_diodes_a_parameter_that_comes_twice_keeps_its_mechanisms_hue_and_shape():
+    for name in set(TwoDiode.parameters) - set(PARAMETERS):
+        twice, once = BY_PARAMETER[name], BY_PARAMETER[name.rpartition("_")[0]]
+        assert (twice.hue, twice.shape, twice.symbol) == (once.hue, once.shape, once.symbol)
+        assert twice.index != once.index and twice.title != once.title
 
 
 def test_dials_show_symbols_values_and_units_per_area():

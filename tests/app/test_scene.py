@@ -15,7 +15,17 @@ from core.diode import PARAMETERS
 from core.refine import refine
 from core.store import History
 from core.sweep import Conditions
-from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LAMP, LIT, OTHER, REVERSE, bench, sweep_of
+from tests.app.benches import (
+    AMPERES,
+    CELL,
+    IN_THE_DARK,
+    LAMP,
+    LIT,
+    OTHER,
+    REVERSE,
+    bench,
+    sweep_of,
+)
 from tests.core.workspaces import workspace_with
 
 HISTORY = History("refine", None)

@@ -20,7 +20,6 @@ from app.layout.dials import CONDITION_LABELS, METRIC_LABELS
 from app.places import ASSETS
 from app.readout import METRIC_ROWS, condition_rows
 from app.server import create_app
-from core.diode import PARAMETERS
 from core.store import Store
 from tests.app.benches import LIT, bench
 
@@ -93,11 +92,9 @@ def test_every_act_of_the_page_is_known_to_the_scripts(page):
     assert known == acts
 
 
-def test_strips_metrics_conditions_and_dials_of_the_page_are_those_that_are_filled(page):
+def test_strips_metrics_and_conditions_of_the_page_are_those_that_are_filled(page):
     assert list(STRIP_LABELS) == list(STRIPS) == properties(page, "data-strip")
     assert list(METRIC_LABELS) == list(METRIC_ROWS) == properties(page, "data-metric")
-    dials = [part for part in components(page) if getattr(part, "className", "") == "dial"]
-    assert [getattr(dial, "data-parameter") for dial in dials] == list(PARAMETERS)
     workspace, (entry,) = bench(LIT)
     filled = condition_rows(workspace, entry, workspace.sweep(entry))
     (conditions,) = (part for part in components(page) if getattr(part, "className", "") == "conditions")

@@ -1,18 +1,12 @@
-"""Speed of the physics, as ratios measured in one run; asked for by naming this folder.
-
-``SWEEPBENCH_STUDY=10000 pytest -s tests/benchmarks -k optimum`` counts how many random devices reach the global
-optimum from cold, and how often their intervals hold the truth.
-"""
+"""Speed of the physics, as ratios measured in one run; asked for by naming this folder."""
 
 import math
-import os
 import time
 
 import numpy as np
-import pytest
 from scipy.optimize import brentq, curve_fit
 
-from core.diode import PARAMETERS, OneDiode
+from core.diode import OneDiode
 from core.first_guess import first_guess
 from core.metrics import measure
 from core.refine import refine
@@ -98,42 +92,3 @@ def test_refining_from_cold_against_curve_fit_with_a_good_start():
         ("metrics", f"{median_time(lambda: measure(sweep), 20) * 1e3:.2f} ms"),
     )
     assert cold / library <= 2
-
-
-def random_device(random):
-    photocurrent, ideality, voc = 10 ** random.uniform(-3, -1.3), random.uniform(1, 2.5), random.uniform(0.4, 1.25)
-    resistance = voc / photocurrent
-    series = 0.0 if random.random() < 0.1 else 10 ** random.uniform(-3, -0.6) * resistance
-    saturation = photocurrent / np.expm1(voc / (ideality * 0.0256926))
-    return OneDiode(photocurrent, saturation, ideality, series, 10 ** random.uniform(0.6, 3.5) * resistance)
-
-
-def random_sweep(device, random):
-    marks, points = device.landmarks(), int(random.integers(30, 501))
-    voltage = np.linspace(-0.1 * random.random(), 1 + 0.15 * random.random(), points) * marks.voc
-    voltage = np.sort(voltage + random.uniform(-0.3, 0.3, points) * (voltage[1] - voltage[0]))
-    noise = 10 ** random.uniform(math.log10(3e-4), -2) * marks.jsc
-    return Sweep(voltage, device.current(voltage) + noise * random.standard_normal(points), per_area=True)
-
-
-@pytest.mark.skipif("SWEEPBENCH_STUDY" not in os.environ, reason="a study of minutes; set SWEEPBENCH_STUDY to a number")
-def test_share_of_random_devices_that_reach_the_global_optimum():
-    """Parameters over lab ranges, noise 0.03 to 1 %, 30 to 500 unevenly spaced points; the truth is the rival start."""
-    count, random = int(os.environ["SWEEPBENCH_STUDY"]), np.random.default_rng(2)
-    reached, inside, times = 0, np.zeros(5), []
-    for _ in range(count):
-        device = random_device(random)
-        sweep = random_sweep(device, random)
-        begin = time.perf_counter()
-        cold = refine(sweep)
-        times.append(time.perf_counter() - begin)
-        reached += cold.rmse <= refine(sweep, device).rmse * (1 + 1e-7)
-        inside += [cold.intervals[name][0] <= getattr(device, name) <= cold.intervals[name][1] for name in PARAMETERS]
-    names = [f"95 % interval holds the truth: {name.replace('_', ' ')}" for name in PARAMETERS]
-    show(
-        ("devices", count),
-        ("reach the global optimum from cold", f"{100 * reached / count:.2f} %"),
-        *((name, f"{100 * held / count:.1f} %") for name, held in zip(names, inside, strict=True)),
-        ("median, 95th percentile of refine", f"{np.median(times) * 1e3:.1f}, {np.quantile(times, 0.95) * 1e3:.1f} ms"),
-    )
-    assert reached / count >= 0.999

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 from urllib.parse import urlsplit
@@ -13,111 +12,16 @@ from urllib.parse import urlsplit
 import numpy as np
 from playwright.sync_api import ConsoleMessage, Locator, Page, Request, Route
 
-from core.diode import PARAMETERS, OneDiode
 from core.dials import dial_ranges
+from core.diode import PARAMETERS, OneDiode
 from core.handles import handles
 from core.store import Store
 from core.sweep import Sweep
 from core.workspace import Workspace
+from tests.browser.conditions import UNTIL
+from tests.browser.places import Frame, Place, distance_to_line
 
 PATIENCE = 15_000  # ms
-
-# Every wait is for a condition, looked at once a frame, inside the page.
-_UNTIL = """async ([condition, argument, patience]) => {
-  const holds = { CONDITIONS };
-  const end = performance.now() + patience;
-  for (;;) {
-    if (holds[condition](argument)) return true;
-    if (performance.now() > end) return false;
-    await new Promise((next) => setTimeout(next, 8));
-  }
-}"""
-
-_CONDITIONS = """
-  painted: () => Boolean(window.sweepbench?.scene && document.querySelector("#tray-list") && sweepbench.graph()?._fullLayout),
-  followed: () => !sweepbench.live.busy,
-  atRest: () => !sweepbench.live.busy && !sweepbench.unsent() && !sweepbench.handIsDown()
-      && sweepbench.scene.revision === sweepbench.stamp().revision && FIGURE,
-  moved: (before) => sweepbench.stamp().revision > before,
-  painted_revision: (revision) => sweepbench.scene.revision === revision,
-  active: (entry) => sweepbench.scene.entry === entry,
-  row_named: (name) => [...document.querySelectorAll("#tray-list .sweep-name")].some((one) => one.textContent === name),
-  trace: (uid) => sweepbench.graph()._fullData.some((one) => one.uid === uid),
-  ranges: (wanted) => wanted === JSON.stringify(RANGES(sweepbench.graph().layout)) && wanted === JSON.stringify(RANGES(sweepbench.graph()._fullLayout)),
-  ranged: (before) => {
-    const [public_, inner] = [sweepbench.graph().layout, sweepbench.graph()._fullLayout].map((one) => JSON.stringify(RANGES(one)));
-    return public_ !== before && public_ === inner;
-  },
-  frame_is_not: (width) => Math.abs(document.querySelector("#plot .draglayer .xy .nsewdrag").getBoundingClientRect().width - width) > 20
-      && sweepbench.axis("x").length !== width,
-  grip_at: ([parameter, x, y]) => {
-    const box = document.querySelector(`#overlay .grip[data-parameter=${parameter}] .reach`).getBoundingClientRect();
-    return Math.hypot(box.x + box.width / 2 - x, box.y + box.height / 2 - y) < 1;
-  },
-  strip: (strip) => sweepbench.scene.strip === strip,
-  rows: (count) => document.querySelectorAll("#tray-list .sweep").length === count
-      && !document.querySelector("#arrivals .busy"),
-  screen: (name) => sweepbench.view.screen === name && document.body.dataset.screen === name
-      && [...document.querySelectorAll(`.view[data-view=${name}] .dash-graph`)].every((one) => one.querySelector(".js-plotly-plot")?._fullLayout),
-  saved_line: (words) => document.querySelector("#saved-line").textContent.startsWith(words),
-  progress: () => /\\d+ of \\d+/.test(document.querySelector("#job-line").textContent),
-  says: (words) => document.querySelector("#notice-line.shown")?.textContent.includes(words),
-"""
-
-# The figure has arrived when its model trace holds the line that the scene names, fills its room, and the
-# grips stand on their places.
-_FIGURE = """(() => {
-    const { scene } = sweepbench;
-    if (scene.entry === null) return true;
-    const line = scene.curves.find((curve) => curve.uid === "model");
-    const trace = sweepbench.graph()?._fullData?.find((one) => one.uid === "model");
-    if (!trace || (trace.x ?? []).length !== line.x.length) return false;
-    if (Math.abs(sweepbench.graph()._fullLayout.height - sweepbench.graph().getBoundingClientRect().height) > 0.6) return false;
-    const size = Math.max(...line.y.map(Math.abs), 1e-300);
-    const alike = line.y.every((y, i) => Math.abs(trace.x[i] - line.x[i]) < 1e-5
-      && (y === null ? !Number.isFinite(trace.y[i] ?? NaN) : Math.abs(trace.y[i] - y) <= 2e-6 * size));
-    const [x, y] = [sweepbench.axis("x"), sweepbench.axis("y")];
-    return alike && scene.handles.every((handle) => {
-      const grip = sweepbench.gripPlace(handle.parameter);
-      const beyond = document.querySelector(`#overlay .grip.beyond[data-parameter=${handle.parameter}]`);
-      return grip && (beyond || Math.hypot(grip.x - x.pixel(handle.x), grip.y - y.pixel(handle.y)) < 0.1);
-    });
-  })()"""
-
-UNTIL = _UNTIL.replace("CONDITIONS", _CONDITIONS.replace("FIGURE", _FIGURE).replace("RANGES", "((one) => [one.xaxis.range, one.yaxis.range])"))
-
-
-@dataclass(frozen=True)
-class Place:
-    """A point of the window [px]."""
-
-    x: float
-    y: float
-
-    def __add__(self, other: tuple[float, float]) -> Place:
-        return Place(self.x + other[0], self.y + other[1])
-
-    def distance(self, other: Place) -> float:
-        return math.hypot(self.x - other.x, self.y - other.y)
-
-
-@dataclass(frozen=True)
-class Frame:
-    """The drawn frame of the plot [px] with the ranges that Plotly's public layout gives."""
-
-    left: float
-    top: float
-    width: float
-    height: float
-    x_range: list[float]
-    y_range: list[float]
-    logarithmic: bool
-
-    def place(self, x: float, y: float) -> Place:
-        up = math.log10(y) if self.logarithmic else y
-        across = (x - self.x_range[0]) / (self.x_range[1] - self.x_range[0])
-        share = (up - self.y_range[0]) / (self.y_range[1] - self.y_range[0])
-        return Place(self.left + across * self.width, self.top + (1 - share) * self.height)
 
 
 class Tab:
@@ -279,16 +183,27 @@ class Tab:
     def factor(self) -> float:
         return 1e3 if self.sweep.per_area else 1.0
 
-    def place_of_handle(self, parameter: str) -> Place:
-        """Where core puts the handle of the stored model."""
+    def places_of_handles(self) -> dict[str, Place]:
+        """Where core puts the handles of the stored model."""
         sweep = self.sweep
         hold = self.stored.fit(self.entry).settings.hold
         span = (float(sweep.voltage.min()), float(sweep.voltage.max()))
-        found = {h.parameter: h for h in handles(self.model, lit=sweep.lit, hold=hold, span=span)}
-        return self.pixel(found[parameter].x, found[parameter].y * self.factor())
+        frame, factor = self.frame(), self.factor()
+        found = handles(self.model, lit=sweep.lit, hold=hold, span=span)
+        return {handle.parameter: frame.place(handle.x, handle.y * factor) for handle in found}
 
     def grip_locator(self, parameter: str) -> Locator:
         return self.page.locator(f"#overlay .grip[data-parameter={parameter}]")
+
+    def grips_in_sight(self) -> dict[str, Place]:
+        """Where the grips are drawn, without those that wait at the edge of the plot."""
+        found = self.find("#overlay .grip:not(.beyond)").evaluate_all(
+            """(all) => all.map((grip) => {
+              const box = grip.querySelector(".reach").getBoundingClientRect();
+              return [grip.dataset.parameter, box.x + box.width / 2, box.y + box.height / 2];
+            })"""
+        )
+        return {parameter: Place(x, y) for parameter, x, y in found}
 
     def grip(self, parameter: str) -> Place:
         """Where the grip is drawn."""
@@ -357,9 +272,9 @@ class Tab:
             assert math.isclose(self.number(parameter), value, rel_tol=1e-4), parameter
             fraction = float(self.dial(parameter).locator("input[type=range]").input_value())
             assert abs(fraction - ranges[parameter].containing(value).fraction(value)) <= 0.00051, parameter
-        for grip in self.page.locator("#overlay .grip:not(.beyond)").all():
-            parameter = grip.get_attribute("data-parameter")
-            assert self.grip(parameter).distance(self.place_of_handle(parameter)) < 0.6, parameter
+        places = self.places_of_handles()
+        for parameter, place in self.grips_in_sight().items():
+            assert place.distance(places[parameter]) < 0.5, parameter
         assert self.page.locator("#overlay .line").count() == 0
 
     def _on_axis(self, model: OneDiode, sweep: Sweep, voltage: np.ndarray) -> np.ndarray:
@@ -368,7 +283,7 @@ class Tab:
         return current if sweep.lit else np.abs(current)
 
     def _assert_drawn_line(self, model: OneDiode, sweep: Sweep) -> None:
-        """The line on the screen, at ten places of its length, lies on the model's curve."""
+        """The line on the screen lies on the model's curve, all along its length."""
         points = self.page.evaluate(
             """() => {
               const path = document.querySelector("#plot .scatterlayer .tracemodel path.js-line");
@@ -386,13 +301,4 @@ class Tab:
         frame = self.frame()
         line = [frame.place(v, c) for v, c in zip(voltage[keep], current[keep], strict=True)]
         for x, y in points:
-            assert _distance_to_line(Place(x, y), line) < 1.0
-
-
-def _distance_to_line(place: Place, line: list[Place]) -> float:
-    here = np.array([place.x, place.y])
-    points = np.array([[p.x, p.y] for p in line])
-    start, along = points[:-1], np.diff(points, axis=0)
-    share = ((here - start) * along).sum(axis=1) / np.maximum((along**2).sum(axis=1), 1e-12)
-    nearest = start + np.clip(share, 0, 1)[:, None] * along
-    return float(np.hypot(*(here - nearest).T).min())
+            assert distance_to_line(Place(x, y), line) < 1.0

@@ -9,7 +9,8 @@ from playwright.sync_api import expect
 
 from core.diode import PARAMETERS, OneDiode
 from tests.browser.loading import FEW, LIT, LIT_MODEL, add_sample
-from tests.browser.tab import Place, Tab
+from tests.browser.places import Place
+from tests.browser.tab import Tab
 
 K26_MODEL = OneDiode(5.2e-3, 1.2e-13, 1.7, 16.0, 6000)  # A and Ω: no area in the file
 

@@ -7,7 +7,8 @@ import pytest
 
 from core.diode import PARAMETERS
 from tests.browser.loading import DARK, DARK_MODEL, LIT, LIT_MODEL, add_sample
-from tests.browser.tab import Place, Tab
+from tests.browser.places import Place
+from tests.browser.tab import Tab
 
 
 @pytest.fixture

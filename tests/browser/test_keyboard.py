@@ -3,8 +3,8 @@
 import pytest
 from playwright.sync_api import expect
 
-from core.diode import PARAMETERS
 from core.dials import dial_ranges
+from core.diode import PARAMETERS
 from tests.browser.loading import FEW, LIT, LIT_MODEL, add_sample
 from tests.browser.tab import Tab
 

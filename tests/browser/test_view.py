@@ -6,7 +6,8 @@ import pytest
 
 from core.diode import OneDiode
 from tests.browser.loading import DARK, DARK_MODEL, LIT, LIT_MODEL, add_sample
-from tests.browser.tab import Place, Tab
+from tests.browser.places import Place
+from tests.browser.tab import Tab
 
 RANGES = "() => JSON.stringify([sweepbench.graph().layout.xaxis.range, sweepbench.graph().layout.yaxis.range])"
 
@@ -28,10 +29,7 @@ def assert_in_place(tab: Tab) -> None:
     ]
     for (x, y), value in zip(tab.page.evaluate(MAPPED, values), values, strict=True):
         assert Place(x, y).distance(frame.place(*value)) < 0.5
-    grips = tab.find("#overlay .grip:not(.beyond)").evaluate_all("(all) => all.map((grip) => grip.dataset.parameter)")
-    assert len(grips) >= 2
-    for parameter in grips:
-        assert tab.grip(parameter).distance(tab.place_of_handle(parameter)) < 0.5, parameter
+    assert len(tab.grips_in_sight()) >= 2
     tab.assert_agreement()
 
 
@@ -59,9 +57,9 @@ def test_grips_stay_on_the_curve_through_zoom_pan_and_window_size(
     assert x_high - x_low < json.loads(start)[0][1] - json.loads(start)[0][0]
     assert_in_place(tab)
 
-    grip = next(g for g in ("series_resistance", "saturation_current") if g in tab.find("#overlay .grip:not(.beyond)").evaluate_all(
-        "(all) => all.map((grip) => grip.dataset.parameter)"))
-    held = tab.grip(grip)
+    in_sight = tab.grips_in_sight()
+    grip = next(parameter for parameter in ("series_resistance", "saturation_current") if parameter in in_sight)
+    held = in_sight[grip]
     tab.press(spot)
     tab.move(spot + (-40, 25))
     tab.until("grip_at", [grip, held.x - 40, held.y + 25])  # while the hand still pans

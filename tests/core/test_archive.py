@@ -170,6 +170,44 @@ def test_a_missing_original_or_reading_is_refused(store, packed):
         assert "damaged" in refusal(store, zipped(relisted(members)))
 
 
+def with_reading(members, change):
+    """The members with the first reading changed, its id and the manifest agreeing with that."""
+    path = next(path for path in sorted(members) if path.startswith("readings/"))
+    text = json.dumps({**json.loads(members[path]), **change}).encode()
+    old, new = path[len("readings/") : -len(".json")], hashlib.sha256(text).hexdigest()
+    changed = {name: content for name, content in members.items() if name != path} | {f"readings/{new}.json": text}
+    return relisted({**changed, "workspace.json": members["workspace.json"].replace(old.encode(), new.encode())})
+
+
+@pytest.mark.parametrize(
+    "change",
+    [
+        {"voltage": [0.1 * n for n in range(11)] + [1e200]},
+        {"current": [0.01] * 11 + [1e200]},
+        {"voltage": [0.1 * (n % 3) for n in range(12)]},
+        {"voltage": []},
+        {"conditions": {"temperature": 20.0}},
+        {"conditions": {"area": 1e-300}},
+    ],
+)
+def test_points_and_conditions_that_cannot_be_are_refused_even_if_every_hash_agrees(store, packed, change):
+    assert "damaged" in refusal(store, zipped(with_reading(members_of(packed), change)))
+
+
+@pytest.mark.parametrize(
+    ("kind", "change"),
+    [("devices", {"area": 1e-300}), ("entries", {"temperature": 0.01}), ("fits", {"settings": {"window": [0.1]}})],
+)
+def test_records_that_would_break_the_sweep_they_belong_to_are_refused(store, packed, kind, change):
+    members = members_of(packed)
+    body = json.loads(members["workspace.json"])
+    for record in body[kind].values():
+        for name, value in change.items():
+            record[name] = {**record[name], **value} if isinstance(value, dict) else value
+    members["workspace.json"] = json.dumps(body).encode()
+    assert "damaged" in refusal(store, zipped(relisted(members)))
+
+
 def test_text_that_json_must_not_hold_is_refused(store, packed):
     members = members_of(packed)
     for text in (b"[" * 200_000, b'{"schema": NaN}', b"\xff\xfe", b'{"schema": 1'):

@@ -17,7 +17,12 @@ from core.derived import pseudo_fill_factor, slope_resistance_at_voc
 from core.diode import OneDiode
 from core.drops import voltage_at_drop
 from core.estimates import estimates, plateau_reading
-from core.intensity import light_ideality, pseudo_curve, resistance_from_levels, resistance_from_pseudo_curve
+from core.intensity import (
+    light_ideality,
+    pseudo_curve,
+    resistance_from_levels,
+    resistance_from_pseudo_curve,
+)
 from core.sweep import Conditions, Sweep
 
 NO_SHUNT = OneDiode(0.035, 5e-12, 1.2, 1.5, math.inf)

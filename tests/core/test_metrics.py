@@ -11,7 +11,6 @@ from hypothesis.extra import numpy as arrays
 from core.diode import OneDiode
 from core.metrics import Metrics, Quantity, measure, noise_level
 from core.sweep import Conditions, Sweep
-
 from tests.core import published
 
 DEVICES = {

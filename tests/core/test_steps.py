@@ -11,12 +11,19 @@ from hypothesis import strategies as st
 
 from core import steps
 from core.diode import PARAMETERS
-from core.errors import ConditionRefused, SweepbenchError, StepRefused
-from core.refine import FitSettings
+from core.errors import ConditionRefused, StepRefused, SweepbenchError
 from core.records import plain
+from core.refine import FitSettings
 from core.sweep import Conditions
 from core.workspace import Workspace
-from tests.core.workspaces import MODEL, counted_ids, entry_named, invented_sweep, refinement, workspace_with
+from tests.core.workspaces import (
+    MODEL,
+    counted_ids,
+    entry_named,
+    invented_sweep,
+    refinement,
+    workspace_with,
+)
 
 DENSITY = Conditions(area=None, file_area=None)
 

@@ -10,7 +10,7 @@ from core.budget import Budget, budget_of
 from core.diode import OneDiode
 from core.metrics import measure
 from core.quantity import Metrics, Quantity
-from core.steps import apply, add_sweeps, set_group
+from core.steps import add_sweeps, apply, set_group
 from core.sweep import Conditions, Sweep
 from core.verdict import AREA, DIRECTION, LAMP, METRICS, NOISE, SCATTER, stands_out
 from core.workspace import Workspace

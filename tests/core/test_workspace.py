@@ -11,7 +11,13 @@ from core import steps
 from core.errors import StepRefused
 from core.sweep import Conditions
 from core.workspace import Device, Entry, Fit
-from tests.core.workspaces import MODEL, entry_named, invented_sweep, refinement, workspace_with
+from tests.core.workspaces import (
+    MODEL,
+    entry_named,
+    invented_sweep,
+    refinement,
+    workspace_with,
+)
 
 
 def test_nothing_of_a_workspace_can_be_changed_in_place():

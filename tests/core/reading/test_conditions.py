@@ -137,3 +137,8 @@ def test_what_is_said_of_other_things_is_no_condition(line):
 def test_prose_above_a_table_is_no_title():
     assert read("These cells were kept in the dark for a day and went down in efficiency").lit
     assert not read("Dark sweep").lit
+
+
+@pytest.mark.parametrize("line", ["Comment: voltage, current", "Series resistance: series resistance", "Scan: V, I"])
+def test_an_entry_that_speaks_of_columns_is_no_second_heading(line):
+    assert read(f"Operator: somebody\n{line}").voltage.size == VOLTAGE.size

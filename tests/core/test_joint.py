@@ -1,0 +1,178 @@
+"""Joint fits: what sweeps share is known better, and a disagreement is said."""
+
+import dataclasses
+import json
+import math
+
+import numpy as np
+import pytest
+
+from core.diode import OneDiode
+from core.errors import FitFailed
+from core.fit_settings import FitSettings
+from core.joint import refine_together, usually_shared
+from core.profile import profile_intervals
+from core.refine import Refinement, refine
+from core.sweep import Conditions, Sweep
+from core.two_diode import TwoDiode
+
+CELL = OneDiode(0.022, 1e-12, 1.6, 3.0, 2000.0)
+DIODE = ("saturation_current", "ideality", "series_resistance")
+
+
+def lit(device=CELL, level=1.0, noise=1e-3, seed=0, points=80, **conditions):
+    device = dataclasses.replace(device, photocurrent=device.photocurrent * level)
+    marks = device.landmarks()
+    voltage = np.linspace(-0.05, 1.06, points) * marks.voc
+    current = device.current(voltage) + noise * marks.jsc * np.random.default_rng(seed).standard_normal(points)
+    return Sweep(voltage, current, per_area=True, conditions=Conditions(area=1.0, irradiance=0.1 * level, **conditions))
+
+
+def dark(device=CELL, seed=9):
+    device = dataclasses.replace(device, photocurrent=0.0)
+    voltage, random = np.linspace(-0.3, 1.15, 120), np.random.default_rng(seed)
+    current = device.current(voltage) * (1 + 0.01 * random.standard_normal(120)) + 1e-9 * random.standard_normal(120)
+    return Sweep(voltage, current, per_area=True, conditions=Conditions(area=1.0, lit=False, irradiance=0.0))
+
+
+def test_dark_with_light_gives_one_diode_and_one_shunt():
+    sweeps = [lit(), dark()]
+    joint = refine_together(sweeps)
+    light, darkness = (fit.model for fit in joint.refinements)
+    assert joint.shared == dict.fromkeys(CELL.parameters, True) | {"photocurrent": False}
+    for name in (*DIODE, "shunt_resistance"):
+        assert getattr(light, name) == pytest.approx(getattr(darkness, name), rel=1e-12)
+        assert getattr(light, name) == pytest.approx(getattr(CELL, name), rel=0.2)
+    assert darkness.photocurrent == 0 and "photocurrent" not in joint.refinements[1].free
+    assert light.photocurrent == pytest.approx(0.022, rel=1e-3)
+    assert joint.findings == ("The sweeps agree on J0, n, Rs and Rsh within noise.",)
+    assert joint.refinements[0].findings[0] == "Refined together with one other sweep, sharing J0, n, Rs and Rsh."
+
+
+def test_the_dark_sweep_narrows_what_the_lit_one_leaves_open():
+    sweep = lit(noise=5e-3)
+    alone, joint = refine(sweep), refine_together([sweep, dark()]).refinements[0]
+    for name in DIODE:
+        assert joint.standard_errors[name] < 0.5 * alone.standard_errors[name]
+
+
+def test_an_intensity_series_shares_the_diode_and_rs_and_leaves_the_shunt_to_each():
+    shunts = {0.1: 5000.0, 0.3: 3000.0, 1.0: 2000.0}
+    sweeps = [
+        lit(dataclasses.replace(CELL, shunt_resistance=shunt), level, seed=index, noise=5e-4)
+        for index, (level, shunt) in enumerate(shunts.items())
+    ]
+    joint = refine_together(sweeps)
+    assert not joint.shared["shunt_resistance"]
+    models = [fit.model for fit in joint.refinements]
+    for name in DIODE:
+        assert len({getattr(model, name) for model in models}) == 1
+        assert getattr(models[0], name) == pytest.approx(getattr(CELL, name), rel=0.15)
+    for model, (level, shunt) in zip(models, shunts.items(), strict=True):
+        assert model.photocurrent == pytest.approx(0.022 * level, rel=2e-3)
+        assert model.shunt_resistance == pytest.approx(shunt, rel=0.1)
+    assert "agree on J0, n and Rs within noise" in joint.findings[0]
+
+
+def test_sharing_what_differs_is_said_and_the_culprit_named():
+    sweeps = [lit(dataclasses.replace(CELL, shunt_resistance=shunt), level) for shunt, level in ((5000.0, 0.3), (900.0, 1.0))]
+    joint = refine_together(sweeps, shared={"shunt_resistance": True})
+    assert joint.refinements[0].model.shunt_resistance == joint.refinements[1].model.shunt_resistance
+    assert "do not agree" in joint.findings[0] and "Rsh disagrees most" in joint.findings[0]
+    assert "agree on" in refine_together(sweeps).findings[0]
+
+
+def test_switches_take_each_parameter_apart():
+    sweeps = [lit(seed=1), lit(level=0.5, seed=2)]
+    joint = refine_together(sweeps, shared=dict.fromkeys(CELL.parameters, False))
+    for fit, sweep in zip(joint.refinements, sweeps, strict=True):
+        alone = refine(sweep)
+        assert fit.rmse == pytest.approx(alone.rmse, rel=1e-8)
+    for name in ("saturation_current", "ideality"):  # one of the two that fits move as one
+        joint = refine_together(sweeps, shared={name: False})
+        first, second = (fit.model for fit in joint.refinements)
+        assert getattr(first, name) != getattr(second, name)
+        other = "ideality" if name == "saturation_current" else "saturation_current"
+        assert getattr(first, other) == pytest.approx(getattr(second, other), rel=1e-12)
+    twins = [lit(seed=1), lit(seed=2)]
+    both = refine_together(twins, shared={"photocurrent": True, "shunt_resistance": True})
+    assert both.refinements[0].model == both.refinements[1].model
+
+
+def test_errors_of_repeats_shrink_with_their_number():
+    sweeps = [lit(seed=seed) for seed in range(4)]
+    joint = refine_together(sweeps, shared={"photocurrent": True, "shunt_resistance": True}).refinements[0]
+    alone = refine(sweeps[0])
+    for name in CELL.parameters:
+        assert joint.standard_errors[name] == pytest.approx(0.5 * alone.standard_errors[name], rel=0.3)
+
+
+def test_intervals_hold_the_truth_as_often_as_they_say():
+    inside, count = np.zeros(3), 40
+    for seed in range(count):
+        fit = refine_together([lit(seed=seed, points=40), lit(level=0.3, seed=1000 + seed, points=40)]).refinements[0]
+        inside += [fit.intervals[name][0] <= getattr(CELL, name) <= fit.intervals[name][1] for name in DIODE]
+    assert np.all(inside >= 33)  # 38 ± 1.4 expected
+
+
+def test_holds_and_starts_are_kept():
+    hold = frozenset({"ideality"})
+    joint = refine_together([lit(), dark()], [CELL, None], FitSettings(hold=hold))
+    assert all(fit.model.ideality == CELL.ideality and "ideality" not in fit.free for fit in joint.refinements)
+
+
+def test_two_diodes_are_refined_together():
+    cell = TwoDiode(0.035, 3e-13, 4e-9, 0.8, 2500.0)
+    sweeps = [lit(cell, seed=1), lit(cell, 0.2, seed=2)]
+    joint = refine_together(sweeps, settings=FitSettings(model="two diodes"))
+    first, second = (fit.model for fit in joint.refinements)
+    for name in ("saturation_current_1", "saturation_current_2", "series_resistance"):
+        assert getattr(first, name) == getattr(second, name) == pytest.approx(getattr(cell, name), rel=0.2)
+    assert first.ideality_2 == 2.0
+
+
+@pytest.mark.parametrize(
+    ("sweeps", "shared", "words"),
+    [
+        ([lit()], None, "at least two"),
+        ([lit(), lit(temperature=320.0)], None, "cannot share J0"),
+        ([lit(), lit(series_cells=3)], None, "cells in series"),
+        ([lit(), dataclasses.replace(lit(), per_area=False)], None, "per area"),
+        ([lit(), lit()], {"colour": True}, "no parameter"),
+    ],
+)
+def test_sweeps_that_cannot_share_are_refused_with_a_sentence(sweeps, shared, words):
+    with pytest.raises(FitFailed, match=words):
+        refine_together(sweeps, shared=shared)
+
+
+def test_settings_must_be_of_one_model_but_points_may_differ():
+    sweeps = [lit(), lit(level=0.5)]
+    with pytest.raises(FitFailed, match="same model"):
+        refine_together(sweeps, settings=[FitSettings(), FitSettings(model="two diodes")])
+    joint = refine_together(sweeps, settings=[FitSettings(excluded=(1, 2)), FitSettings()])
+    assert [fit.points for fit in joint.refinements] == [78, 80]
+
+
+def test_a_sweep_that_cannot_stand_alone_is_carried_by_the_others():
+    few = dataclasses.replace(lit(level=0.5), voltage=lit(level=0.5).voltage[[2, 40, 70]], current=lit(level=0.5).current[[2, 40, 70]])
+    joint = refine_together([lit(), few])
+    assert joint.refinements[1].points == 3
+    assert joint.refinements[1].model.ideality == joint.refinements[0].model.ideality
+    assert joint.refinements[1].model.photocurrent == pytest.approx(0.011, rel=0.02)
+    assert "not weighed" in joint.findings[0]
+
+
+def test_a_joint_refinement_says_so_and_has_no_profile_of_its_own():
+    fit = refine_together([lit(), dark()]).refinements[0]
+    again = Refinement.from_dict(json.loads(json.dumps(fit.to_dict(), allow_nan=False)))
+    assert fit.others == again.others == 1 and refine(lit()).others == 0
+    with pytest.raises(FitFailed, match="refined together"):
+        profile_intervals(lit(), again)
+
+
+def test_what_is_usually_shared():
+    assert usually_shared([lit(), dark()])["shunt_resistance"]
+    assert not usually_shared([lit(), lit(), dark()])["shunt_resistance"]
+    two = usually_shared([lit(), lit()], "two diodes")
+    assert two["saturation_current_2"] and not two["photocurrent"] and math.isclose(sum(two.values()), 5)
