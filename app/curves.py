@@ -15,7 +15,6 @@ import numpy as np
 
 from core.diode import Landmarks, OneDiode
 from core.local_ideality import local_ideality, model_local_ideality
-from core.metrics import noise_level
 from core.sweep import Sweep
 from core.weighting import point_noise
 
@@ -31,7 +30,6 @@ STRIP_POINTS = 300  # more would not be seen, and the answer to a moving hand st
 
 
 # A sweep never changes, so its noise is judged once and a moving hand need not wait for it.
-noise_of = lru_cache(maxsize=4096)(noise_level)
 
 
 @lru_cache(maxsize=64)

@@ -10,9 +10,9 @@ from typing import Any
 from core.derived import derive
 from core.errors import FitFailed, SweepbenchError
 from core.estimates import Estimate, estimates, plateau_reading, shunt_confirmed
+from core.fit_problem import used
 from core.model_choice import compare_models
 from core.models import Model
-from core.point_choice import used
 from core.profile import Interval, profile_intervals
 from core.refinement import Refinement
 from core.sweep import Sweep
@@ -66,16 +66,16 @@ def interval_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     refined, sweep = workspace.refined(entry), workspace.sweep(entry)
     if refined is None:
         return {"rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": ""}
+    level = workspace.fit(entry).settings.confidence  # the one that stands now needs no new fit
     try:
-        found = _profiles(sweep, refined)
+        found = _profiles(sweep, refined, level)
     except FitFailed as failure:
         return {"rows": [], "sentence": str(failure), "choice": ""}
     units = Units.of(sweep.per_area)
     rows = [
         {"name": BY_PARAMETER[name].title, "words": interval_words(interval, units, name)} for name, interval in found.items()
     ]
-    level = f"{100 * refined.settings.confidence:.4g} %"
-    return {"rows": rows, "sentence": f"{level} intervals by profile likelihood, fit noise only.", "choice": _choice(sweep, refined)}
+    return {"rows": rows, "sentence": f"{100 * level:.4g} % intervals by profile likelihood, fit noise only.", "choice": _choice(sweep, refined)}
 
 
 def _choice(sweep: Sweep, refined: Refinement) -> str:

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 from plotly.graph_objects import Figure
 
-from core.point_choice import used
+from core.fit_problem import used
 from core.store import History
 from core.sweep import Sweep
 from core.workspace import Entry, Workspace

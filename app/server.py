@@ -17,6 +17,7 @@ from .door import Door
 from .ids import Id
 from .jobs import Jobs
 from .layout.page import page
+from .layout.still import still
 from .mechanisms import style_sheet
 from .places import ASSETS
 
@@ -43,7 +44,7 @@ def create_app(store: Store, door: Door, jobs: Jobs) -> Dash:
 
     def layout():
         workspace = first_readable(store)
-        return page(workspace.id, workspace.revision, token_cookie=door.csrf_cookie)
+        return still(page(workspace.id, workspace.revision, token_cookie=door.csrf_cookie))
 
     app.layout = layout
     for activity in callbacks.ACTIVITIES:

@@ -16,12 +16,22 @@
 
   window.Plotly?.setPlotConfig?.({ showSendToCloud: false, displaylogo: false, plotlyServerURL: "" });
 
+  /** A reloaded tab goes back to the workspace that it was on; what it remembers and what the server chose come in any order. */
+  let wentBack = false;
+  function goBack() {
+    if (wentBack || !bench.view.workspace || !seen.workspace) return;
+    wentBack = true;
+    if (bench.view.workspace === seen.workspace) return;
+    bench.setProps("errand", { data: { kind: "open", workspace: bench.view.workspace, at: Date.now() } });
+  }
+
   window.dash_clientside = window.dash_clientside ?? {};
   window.dash_clientside.sweepbench = {
     revision(data) {
       if (!data) return;
       if (data.workspace !== seen.workspace || data.revision !== seen.revision) bench.live.drop();
       seen = { workspace: data.workspace, revision: data.revision };
+      goBack();
       if (bench.view.workspace !== seen.workspace && data.revision !== null && arrived) bench.changeView({ workspace: seen.workspace });
       arrived = true;
       if (data.event) bench.acknowledge(data.event);
@@ -32,10 +42,7 @@
       const first = !document.body.dataset.screen;
       bench.view = data ?? {};
       if (first) showScreen(location.pathname, false);
-      // A reloaded tab goes back to the workspace that it was on.
-      if (first && bench.view.workspace && seen.workspace && bench.view.workspace !== seen.workspace) {
-        bench.setProps("errand", { data: { kind: "open", workspace: bench.view.workspace, at: Date.now() } });
-      }
+      goBack();
     },
     scene: (data) => bench.receiveScene(data),
     tray: (data) => bench.receiveTray(data),

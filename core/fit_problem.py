@@ -154,12 +154,18 @@ class Problem:
         return effective_weights(self.sweep, model, self.settings.voltage_noise, self.settings.current_noise)
 
 
+def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
+    """Mask of the points that the settings leave for the fit, shape (n,)."""
+    mask = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
+    mask[[index for index in settings.excluded if 0 <= index < mask.size]] = False
+    if settings.window is not None:
+        mask &= (sweep.voltage >= settings.window[0]) & (sweep.voltage <= settings.window[1])
+    return mask
+
+
 def points_used(sweep: Sweep, settings: FitSettings) -> Sweep:
     """The sweep with only the points that the settings leave for the fit."""
-    keep = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
-    keep[[index for index in settings.excluded if 0 <= index < keep.size]] = False
-    if settings.window is not None:
-        keep &= (sweep.voltage >= settings.window[0]) & (sweep.voltage <= settings.window[1])
+    keep = used(sweep, settings)
     if np.all(keep):
         return sweep
     return replace(sweep, voltage=sweep.voltage[keep], current=sweep.current[keep])

@@ -1,4 +1,4 @@
-"""Which points a fit uses, and steps that leave points out or take them back."""
+"""Steps that leave points out of a fit or take them back."""
 
 from __future__ import annotations
 
@@ -7,19 +7,8 @@ from dataclasses import replace
 import numpy as np
 
 from .applying import Step
-from .fit_settings import FitSettings
 from .fit_steps import set_fit_settings
-from .sweep import Sweep
 from .workspace import Workspace
-
-
-def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
-    """Mask of the points that the settings leave for the fit, shape (n,)."""
-    mask = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
-    mask[[index for index in settings.excluded if 0 <= index < mask.size]] = False
-    if settings.window is not None:
-        mask &= (sweep.voltage >= settings.window[0]) & (sweep.voltage <= settings.window[1])
-    return mask
 
 
 def leave_out_box(

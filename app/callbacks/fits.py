@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from typing import Any
 
 from dash import Dash, Input, Output, State, ctx
@@ -11,12 +10,11 @@ from app.ids import Id
 from app.jobs import Jobs
 from app.scene import active_entry
 from core import steps
-from core.diode import PARAMETERS
 from core.errors import StepRefused
 from core.first_guess import first_guess
-from core.models import Model, two_diodes_like
 from core.refine import refine
 from core.store import Store
+from core.two_diode_guess import guess_two_diodes
 from core.workspace import Workspace
 
 from .answer import answered
@@ -49,10 +47,8 @@ def guess_step(workspace: Workspace, entry: str) -> dict[str, Any]:
     """Parameters read off the sweep; held ones keep their value."""
     fit = workspace.fit(entry)
     held = {name: getattr(fit.model, name) for name in fit.settings.hold} if fit.model else {}
-    guess: Model = first_guess(workspace.sweep(entry), {name: held[name] for name in held if name in PARAMETERS})
-    if fit.settings.model == "two diodes":
-        guess = replace(two_diodes_like(guess), **held)
-    return steps.set_model(workspace, entry, guess, label="first guess")
+    guess = guess_two_diodes if fit.settings.model == "two diodes" else first_guess
+    return steps.set_model(workspace, entry, guess(workspace.sweep(entry), held), label="first guess")
 
 
 def refine_step(workspace: Workspace, entry: str) -> dict[str, Any]:

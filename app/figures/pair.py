@@ -129,7 +129,6 @@ def shares_figure(
         y=names, x=values, orientation="h", uid="shares", width=0.62, hoverinfo="skip",
         marker={"color": colours, "pattern": {"shape": hatches, "fgcolor": "rgba(255,255,255,0.75)", "size": 6, "solidity": 0.25},
                 "line": {"width": 0}},
-        error_x=_errors(values, intervals or {}),
     )
     # Words stand beyond the whisker, so that neither hides the other.
     known = [(intervals or {}).get(m.parameter) for m in MECHANISMS]
@@ -139,7 +138,7 @@ def shares_figure(
         textposition=["middle left" if v < 0 else "middle right" for v in values], textfont={"size": 18 if large else 13}, cliponaxis=False,
     )
     reach = 1.35 * max(abs(v) for v in (*values, *tips)) or 1.0
-    return go.Figure([bars, words]).update_layout(
+    return go.Figure([bars, _whiskers(names, values, known), words]).update_layout(
         quiet_layout(
             "shares",
             xaxis=quiet_axis("mW cm⁻²", range=[-reach, reach], zeroline=True, zerolinecolor=FAINT, zerolinewidth=1, fixedrange=True),
@@ -157,10 +156,12 @@ def _tip(value: float, interval: tuple[float, float] | None) -> float:
     return min(value, low) if value < 0 else max(value, high)
 
 
-def _errors(values: list[float], intervals: Mapping[str, tuple[float, float]]) -> dict:
-    known = [intervals.get(m.parameter) for m in MECHANISMS]
-    known += [None] * (len(values) - len(known))
-    # A bar without an interval has no whisker, not one of no length.
-    up = [max(i[1] - v, 0.0) if i else None for i, v in zip(known, values, strict=True)]
-    down = [max(v - i[0], 0.0) if i else None for i, v in zip(known, values, strict=True)]
-    return {"type": "data", "array": up, "arrayminus": down, "color": INK, "thickness": 1.2, "width": 3, "visible": bool(intervals)}
+def _whiskers(names: list[str], values: list[float], known: list[tuple[float, float] | None]) -> go.Scatter:
+    """Intervals as lines across the ends of bars; a bar without one has none, not one of no length."""
+    shown = [(n, v, *i) for n, v, i in zip(names, values, known, strict=False) if i is not None]
+    return go.Scatter(
+        y=[n for n, *_ in shown], x=[v for _, v, *_ in shown], mode="markers", uid="whiskers", hoverinfo="skip",
+        marker={"size": 1, "color": "rgba(255,255,255,0)"},
+        error_x={"type": "data", "array": [max(high - v, 0.0) for _, v, _, high in shown],
+                 "arrayminus": [max(v - low, 0.0) for _, v, low, _ in shown], "color": INK, "thickness": 1.2, "width": 3},
+    )

@@ -60,7 +60,7 @@ def losses() -> list:
                 html.Table(
                     className="metrics losses-numbers",
                     children=[
-                        html.Thead(html.Tr([html.Th("lost to"), html.Th("mW cm⁻²"), html.Th("of the limit")])),
+                        html.Thead(html.Tr([html.Th("lost to"), html.Th("mW cm⁻²"), html.Th("of limit")])),
                         html.Tbody(id="losses-table"),
                     ],
                 ),

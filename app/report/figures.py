@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from app.curves import noise_of, squeezed, thinned, voltage_grid
+from app.curves import chosen_points, noise_of_points, squeezed, thinned, voltage_grid
 from app.figures.bench import plot_ranges
 from app.figures.style import FAINT, HAIR, INK, SOFT
 from app.mechanisms import MECHANISMS
@@ -119,7 +119,7 @@ def _residuals(drawing: Drawing, shown: Sequence[Shown], x: Scale, y: Scale) -> 
     for place, one in enumerate(shown):
         if one.model is not None:
             voltage, current = thinned(one.sweep, MARKS)
-            residual = (current - one.model.current(voltage)) / noise_of(one.sweep)
+            residual = (current - one.model.current(voltage)) / noise_of_points(one.sweep)[chosen_points(one.sweep, MARKS)]
             drawing.marks(x(voltage), y(squeezed(residual)), radius=1.4, **_marks(place))
     drawing.unclip()
     ticks = [(float(squeezed(np.array(v))), words) for v, words in ((-100, "−100"), (-10, "−10"), (0, "0"), (10, "10"), (100, "100"))]

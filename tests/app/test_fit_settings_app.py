@@ -11,8 +11,8 @@ from app.hand import step_for
 from app.layout.panels import SETTINGS
 from core import steps
 from core.errors import SweepbenchError
+from core.fit_problem import used
 from core.fit_settings import FitSettings
-from core.point_choice import used
 from core.two_diode import TwoDiode
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, bench
 

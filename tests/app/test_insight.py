@@ -94,10 +94,11 @@ def test_intervals_hold_the_fitted_value_and_are_core_s(refined):
     assert low < workspace.refined(entry).model.ideality < high
 
 
-def test_a_higher_level_gives_wider_intervals():
+def test_a_higher_level_gives_wider_intervals_without_a_new_fit(refined):
     widths = []
+    workspace, entry = refined
     for level in (0.68, 0.95, 0.99):
-        workspace, entry = settled(LIT, FitSettings(confidence=level))
+        workspace = steps.apply(workspace, steps.set_fit_settings(workspace, entry, FitSettings(confidence=level)))
         rows = insight.interval_rows(workspace, entry)
         assert rows["sentence"].startswith(f"{100 * level:.0f} %")
         low, high = (float(word) for word in rows["rows"][2]["words"].split(" to "))

@@ -17,6 +17,7 @@ from app.ids import Id
 from app.jobs import Jobs
 from app.layout.bench import STRIP_LABELS
 from app.layout.dials import CONDITION_LABELS, METRIC_LABELS
+from app.layout.page import page as whole_page
 from app.places import ASSETS
 from app.readout import METRIC_ROWS, condition_rows
 from app.server import create_app
@@ -37,7 +38,7 @@ def app(tmp_path_factory):
 
 @pytest.fixture(scope="module")
 def page(app):
-    return app.layout()
+    return whole_page("workspace", 0, token_cookie=DOOR.csrf_cookie)
 
 
 def components(page):

@@ -12,7 +12,7 @@ from dash import dcc, html
 from app.serving import serve
 from tests.browser.conftest import SIZE
 
-LOADS = 15
+LOADS = 12
 # A graph is there when Plotly has drawn it; our page moreover when its own scripts have painted what the server told.
 CLOCK = """
   const ready = () => document.querySelector(".js-plotly-plot .main-svg .plotly, .js-plotly-plot .main-svg .cartesianlayer")
@@ -24,7 +24,7 @@ CLOCK = """
 
 def empty_page(store, door, jobs):
     """The least that Dash and Plotly cost."""
-    app = dash.Dash("empty", enable_mcp=False, add_log_handler=False, csrf_token_name=door.csrf_cookie)
+    app = dash.Dash("empty", assets_folder="none", enable_mcp=False, add_log_handler=False, csrf_token_name=door.csrf_cookie)
     app.layout = html.Div(dcc.Graph(figure={"data": [{"x": [], "y": []}]}))
     return app
 

@@ -160,7 +160,7 @@ class Tab:
         return self.page.locator("#arrivals p").evaluate_all("(all) => all.map((p) => p.firstChild.textContent)")
 
     def rows(self) -> list[str]:
-        return self.page.locator("#tray-list .sweep .sweep-name").all_inner_texts()
+        return self.page.locator("#tray-list .sweep .sweep-name").all_text_contents()
 
     # Pixels, without the page's own mapping: the drawn frame and the public ranges
 

@@ -58,7 +58,7 @@ def test_the_first_visit_invites_and_one_click_opens_the_samples(tab):
     assert tab.sentences() == []
     entries = tab.stored.in_tray_order()
     assert len(entries) > 55
-    devices = tab.find("#tray-list .device-name").all_inner_texts()
+    devices = tab.find("#tray-list .device-name").all_text_contents()
     assert {"K07", "K11", "K15", "S02", "K21", "K26", "K33", "R01-1", "R08-6"} <= set(devices)
 
     sparks = tab.find("#tray-list .spark path").evaluate_all("(all) => all.map((path) => path.getTotalLength())")

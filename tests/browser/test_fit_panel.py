@@ -5,8 +5,8 @@ import pytest
 from playwright.sync_api import expect
 
 from core.diode import PARAMETERS
+from core.fit_problem import used
 from core.fit_settings import FitSettings
-from core.point_choice import used
 from core.two_diode import TWO_DIODE_PARAMETERS, TwoDiode
 from tests.browser.loading import LIT
 from tests.browser.screens import assert_nothing_hangs_over, load, until
@@ -84,7 +84,6 @@ def test_a_drawn_box_leaves_points_out_and_takes_them_back(fitted):
 
 
 def test_window_weights_and_loss_are_kept_and_used_by_the_next_fit(fitted):
-    expect(fitted.find("[data-setting=voltage_noise]")).to_be_hidden()
     for name, value in (("weights", "effective"), ("loss", "robust")):
         with fitted.one_change():
             setting(fitted, name).select_option(value)

@@ -87,6 +87,7 @@ def test_the_order_of_the_ladder_changes_by_buttons_and_by_dragging_a_row(three)
     steps.click()
     expect(tab.find("#losses-table .order")).to_have_count(10)
     assert rows(tab)[:5] == list(PARAMETERS)
+    assert_nothing_hangs_over(tab, ".view[data-view=losses] .side")
     model = tab.stored.fit(entry).model
 
     tab.find("#losses-table tr[data-loss=ideality]").get_by_role("button", name="earlier").press("Enter")

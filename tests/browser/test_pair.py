@@ -96,7 +96,7 @@ def test_the_two_are_chosen_by_list_and_by_tray_and_exchanged_by_key(three):
     assert tab.stored.revision == revision, "to look is no change of the work"
 
 
-def test_what_if_follows_the_hand_by_mouse_and_by_keys(three):
+def test_what_if_follows_the_hand_by_mouse_and_by_keys_on_both_axes(three):
     tab, (a, b, _) = three
     model_a, model_b = (tab.stored.fit(entry).model for entry in (a, b))
     slider = WHAT_IF.format("series_resistance")
@@ -127,9 +127,7 @@ def test_what_if_follows_the_hand_by_mouse_and_by_keys(three):
     until(tab, "document.querySelector('#pair-plot .js-plotly-plot')._fullData.find((one) => one.uid === 'what-if').x.length === 0")
     assert power_told(tab) == pytest.approx(1e3 * model_a.landmarks().pmp, abs=0.006)
 
-
-def test_normalised_curves_meet_at_one_and_what_if_goes_along(three):
-    tab, (a, b, _) = three
+    # The same on the axes J/Jsc over V/Voc.
     normalised = tab.find("[data-pair-scale=normalised]")
     normalised.click()
     expect(normalised).to_have_attribute("aria-checked", "true")
@@ -141,7 +139,7 @@ def test_normalised_curves_meet_at_one_and_what_if_goes_along(three):
     until(tab, "document.querySelector('#pair-plot .js-plotly-plot')._fullData.find((one) => one.uid === 'what-if').x.length > 100")
     marks = measure(tab.stored.sweep(a))
     x, y = (np.array(values) for values in trace(tab, "pair-plot", "what-if"))
-    moved = what_if(*(tab.stored.fit(entry).model for entry in (a, b)), ["photocurrent"])
+    moved = what_if(model_a, model_b, ["photocurrent"])
     np.testing.assert_allclose(y * marks.jsc.value, moved.current(x * marks.voc.value), atol=5e-6)
 
 
@@ -165,7 +163,7 @@ def test_what_is_known_of_area_and_lamp_weighs_and_nonsense_is_told(three):
     expect(tab.find("[data-compared=pmp] [data-column=verdict]")).to_have_text("stands out")
 
 
-def test_pictures_are_named_after_the_two_and_show_them(three, tmp_path):
+def test_pictures_are_named_after_the_two_and_the_report_holds_both(three, tmp_path):
     tab, _ = three
     svg = saved(tab, "[data-save=svg][data-graph=pair-plot]", tmp_path)
     assert svg.name == "K07-reverse-and-K11-reverse.svg"
@@ -177,10 +175,6 @@ def test_pictures_are_named_after_the_two_and_show_them(three, tmp_path):
     assert "together" in drawn and "voltage (recombination)" in drawn
     png = saved(tab, "[data-save=png][data-graph=pair-plot]", tmp_path)
     assert png.name.endswith(".png") and png_size(png) == (3000, 2160)
-
-
-def test_the_report_of_the_pair_holds_both(three, tmp_path):
-    tab, _ = three
     report = saved(tab, ".pair-room [data-act=save-report]", tmp_path).read_text(encoding="utf-8")
     assert "Why the difference" in report and "K11" in report
 

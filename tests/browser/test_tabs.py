@@ -55,7 +55,8 @@ def test_a_second_tab_follows_and_a_stale_change_is_refused_with_a_sentence(firs
 
     # From here on the second tab does not hear of changes by itself.
     seen = second.stored.revision
-    second.page.route("**/live/*", lambda route: route.fulfill(json={"revision": seen}))
+    second.forgiven.append("404")
+    second.page.route("**/live/*", lambda route: route.fulfill(status=404, json={"sentence": "Not now."}))
     with first.one_change():
         first.find("[data-parameter=ideality] .hold").click()
     field = second.dial("series_resistance").locator("input[type=text]")

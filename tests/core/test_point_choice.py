@@ -6,8 +6,9 @@ import numpy as np
 import pytest
 
 from core import steps
+from core.fit_problem import used
 from core.fit_settings import FitSettings
-from core.point_choice import leave_out_box, use_all, used
+from core.point_choice import leave_out_box, use_all
 from core.sweep import Conditions
 from tests.core.workspaces import (
     MODEL,
