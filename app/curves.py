@@ -30,13 +30,13 @@ STRIP_POINTS = 300  # more would not be seen, and the answer to a moving hand st
 
 
 # A sweep never changes, so its noise is judged once and a moving hand need not wait for it.
+noise_of_points = lru_cache(maxsize=4096)(point_noise)
 
 
 @lru_cache(maxsize=64)
 def landmarks_of(model: OneDiode) -> Landmarks:
     """Landmarks of a model: lines, grips and numbers of one answer all ask for the same."""
     return model.landmarks()
-noise_of_points = lru_cache(maxsize=4096)(point_noise)
 
 
 @dataclass(frozen=True)

@@ -10,13 +10,14 @@ from app.curves import (
     STRIPS,
     Curve,
     model_curves,
-    noise_of,
+    noise_of_points,
     squeezed,
     strip_points,
     thinned,
 )
 from app.units import Units
 from core.noise import noise_level
+from core.weighting import point_noise
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, sweep_of
 
 DARK_CELL = replace(CELL, photocurrent=0.0)
@@ -73,10 +74,10 @@ def test_residuals_are_in_units_of_the_noise():
 
 
 def test_the_noise_of_a_sweep_is_judged_once():
-    assert noise_of(LIT) == noise_level(LIT)
-    before = noise_of.cache_info().misses
+    assert (noise_of_points(LIT) == point_noise(LIT)).all()
+    before = noise_of_points.cache_info().misses
     model_curves(LIT, CELL, "residuals")
-    assert noise_of.cache_info().misses == before
+    assert noise_of_points.cache_info().misses == before
 
 
 def test_the_residuals_scale_is_even_near_zero_and_bends_beyond():

@@ -34,7 +34,7 @@ _CONDITIONS = """
   },
   strip: (strip) => sweepbench.scene.strip === strip,
   rows: (count) => document.querySelectorAll("#tray-list .sweep").length === count
-      && !document.querySelector("#arrivals .busy"),
+      && !document.querySelector("#arrivals .busy, #tray-list .spark path:not([d])"),
   screen: (name) => (sweepbench.view.screen ?? "bench") === name && document.body.dataset.screen === name
       && [...document.querySelectorAll(`.view[data-view=${name}] .dash-graph`)].every((one) => one.querySelector(".js-plotly-plot")?._fullLayout),
   saved_line: (words) => document.querySelector("#saved-line").textContent.startsWith(words),

@@ -105,7 +105,7 @@ def test_names_from_files_show_as_they_are_and_run_nothing(tab: Tab, files: Path
     tab.drop(files / f"{wicked}.csv", other)
     tab.until("rows", 2)
     tab.settle()
-    assert wicked in tab.find("#tray-list .device-name").all_inner_texts()
+    assert wicked in tab.find("#tray-list .device-name").all_text_contents()
     for entry in tab.stored.in_tray_order():
         tab.choose(entry.id)
     assert tab.find("#tray-list b, #tray-list img, #bench-title b, #plot img").count() == 0
