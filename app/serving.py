@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 
 import waitress
 from waitress import wasyncore
+from waitress.channel import HTTPChannel
 
 from core.errors import SweepbenchError
 from core.store import Store
@@ -231,4 +232,7 @@ class _Server:
             wasyncore.loop(timeout=0.2, use_poll=True, map=self._map, count=1)
         self._server.task_dispatcher.shutdown()  # waits for what is being answered
         wasyncore.loop(timeout=0, use_poll=True, map=self._map, count=10)  # and sends it
+        for channel in list(self._map.values()):
+            if isinstance(channel, HTTPChannel):
+                channel.handle_close()  # lets go of a long answer's file too, which close_all would leave open
         wasyncore.close_all(self._map)

@@ -16,6 +16,7 @@ from .units import parse_label, parse_unit, plain
 
 # Lines looked at to find the delimiter; longer ones are cut.
 _SAMPLE_LINES = 400
+_DIALECT_LINES = 150  # each is cut and read in up to ten ways
 _SAMPLE_WIDTH = 20_000
 # Characters of a line that is looked at as a whole; 1000 columns of 40 characters.
 _LONG_LINE = 40 * MAX_COLUMNS
@@ -213,8 +214,8 @@ def _refuse_commas_for_both(lines: list[str], dialect: Dialect) -> None:
 def _dialect(lines: list[str]) -> Dialect:
     """The delimiter and decimal mark that make most rows of numbers."""
     # The beginning, the end and some in between: a short table under a long header must not be missed.
-    step = max(1, len(lines) // _SAMPLE_LINES)
-    sample = lines if step == 1 else [*lines[:_SAMPLE_LINES], *lines[::step], *lines[-_SAMPLE_LINES // 10 :]]
+    step = max(1, len(lines) // _DIALECT_LINES)
+    sample = lines if step == 1 else [*lines[:_DIALECT_LINES], *lines[::step], *lines[-_DIALECT_LINES // 5 :]]
     sample = [line[:_SAMPLE_WIDTH] for line in sample if line and not line.isspace()]
     sample = [line for line in sample if not _COMMENT.match(line) and not is_entry(line)]
     quoted = any('"' in line for line in sample)
@@ -228,7 +229,12 @@ def _dialect(lines: list[str]) -> Dialect:
         for line in sample:
             if delimiter is not None and delimiter not in line:
                 continue
+            if _all_numbers(line, dialect) >= 2:  # nearly every row of the right dialect, and much quicker
+                score += 1.0
+                continue
             cells = dialect.cells(line)
+            if len(cells) < 2:
+                continue
             numbers = sum(dialect.number(c) is not None for c in cells[:MAX_COLUMNS])
             others = sum(1 for c in cells[:MAX_COLUMNS] if c) - numbers
             if numbers >= 2:
@@ -236,3 +242,13 @@ def _dialect(lines: list[str]) -> Dialect:
         if score > 0 and (score, -rank) > best_score:
             best, best_score = dialect, (score, -rank)
     return best
+
+
+def _all_numbers(line: str, dialect: Dialect) -> int:
+    """How many cells a line has if all are plain numbers, else 0."""
+    if "_" in line or "n" in line or "N" in line:  # 1_000, nan, inf: numbers to Python alone
+        return 0
+    try:
+        return len(list(map(float, (line.replace(",", ".") if dialect.decimal == "," else line).split(dialect.delimiter))))
+    except ValueError:
+        return 0

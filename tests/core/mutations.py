@@ -251,7 +251,7 @@ def _spoil(tree: dict | list, chance: random.Random) -> None:
                 del tree[key]
             case 1 if isinstance(tree, dict):
                 tree[chance.choice(("more", "id", "", "voltage"))] = chance.choice(STRANGE)
-            case 2 if isinstance(below, int | float) and not isinstance(below, bool):
+            case 2 if isinstance(below, int | float) and not isinstance(below, bool) and abs(below) < 1e300:
                 tree[key] = below * chance.choice((-1, 1e6, 1e-6, 1e200))
             case _:
                 tree[key] = chance.choice(STRANGE)
