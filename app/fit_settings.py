@@ -37,6 +37,9 @@ def change_setting(workspace: Workspace, event: Event) -> Step:
         changed = replace(settings, window=_window(workspace, entry, settings, name, text))
     elif name == "confidence":
         changed = replace(settings, confidence=_level(text))
+    elif name == "current_noise":
+        factor = Units.of(workspace.sweep(entry).per_area).current_factor
+        changed = replace(settings, current_noise=parse_number(text, "Noise of the current") / factor if text else None)
     elif name == "voltage_noise":
         changed = replace(settings, voltage_noise=parse_number(text, "Noise of the voltage") / 1e3 if text else None)
     else:

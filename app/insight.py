@@ -31,6 +31,7 @@ def settings_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     """The fit settings as the panel shows them."""
     settings, sweep = workspace.fit(entry).settings, workspace.sweep(entry)
     low, high = settings.window or (None, None)
+    units = Units.of(sweep.per_area)
     noise = getattr(settings, "voltage_noise", None)
     left_out = int((~used(sweep, settings)).sum())
     return {
@@ -40,6 +41,8 @@ def settings_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
         "window_low": "" if low is None else f"{low:.5g}",
         "window_high": "" if high is None else f"{high:.5g}",
         "confidence": f"{100 * settings.confidence:.4g}",
+        "current_noise": "" if settings.current_noise is None else f"{settings.current_noise * units.current_factor:.4g}",
+        "current_noise_unit": units.current,
         "voltage_noise": "" if noise is None else f"{1e3 * noise:.4g}",
         "left_out": f"{left_out} of {sweep.voltage.size} points left out" if left_out else "all points used",
     }

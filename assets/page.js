@@ -94,9 +94,12 @@
     showScreen(link.getAttribute("href"), true);
   });
 
+  // An SVG fills the width of a two-column page (17 cm), a PNG a slide of 16 to 9 at twice its pixels.
+  const SIZES = { svg: { width: 643, height: 450 }, png: { width: 1600, height: 900, scale: 2 } };
+
   async function savePicture(format, graph = bench.graph(), title = `${bench.scene.title} ${bench.scene.subtitle}`) {
     const name = title.replace(/[^\p{L}\p{N}._-]+/gu, "-");
-    await window.Plotly.downloadImage(graph, { format, width: 1000, height: 720, scale: format === "png" ? 3 : 1, filename: name });
+    await window.Plotly.downloadImage(graph, { format, filename: name, ...SIZES[format] });
   }
 
   /** Hand a file out; what is asked for stands in the address. */
@@ -136,6 +139,7 @@
     "save-png": () => savePicture("png"),
     "save-report": saveReport,
     "save-csv": () => download(`table/${here()}.csv`),
+    "save-json": () => download(`parameters/${here()}.json`),
     "save-xlsx": () => download(`table/${here()}.xlsx`),
   };
   document.addEventListener("click", (click) => {

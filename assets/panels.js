@@ -29,7 +29,11 @@
   }
 
   function paintSettings(settings) {
-    for (const row of document.querySelectorAll("[data-setting]")) fieldOf(row).value = settings[row.dataset.setting];
+    for (const row of document.querySelectorAll("[data-setting]")) {
+      fieldOf(row).value = settings[row.dataset.setting];
+      const unit = settings[`${row.dataset.setting}_unit`];
+      if (unit) row.querySelector(".unit").textContent = unit;
+    }
     byId("left-out-line").textContent = settings.left_out;
   }
 

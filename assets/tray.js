@@ -12,7 +12,12 @@
   const element = (tag, className, words) => Object.assign(document.createElement(tag), { className, textContent: words ?? "" });
   const list = () => document.getElementById("tray-list");
   const rows = () => [...document.querySelectorAll("#tray-list .sweep")];
-  const active = () => bench.scene?.entry ?? null;
+  /** What was chosen last, even before the server has answered: the next key may come before that. */
+  const active = () => {
+    const chosen = bench.view?.active;
+    const present = chosen && devices.some((device) => device.sweeps.some((sweep) => sweep.entry === chosen));
+    return present ? chosen : (bench.scene?.entry ?? null);
+  };
   const overlay = () => bench.view?.overlay ?? [];
 
   /** Only what differs is built anew: a tray may hold thousands of lines. */

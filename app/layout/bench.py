@@ -31,8 +31,8 @@ def bench() -> html.Section:
                         className="picture",
                         children=[
                             html.Span("save", className="hint"),
-                            html.Button("SVG", className="quiet", **{"data-act": "save-svg"}),
-                            html.Button("PNG", className="quiet", **{"data-act": "save-png"}),
+                            html.Button("SVG", className="quiet", title="For a page of two columns", **{"data-act": "save-svg"}),
+                            html.Button("PNG", className="quiet", title="For a slide", **{"data-act": "save-png"}),
                             html.Button(
                                 "report",
                                 className="quiet",

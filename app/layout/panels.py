@@ -9,6 +9,7 @@ SETTINGS = (
     ("window_low", "voltage from", "V", ""),
     ("window_high", "voltage to", "V", ""),
     ("weights", "weights", "", "automatic|uniform|relative|effective"),
+    ("current_noise", "noise of J", "", ""),
     ("voltage_noise", "noise of V", "mV", ""),
     ("loss", "loss", "", "linear|robust"),
     ("confidence", "level of intervals", "%", ""),

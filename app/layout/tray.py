@@ -29,9 +29,9 @@ def tray() -> html.Aside:
                     html.Span(
                         className="tables",
                         children=[
-                            html.Span("table", className="hint"),
                             html.Button("CSV", className="quiet", title="Every sweep of the tray, one row each", **{"data-act": "save-csv"}),
                             html.Button("XLSX", className="quiet", title="Metrics, parameters, conditions and checks, a sheet each", **{"data-act": "save-xlsx"}),
+                            html.Button("JSON", className="quiet", title="Models and refinements of every sweep", **{"data-act": "save-json"}),
                         ],
                     ),
                 ],

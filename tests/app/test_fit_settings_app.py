@@ -99,6 +99,12 @@ def test_the_noise_of_the_voltage_is_typed_in_millivolts_and_can_be_taken_away(l
     assert settings_after(lit, ("voltage_noise", "0.5"), ("voltage_noise", "")).voltage_noise is None
 
 
+def test_the_noise_of_the_current_is_typed_in_the_unit_of_the_screen(lit):
+    factor = 1e-3 if LIT.per_area else 1.0
+    assert settings_after(lit, ("current_noise", "0.004")).current_noise == pytest.approx(0.004 * factor)
+    assert settings_after(lit, ("current_noise", "0.004"), ("current_noise", "")).current_noise is None
+
+
 @pytest.mark.parametrize(
     ("name", "text", "word"),
     [
@@ -109,6 +115,8 @@ def test_the_noise_of_the_voltage_is_typed_in_millivolts_and_can_be_taken_away(l
         ("window_low", "1.2", "lower to a higher"),
         ("window_high", "0", "lower to a higher"),
         ("window_low", "half", "“half” is not a number"),
+        ("current_noise", "-1", "noise"),
+        ("current_noise", "much", "“much” is not a number"),
         ("voltage_noise", "-1", "noise"),
         ("voltage_noise", "inf", "noise"),
         ("weights", "heavy", "“heavy”"),

@@ -164,7 +164,7 @@ def test_pictures_are_named_after_the_device_and_a_reload_stays_here(three, tmp_
     drawn = svg.read_text(encoding="utf-8")
     assert drawn.startswith("<svg") and "(gap assumed)" in drawn and "K11" in drawn and "power (mW cm⁻²)" in drawn
     png = saved(tab, "[data-save=png][data-graph=ladder]", tmp_path)
-    assert png.name == "K11-losses.png" and png_size(png) == (3000, 2160)
+    assert png.name == "K11-losses.png" and png_size(png) == (3200, 1800)
     tab.page.reload()
     tab.until("painted")
     tab.until("screen", "losses")

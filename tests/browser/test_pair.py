@@ -174,7 +174,7 @@ def test_pictures_are_named_after_the_two_and_the_report_holds_both(three, tmp_p
     drawn = bars.read_text(encoding="utf-8")
     assert "together" in drawn and "voltage (recombination)" in drawn
     png = saved(tab, "[data-save=png][data-graph=pair-plot]", tmp_path)
-    assert png.name.endswith(".png") and png_size(png) == (3000, 2160)
+    assert png.name.endswith(".png") and png_size(png) == (3200, 1800)
     report = saved(tab, ".pair-room [data-act=save-report]", tmp_path).read_text(encoding="utf-8")
     assert "Why the difference" in report and "K11" in report
 
