@@ -29,9 +29,15 @@
     for (const option of options) element.append(new Option(option, option));
     return element;
   }
-  const write = (field, value) => {
-    if (field && field !== document.activeElement && field.value !== String(value)) field.value = value;
-  };
+  /* An answer to one change may come while the next is being typed: what stands in a field unsent is the user's. */
+  document.addEventListener("input", (event) => event.target.matches?.("input:not([type=range])") && (event.target.dataset.typed = ""), { capture: true });
+  for (const type of ["change", "focusout"]) {
+    document.addEventListener(type, (event) => event.target.dataset && delete event.target.dataset.typed, { capture: true });
+  }
+  /** Show a value in a field, unless the user is typing there. */
+  const write = (bench.write = (field, value) => {
+    if (field && !("typed" in field.dataset) && field.value !== String(value)) field.value = value;
+  });
 
   /** One row a parameter, in the order of the model; another model brings other rows. */
   function buildDials(dials) {
@@ -69,8 +75,7 @@
       if (force || slider !== document.activeElement) slider.value = dial.fraction;
       slider.setAttribute("aria-valuetext", dial.text);
       slider.style.setProperty("--fill", `${100 * dial.fraction}%`);
-      if (force) row.querySelector("input[type=text]").value = dial.text;
-      else write(row.querySelector("input[type=text]"), dial.text);
+      write(row.querySelector("input[type=text]"), dial.text);
       if (!("symbol" in dial)) continue;
       const symbol = row.querySelector(".symbol");
       symbol.replaceChildren(dial.symbol, Object.assign(document.createElement("sub"), { textContent: dial.index }));
@@ -96,7 +101,7 @@
     for (const [name, condition] of Object.entries(conditions)) {
       const row = document.querySelector(`[data-condition=${name}]`);
       row.hidden = !condition.shown;
-      row.querySelector("input, select").value = condition.text;
+      write(row.querySelector("input, select"), condition.text);
       row.querySelector(".assumed").hidden = !condition.assumed;
     }
   }

@@ -70,7 +70,7 @@
     for (const host of document.querySelectorAll("[data-budget]")) {
       const field = host.querySelector("input") ?? host.appendChild(document.createElement("input"));
       field.setAttribute("aria-label", host.dataset.title);
-      field.value = data.budget?.[host.dataset.budget] ?? "";
+      bench.write(field, data.budget?.[host.dataset.budget] ?? "");
     }
     for (const button of document.querySelectorAll("[data-budget-switch]")) {
       button.setAttribute("aria-checked", String(Boolean(data.budget?.[button.dataset.budgetSwitch])));
@@ -124,7 +124,7 @@
     const gap = document.querySelector("[data-condition=band_gap]");
     const field = gap.querySelector("input") ?? gap.querySelector(".value").appendChild(document.createElement("input"));
     field.setAttribute("aria-label", "band gap");
-    field.value = data.bandGap?.text ?? "";
+    bench.write(field, data.bandGap?.text ?? "");
     gap.querySelector(".assumed").hidden = !data.bandGap?.assumed;
     const emission = byId("emission-choice");
     const choice = emission.querySelector("select") ?? emission.appendChild(document.createElement("select"));

@@ -30,7 +30,7 @@
 
   function paintSettings(settings) {
     for (const row of document.querySelectorAll("[data-setting]")) {
-      fieldOf(row).value = settings[row.dataset.setting];
+      bench.write(fieldOf(row), settings[row.dataset.setting]);
       const unit = settings[`${row.dataset.setting}_unit`];
       if (unit) row.querySelector(".unit").textContent = unit;
     }

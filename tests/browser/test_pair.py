@@ -163,6 +163,20 @@ def test_what_is_known_of_area_and_lamp_weighs_and_nonsense_is_told(three):
     expect(tab.find("[data-compared=pmp] [data-column=verdict]")).to_have_text("stands out")
 
 
+def test_an_answer_leaves_alone_what_is_being_typed(three):
+    tab, _ = three
+    area, lamp = tab.find("[data-budget=area] input"), tab.find("[data-budget=lamp] input")
+    with tab.answers_held():
+        area.fill("0.2")
+        area.press("Enter")
+        lamp.fill("0.3")
+    until(tab, "sweepbench.pair.budget.area === '0.2'")
+    assert lamp.input_value() == "0.3"
+    lamp.press("Enter")
+    until(tab, "sweepbench.pair.budget.lamp === '0.3'")
+    assert area.input_value() == "0.2"
+
+
 def test_pictures_are_named_after_the_two_and_the_report_holds_both(three, tmp_path):
     tab, _ = three
     svg = saved(tab, "[data-save=svg][data-graph=pair-plot]", tmp_path)
