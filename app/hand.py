@@ -13,6 +13,7 @@ from core import steps
 from core.dials import dial_ranges
 from core.errors import ConditionRefused, StepRefused
 from core.handles import Move, drag, set_parameter
+from core.statements import SWITCHES, UNCERTAINTIES
 from core.sweep import Sweep
 from core.workspace import Workspace
 
@@ -109,9 +110,22 @@ def _band_gap(workspace: Workspace, event: Event) -> Step:
 def _condition(workspace: Workspace, event: Event) -> Step:
     sweep_of(workspace, event)
     name, text = str(event["name"]), str(event["text"]).strip()
+    if name == "units":
+        return steps.set_current_unit(workspace, event["entry"], text)
+    if name == "group":
+        return steps.set_group(workspace, [workspace.entry(event["entry"]).device], text)
     if name not in _CONDITIONS:
         raise StepRefused(f"There is no condition called “{name}”.")
     return steps.set_conditions(workspace, event["entry"], **{name: _CONDITIONS[name](text)})
+
+
+def _statement(workspace: Workspace, event: Event) -> Step | None:
+    name, text = str(event["name"]), str(event["text"]).strip()
+    if name in UNCERTAINTIES:
+        value = parse_number(text, "Uncertainty") / 100 if text else None  # per cent on the screen
+    else:
+        value = text == "yes" if name in SWITCHES else text
+    return steps.state(workspace, name, value)
 
 
 def _area(text: str) -> float | None:
@@ -143,6 +157,7 @@ _STEPS: dict[str, Callable[[Workspace, Event], Step | None]] = {
     "together": refine_sweeps_together,
     "condition": _condition,
     "band-gap": _band_gap,
+    "statement": _statement,
     "confirm": lambda w, e: steps.confirm_conditions(w, e["entry"], list(e["names"])),
     "rename-sweep": lambda w, e: steps.rename_entry(w, e["entry"], str(e["text"])),
     "rename-device": lambda w, e: steps.rename_device(w, e["device"], str(e["text"])),

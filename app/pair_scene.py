@@ -9,7 +9,7 @@ from plotly.graph_objects import Figure
 
 from core.comparing import compare
 from core.diode import PARAMETERS, OneDiode
-from core.errors import ComparisonRefused, ConditionRefused, StepRefused
+from core.errors import ComparisonRefused, StepRefused
 from core.retelling import tell_difference
 from core.sentences import conditions, listed
 from core.shares import what_if
@@ -21,8 +21,9 @@ from .figures.pair import Side, pair_figure, shares_figure, what_if_line
 from .insight import is_shunt
 from .scene import View, active_entry, full_name
 from .states import State, state_of
+from .stating import statement_texts
 from .units import DENSITY, Units
-from .wording import concise, number, parse_number, power_change
+from .wording import concise, number, power_change
 
 
 def chosen_pair(workspace: Workspace, view: View) -> tuple[str | None, str | None]:
@@ -40,7 +41,8 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
     """Both figures and the data of the screen; a refusal is its sentence."""
     a, b = chosen_pair(workspace, view)
     normalised = bool(view.get("normalised"))
-    data: dict[str, Any] = {"a": a, "b": b, "normalised": normalised, "whatIf": "", "story": "", "sources": "", "note": "", "notice": "", "refusal": ""}
+    data: dict[str, Any] = {"a": a, "b": b, "normalised": normalised, "whatIf": "", "story": "", "sources": "", "note": "", "refusal": ""}
+    data["stated"] = statement_texts(workspace)
     if a is None or b is None:
         refusal = "Two lit sweeps are needed to compare. Drop more files, or choose two in the tray."
         return Figure(), Figure(), {**data, "refusal": refusal}
@@ -51,12 +53,7 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
     states = state_of(workspace, a), state_of(workspace, b)
     sides = [Side(workspace.sweep(e), s.model if s else None, full_name(workspace, e)) for e, s in zip((a, b), states, strict=True)]
     curves = pair_figure(*sides, normalised=normalised, zoom_key=f"pair {a} {b} {normalised}")
-    data["budget"] = view.get("budget") or {}
-    try:
-        known = {name: _relative(data["budget"].get(name)) for name in ("area", "lamp")}
-    except ConditionRefused as refused:  # the field keeps what was typed, and the screen goes on without it
-        known, data["notice"] = {}, str(refused)
-    verdict = _verdict(workspace, a, b, states, {**known, "area_shared": bool(data["budget"].get("area_shared"))})
+    verdict = _verdict(workspace, a, b, states)
     data["compared"] = _compared(workspace, a, b, verdict)
     try:
         if None in states:
@@ -100,28 +97,12 @@ def _sources(states: tuple[State, State]) -> str:
     return " ".join(f"The curve of {letter} was {s.source}." for letter, s in zip("AB", states, strict=True) if s.source)
 
 
-def _verdict(
-    workspace: Workspace, a: str, b: str, states: tuple[State | None, State | None], known: Mapping[str, Any]
-) -> Verdict:
+def _verdict(workspace: Workspace, a: str, b: str, states: tuple[State | None, State | None]) -> Verdict:
     budget = budget_of(
         workspace, a, b, lambda entry: readout.measured(workspace.sweep(entry)),
-        **known,
         ideality=states[0].model.ideality if states[0] else 1.0,
     )
     return stands_out(readout.measured(workspace.sweep(a)), readout.measured(workspace.sweep(b)), budget)
-
-
-def _relative(text: Any) -> float | None:
-    """A percentage that the user typed, or None where the field is empty.
-
-    Raises ConditionRefused, with a sentence, if it is no percentage.
-    """
-    if text is None or not str(text).strip():
-        return None
-    value = parse_number(str(text), "Uncertainty")
-    if not 0 <= value <= 100:
-        raise ConditionRefused("An uncertainty must be a percentage between 0 and 100.")
-    return value / 100
 
 
 def _compared(workspace: Workspace, a: str, b: str, verdict: Verdict) -> dict[str, dict[str, str]]:

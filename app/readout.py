@@ -175,10 +175,13 @@ def metric_unit(name: str, units: Units) -> tuple[float, str]:
     }[name]
 
 
+UNIT_GIVEN = "as given"
+
+
 def condition_rows(workspace: Workspace, entry: str, sweep: Sweep) -> dict[str, dict[str, Any]]:
     """Conditions as text fields; ``assumed`` where the file gave none and nobody confirmed."""
     assumed = workspace.assumed(entry)
-    conditions = sweep.conditions
+    conditions, reading = sweep.conditions, workspace.entry(entry).reading
     texts = {
         "area": field(conditions.area),
         "file_area": field(conditions.file_area),
@@ -186,9 +189,12 @@ def condition_rows(workspace: Workspace, entry: str, sweep: Sweep) -> dict[str, 
         "irradiance": f"{conditions.irradiance * 1e3:.5g}",
         "series_cells": str(conditions.series_cells),
         "lit": "light" if conditions.lit else "dark",
+        "units": reading.read_unit or UNIT_GIVEN,
+        "group": workspace.device(workspace.entry(entry).device).group,
     }
+    hidden = {"file_area": sweep.read_as != "density", "units": "units" not in reading.assumed}
     return {
-        name: {"text": text, "assumed": name in assumed, "shown": name != "file_area" or sweep.read_as == "density"}
+        name: {"text": text, "assumed": name in assumed, "shown": not hidden.get(name, False)}
         for name, text in texts.items()
     }
 

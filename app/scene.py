@@ -19,13 +19,14 @@ from core.workspace import Entry, Workspace
 from . import insight, readout
 from .curves import STRIPS, model_curves, thinned
 from .figures.bench import bench_figure, empty_figure
+from .stating import statement_rows
 from .together import offered
 from .units import Units
 from .wording import number
 
 View = Mapping[str, Any]
 LINES = (("model", "y"), ("power", "y2"), ("corner", "y"), ("strip-model", "y3"))
-PANELS = ("numbers", "fit", "estimates")
+PANELS = ("numbers", "fit", "estimates", "record")
 SPARK_WIDTH, SPARK_HEIGHT = 56, 18
 
 
@@ -132,6 +133,8 @@ def _panel(workspace: Workspace, entry: str, view: View) -> dict[str, Any]:
         }
     if panel_of(view) == "estimates":
         return {"estimates": insight.estimate_rows(workspace, entry)}
+    if panel_of(view) == "record":
+        return {"stated": statement_rows(workspace, entry)}
     return {}
 
 

@@ -13,7 +13,7 @@
   function fields() {
     if (document.querySelector(".conditions .value > *")) return;
     for (const row of document.querySelectorAll(".conditions .condition")) {
-      const field = row.dataset.condition === "lit" ? choice(["light", "dark"]) : input({ type: "text", spellcheck: "false" });
+      const field = row.dataset.options ? choice(row.dataset.options.split("|")) : input({ type: "text", spellcheck: "false" });
       field.setAttribute("aria-label", row.dataset.title);
       row.querySelector(".value").append(field);
     }

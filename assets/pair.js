@@ -52,7 +52,6 @@
     slot("b", data.b);
     check("data-pair-scale", data.normalised ? "normalised" : "absolute");
     refuse("pair-refusal", data.refusal);
-    if (data.notice) bench.say(data.notice);
     text(byId("pair-story"), data.story);
     text(byId("pair-sources"), data.sources);
     text(byId("pair-bars-note"), data.note);
@@ -67,18 +66,9 @@
       field.disabled = Boolean(data.refusal);
       turn(field, 0);
     }
-    for (const host of document.querySelectorAll("[data-budget]")) {
-      const field = host.querySelector("input") ?? host.appendChild(document.createElement("input"));
-      field.setAttribute("aria-label", host.dataset.title);
-      bench.write(field, data.budget?.[host.dataset.budget] ?? "");
-    }
-    for (const button of document.querySelectorAll("[data-budget-switch]")) {
-      button.setAttribute("aria-checked", String(Boolean(data.budget?.[button.dataset.budgetSwitch])));
-    }
+    bench.paintStated(data.stated);
     bench.paintSelection?.();
   };
-
-  const budget = (changes) => bench.changeView({ budget: { ...bench.view.budget, ...changes } });
 
   function whatIf() {
     const rows = [...document.querySelectorAll(".what-if:not(.target)")];
@@ -201,8 +191,6 @@
   document.addEventListener("change", (event) => {
     const name = event.target.closest?.("[data-slot]")?.dataset.slot;
     if (name) bench.changeView({ pair: { ...bench.pairChoice(), [name]: event.target.value } });
-    const known = event.target.closest?.("[data-budget]")?.dataset.budget;
-    if (known) budget({ [known]: event.target.value });
     if (event.target.closest?.("#emission-choice")) bench.changeView({ emission: event.target.value });
   });
   bench.pairChoice = () => ({ a: bench.pair?.a ?? null, b: bench.pair?.b ?? null });
@@ -221,8 +209,6 @@
     if (scale) bench.changeView({ normalised: scale.dataset.pairScale === "normalised" });
     const ladder = click.target.closest?.("[data-ladder]");
     if (ladder) bench.changeView({ ladder: ladder.dataset.ladder });
-    const known = click.target.closest?.("[data-budget-switch]")?.dataset.budgetSwitch;
-    if (known) budget({ [known]: !bench.view.budget?.[known] });
     if (click.target.closest?.("[data-act=swap]")) bench.swap();
     if (click.target.closest?.("[data-act=projector]")) bench.projector(true);
   });

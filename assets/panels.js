@@ -14,6 +14,7 @@
     if (scene.correlation) paintCorrelation(scene.correlation);
     if (scene.together) paintTogether(scene.together);
     if (scene.estimates) paintEstimates(scene.estimates);
+    if (scene.stated) paintRecord(scene.stated);
   };
 
   function fieldOf(row) {
@@ -36,6 +37,24 @@
     }
     byId("left-out-line").textContent = settings.left_out;
   }
+
+  /* What the user states of the whole workspace stands on two screens. */
+  bench.paintStated = (texts) => {
+    for (const row of document.querySelectorAll("[data-stated]")) bench.write(fieldOf(row), texts[row.dataset.stated]);
+    for (const button of document.querySelectorAll("[data-stated-switch]")) {
+      button.setAttribute("aria-checked", String(texts[button.dataset.statedSwitch] === "yes"));
+    }
+  };
+  /** What the file of this sweep says itself stands where nothing is typed. */
+  function paintRecord({ texts, files }) {
+    bench.paintStated(texts);
+    for (const row of document.querySelectorAll(".told[data-stated]")) {
+      const said = files[row.dataset.stated] ?? "";
+      fieldOf(row).placeholder = said;
+      row.title = said ? `This sweep's file says “${said}”, which goes before what is typed here.` : "";
+    }
+  }
+  const state = (name, text) => bench.send({ kind: "statement", name, text });
 
   /** Each cell's ink is the size of the correlation; its sign stands in the number. */
   function paintCorrelation({ names, values }) {
@@ -128,9 +147,13 @@
   document.addEventListener("change", (event) => {
     const name = event.target.closest?.("[data-setting]")?.dataset.setting;
     if (name) bench.send({ kind: "setting", entry: bench.scene.entry, name, text: event.target.value });
+    const stated = event.target.closest?.("[data-stated]")?.dataset.stated;
+    if (stated) state(stated, event.target.value);
   });
   document.addEventListener("click", (click) => {
     const panel = click.target.closest?.("[data-panel-choice]");
+    const known = click.target.closest?.("[data-stated-switch]");
+    if (known) state(known.dataset.statedSwitch, known.getAttribute("aria-checked") === "true" ? "" : "yes");
     const chip = click.target.closest?.(".chip");
     if (chip) chip.setAttribute("aria-checked", String(chip.getAttribute("aria-checked") !== "true"));
     if (panel) bench.changeView({ panel: panel.dataset.panelChoice });

@@ -1,7 +1,7 @@
 """Steps: every change of a workspace as a JSON-ready value, applied and inverted by pure functions.
 
 A step is ``{"label": "rename device", "put": {kind: {id: record or None}}}`` with the kinds "devices",
-"entries" and "fits"; a record replaces the one under its id, None deletes it. The kind "readings"
+"entries", "fits" and "statements"; a record replaces the one under its id, None deletes it. The kind "readings"
 supplies the points of readings that the entries of this step need, by their content's id; a reading leaves the
 workspace with its last entry, so nothing deletes one. "event" may name the event of a page that asked for the step.
 """
@@ -20,16 +20,17 @@ from .records import (
     reading_record,
     reading_text,
 )
+from .statements import Statement
 from .sweep import Sweep
 from .workspace import KINDS, Device, Entry, Fit, Workspace
 
 Step = dict[str, Any]
 
-_WORDS = {"devices": "device", "entries": "sweep", "fits": "fit", "readings": "reading"}
+_WORDS = {"devices": "device", "entries": "sweep", "fits": "fit", "statements": "statement", "readings": "reading"}
 
 
 def make_step(label: str, **put: Mapping[str, Any]) -> Step:
-    """A step from devices, entries, fits, records of readings, or None; empty kinds are left out."""
+    """A step from devices, entries, fits, statements, records of readings, or None; empty kinds are left out."""
     return {
         "label": label,
         "put": {
@@ -99,6 +100,7 @@ def changed(workspace: Workspace, put: Mapping[str, Mapping[str, Any]], readings
         devices,
         entries,
         fits,
+        _table(workspace.statements, put, "statements", Statement.from_dict),
         workspace.derived if not {"devices", "entries"} & put.keys() else _still_true(workspace, devices, entries),
     )
 

@@ -3,8 +3,8 @@
 Inside (UTF-8 JSON throughout):
 
 - ``manifest.json``: ``format``, ``schema`` and, for every other member, ``path``, ``size`` and ``sha256``;
-- ``workspace.json``: ``schema``, ``name``, and the records of ``devices``, ``entries`` and ``fits`` by id, in
-  the units of core;
+- ``workspace.json``: ``schema``, ``name``, and the records of ``devices``, ``entries``, ``fits`` and ``statements``
+  by id, in the units of core;
 - ``readings/<sha256>.json``: the points of each sweep as read, its text hashing to its name; entries name it as
   ``reading``;
 - ``originals/<sha256>/<name>``: the files as they were dropped, byte for byte; entries name them as ``source``.

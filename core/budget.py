@@ -55,12 +55,9 @@ def budget_of(
     entry_b: str,
     metrics_of: Callable[[str], Metrics],
     *,
-    area: float | None = None,
-    area_shared: bool = False,
-    lamp: float | None = None,
     ideality: float = 1.0,
 ) -> Budget:
-    """The budget that a workspace holds for two of its sweeps.
+    """The budget that a workspace holds for two of its sweeps: what its user states, and what its other sweeps tell.
 
     Parameters
     ----------
@@ -68,16 +65,17 @@ def budget_of(
     entry_a, entry_b : str
     metrics_of : callable
         Metrics of a sweep by its id; whoever calls may keep them.
-    area, area_shared, lamp, ideality
-        As in ``Budget``; ``area`` is that of either device.
+    ideality
+        As in ``Budget``.
     """
+    area, lamp = workspace.stated("area_uncertainty"), workspace.stated("lamp_uncertainty")
     if workspace.entry(entry_a).device == workspace.entry(entry_b).device:
         temperature = workspace.sweep(entry_a).temperature
         return Budget(area, area, True, lamp, same_device=True, ideality=ideality, temperature=temperature)
     return Budget(
         area_a=area,
         area_b=area,
-        area_shared=area_shared,
+        area_shared=bool(workspace.stated("area_shared")),
         lamp=lamp,
         other_direction_a=_other_direction(workspace, entry_a, metrics_of),
         other_direction_b=_other_direction(workspace, entry_b, metrics_of),

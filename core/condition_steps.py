@@ -16,8 +16,10 @@ from typing import Any
 
 from .applying import Step, make_step
 from .errors import ConditionRefused
+from .records import id_of_text, reading_record, reading_text
 from .sweep import Conditions, Sweep
 from .workspace import (
+    CONFIRMED_OF_ENTRY,
     DEVICE_CONDITIONS,
     ENTRY_CONDITIONS,
     Device,
@@ -34,6 +36,7 @@ _WORDS = {
     "temperature": "temperature",
     "irradiance": "irradiance",
     "lit": "light or dark",
+    "units": "units",
 }
 
 
@@ -88,6 +91,43 @@ def set_conditions(workspace: Workspace, entry_id: str, **changes: float | bool 
     return make_step(label, devices={device.id: new_device}, entries={entry_id: new_entry}, fits=fits)
 
 
+def set_current_unit(workspace: Workspace, entry_id: str, unit: str) -> Step:
+    """Say in which unit a file without units gives its current; for all its sweeps in the tray.
+
+    Their models go, because they were laid over other numbers.
+
+    Parameters
+    ----------
+    unit : str
+        One of ``core.sweep.CURRENT_UNITS``.
+
+    Raises
+    ------
+    ConditionRefused
+        If the file gives its units, or there is no such unit.
+    """
+    entry = workspace.entry(entry_id)
+    entry.reading.with_unit(unit)  # refuses for this one, whatever the others are
+    entries, readings, devices = {}, {}, {}
+    for other in workspace.entries.values():
+        if not other.reading.read_unit or other.id != entry_id and (entry.source is None or other.source != entry.source):
+            continue
+        reading = other.reading.with_unit(unit)
+        record = reading_record(reading)
+        reading_id = id_of_text(reading_text(record))
+        readings[reading_id] = record
+        entries[other.id] = replace(other, reading=reading, reading_id=reading_id, confirmed=other.confirmed | {"units"})
+        device = workspace.device(other.device)
+        devices[device.id] = replace(device, file_area=reading.conditions.file_area)
+    return make_step(
+        "change unit of the current",
+        devices=devices,
+        entries=entries,
+        fits=dict.fromkeys(entries.keys() & workspace.fits.keys()),
+        readings=readings,
+    )
+
+
 def set_band_gap(workspace: Workspace, entry_id: str, band_gap: float | None) -> Step:
     """Say the band gap [eV] of a sweep's device; None: not known.
 
@@ -107,12 +147,12 @@ def confirm_conditions(workspace: Workspace, entry_id: str, names: Iterable[str]
     entry = workspace.entry(entry_id)
     device = workspace.device(entry.device)
     names = frozenset(names)
-    if not names <= {*DEVICE_CONDITIONS, *ENTRY_CONDITIONS}:
+    if not names <= {*DEVICE_CONDITIONS, *CONFIRMED_OF_ENTRY}:
         raise ConditionRefused(f"There is no condition called “{sorted(names - set(_WORDS))[0]}”.")
     return make_step(
         "confirm " + ", ".join(_WORDS[name] for name in _WORDS if name in names),
         devices={device.id: replace(device, confirmed=device.confirmed | names & {"series_cells"})},
-        entries={entry_id: replace(entry, confirmed=entry.confirmed | names & set(ENTRY_CONDITIONS))},
+        entries={entry_id: replace(entry, confirmed=entry.confirmed | names & CONFIRMED_OF_ENTRY)},
     )
 
 
@@ -154,7 +194,7 @@ def _checked(changes: dict[str, Any]) -> dict[str, Any]:
     if not changes:
         raise ConditionRefused("No condition was given.")
     for name, value in changes.items():
-        if name not in _WORDS:
+        if name not in {*DEVICE_CONDITIONS, *ENTRY_CONDITIONS}:
             raise ConditionRefused(f"There is no condition called “{name}”.")
         if value is None:
             continue

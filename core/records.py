@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 
 from .errors import StepRefused
-from .sweep import Sweep
+from .sweep import CURRENT_UNITS, Sweep
 
 # No bench measures so much; numbers far beyond overflow in the formulas. What is read from files keeps to it too.
 _LARGEST = 1e30
@@ -107,6 +107,7 @@ def reading_from_record(record: Any) -> Sweep:
             and isinstance(sweep.lit, bool)
             and sweep.direction in ("forward", "reverse")
             and sweep.read_as in ("current", "density")
+            and sweep.read_unit in ("", *CURRENT_UNITS)
             and all(isinstance(text, str) for text in texts)
             and (sweep.scan_rate is None or bool(np.isfinite(sweep.scan_rate)))
         )

@@ -5,7 +5,12 @@ does not hold together, whoever made the step.
 """
 
 from .applying import Step, apply, inverse
-from .condition_steps import confirm_conditions, set_band_gap, set_conditions
+from .condition_steps import (
+    confirm_conditions,
+    set_band_gap,
+    set_conditions,
+    set_current_unit,
+)
 from .fit_steps import (
     record_refinement,
     record_refinements,
@@ -14,6 +19,7 @@ from .fit_steps import (
     set_model,
     switch_model,
 )
+from .statement_steps import state
 from .tray_steps import (
     add_sweeps,
     already_loaded,
@@ -37,9 +43,11 @@ __all__ = [
     "rename_entry",
     "set_band_gap",
     "set_conditions",
+    "set_current_unit",
     "set_fit_settings",
     "set_group",
     "set_hold",
     "set_model",
+    "state",
     "switch_model",
 ]

@@ -18,6 +18,15 @@ from .errors import ConditionRefused
 Direction = Literal["forward", "reverse"]
 Quantity = Literal["current", "density"]
 
+# Units that a file may mean by a bare number: factor to A or A cm⁻², and which of the two.
+CURRENT_UNITS: Mapping[str, tuple[float, Quantity]] = {
+    "A": (1.0, "current"),
+    "mA": (1e-3, "current"),
+    "µA": (1e-6, "current"),
+    "A cm⁻²": (1.0, "density"),
+    "mA cm⁻²": (1e-3, "density"),
+}
+
 
 @dataclass(frozen=True, slots=True)
 class Conditions:
@@ -91,6 +100,8 @@ class Sweep:
         What the file's header says, kept as it stands.
     assumed : frozenset of str
         Names of conditions that the file does not give: assumed until the user confirms them.
+    read_unit : str
+        Where the file gives no unit of the current: the one in ``CURRENT_UNITS`` that it is taken for; else "".
     """
 
     voltage: np.ndarray
@@ -105,6 +116,7 @@ class Sweep:
     notes: tuple[str, ...] = ()
     header: Mapping[str, str] = field(default_factory=dict)
     assumed: frozenset[str] = frozenset({"temperature", "irradiance", "series_cells"})
+    read_unit: str = ""
 
     def __post_init__(self):
         for name in ("voltage", "current"):
@@ -157,6 +169,31 @@ class Sweep:
         # A density is measured current over the file's area; undo one rescaling, do the other.
         return _density_factor(after) / _density_factor(before)
 
+    def with_unit(self, unit: str) -> Sweep:
+        """The same file with its bare numbers taken for another unit of current.
+
+        Raises
+        ------
+        ConditionRefused
+            If the file gives its unit itself, or there is no such unit.
+        """
+        if not self.read_unit:
+            raise ConditionRefused("The file says in which unit its current is given, so it is read in that unit.")
+        if unit not in CURRENT_UNITS:
+            raise ConditionRefused(f"The current can be read as {', '.join(CURRENT_UNITS)}, not as “{unit}”.")
+        (before, was), (after, becomes) = CURRENT_UNITS[self.read_unit], CURRENT_UNITS[unit]
+        area = self.area if was == "current" else self.conditions.file_area  # the one that the file names
+        numbers = self.current / before * (area or 1.0 if was == "current" else 1.0)
+        return replace(
+            self,
+            current=numbers * after / (1.0 if becomes == "density" else area or 1.0),
+            per_area=becomes == "density" or area is not None,
+            conditions=replace(self.conditions, area=area, file_area=area if becomes == "density" else None),
+            read_as=becomes,
+            notes=(*(note for note in self.notes if note not in _TAKEN.values()), _TAKEN[unit]),
+            read_unit=unit,
+        )
+
     def to_dict(self) -> dict[str, Any]:
         """As JSON-ready values; ``from_dict`` gives the same sweep back."""
         return {
@@ -172,6 +209,7 @@ class Sweep:
             "notes": list(self.notes),
             "header": dict(self.header),
             "assumed": sorted(self.assumed),
+            "read_unit": self.read_unit,
         }
 
     @classmethod
@@ -184,6 +222,9 @@ class Sweep:
                 "assumed": frozenset(values["assumed"]),
             }
         )
+
+
+_TAKEN = {unit: f"You said that the file gives its current in {unit}." for unit in CURRENT_UNITS}
 
 
 def _with_area_of_density(read_as: Quantity, conditions: Conditions) -> Conditions:

@@ -1,9 +1,9 @@
 """Everything of one piece of work, as one frozen value.
 
-A workspace holds devices, entries (the sweeps measured on them, as read, with the user's corrections)
-and fits (one for an entry). It never changes: a step makes the next one (``core.steps``). It derives what the screens
-need: the sweep under the conditions that now hold, which of them are still assumed, whether a
-refinement still describes the model.
+A workspace holds devices, entries (the sweeps measured on them, as read, with the user's corrections),
+fits (one for an entry) and statements (what the user says of all of it). It never changes: a step makes the
+next one (``core.steps``). It derives what the screens need: the sweep under the conditions that now hold,
+which of them are still assumed, whether a refinement still describes the model.
 """
 
 from __future__ import annotations
@@ -19,10 +19,12 @@ from .errors import ConditionRefused, StepRefused
 from .fit_settings import FitSettings
 from .models import Model, model_from_dict
 from .refinement import Refinement
+from .statements import Statement
 from .sweep import Conditions, Sweep
 
 DEVICE_CONDITIONS = ("area", "file_area", "series_cells")  # of the device, hence of all its sweeps
 ENTRY_CONDITIONS = ("temperature", "irradiance", "lit")  # of one sweep
+CONFIRMED_OF_ENTRY = frozenset({*ENTRY_CONDITIONS, "units"})  # the units as read; another unit is another file
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,7 +87,7 @@ class Entry:
     temperature, irradiance, lit : float, float, bool or None
         The user's corrections [K], [W cm⁻²]; None: as read.
     confirmed : frozenset of str
-        Of these three, the ones the user gave or confirmed.
+        Of these three and "units", those that the user gave or confirmed.
     """
 
     id: str
@@ -116,7 +118,7 @@ class Entry:
 
     @classmethod
     def from_dict(cls, values: Mapping[str, Any], reading: Sweep) -> Entry:
-        values = {**values, "confirmed": _confirmed(values, set(ENTRY_CONDITIONS))}
+        values = {**values, "confirmed": _confirmed(values, CONFIRMED_OF_ENTRY)}
         return cls(reading=reading, reading_id=values.pop("reading"), **values)
 
 
@@ -150,7 +152,7 @@ class Fit:
         )
 
 
-KINDS = ("devices", "entries", "fits")
+KINDS = ("devices", "entries", "fits", "statements")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -162,7 +164,7 @@ class Workspace:
     id, name : str
     revision : int
         Raised by every step, undo and redo.
-    devices, entries, fits : mapping of str to Device, Entry, Fit
+    devices, entries, fits, statements : mapping of str to Device, Entry, Fit, Statement
         By id; a fit stands under the id of its entry.
     """
 
@@ -172,6 +174,7 @@ class Workspace:
     devices: Mapping[str, Device] = field(default_factory=lambda: MappingProxyType({}))
     entries: Mapping[str, Entry] = field(default_factory=lambda: MappingProxyType({}))
     fits: Mapping[str, Fit] = field(default_factory=lambda: MappingProxyType({}))
+    statements: Mapping[str, Statement] = field(default_factory=lambda: MappingProxyType({}))
     # Derived sweeps, made when first asked for and handed on to the next revision where nothing about
     # them changed: the same sweep stays the same object, so that what is computed from it can be kept.
     derived: dict[str, Sweep] = field(default_factory=dict, repr=False)
@@ -224,6 +227,11 @@ class Workspace:
         self.entry(entry_id)
         return self.fits.get(entry_id) or Fit()
 
+    def stated(self, name: str) -> float | bool | str | None:
+        """What the user states of every sweep under this name, or None."""
+        statement = self.statements.get(name)
+        return None if statement is None else statement.value
+
     def refined(self, entry_id: str) -> Refinement | None:
         """The last refinement if the model still stands where it left it, else None."""
         fit = self.fit(entry_id)
@@ -243,7 +251,7 @@ class Workspace:
         return sorted(in_order, key=lambda entry: first[entry.device])
 
     def record(self, kind: str, record_id: str) -> dict[str, Any] | None:
-        """One device, entry or fit as JSON-ready values, or None where there is none."""
+        """One device, entry, fit or statement as JSON-ready values, or None where there is none."""
         value = getattr(self, kind).get(record_id)
         return None if value is None else value.to_dict()
 

@@ -7,8 +7,10 @@ laid out here.
 from dash import html
 
 from app.ids import Id
+from app.readout import UNIT_GIVEN
+from core.sweep import CURRENT_UNITS
 
-from .panels import estimates_panel, fit_panel
+from .panels import estimates_panel, fit_panel, record_panel
 
 METRIC_LABELS = {
     "jsc": ("J", "sc"),
@@ -27,7 +29,11 @@ CONDITION_LABELS = {
     "irradiance": ("irradiance", "mW cm⁻²"),
     "series_cells": ("cells in series", ""),
     "lit": ("measured in", ""),
+    "units": ("current read as", ""),
+    "group": ("group", ""),
 }
+
+CONDITION_CHOICES = {"lit": ("light", "dark"), "units": (*CURRENT_UNITS, UNIT_GIVEN)}
 
 
 def side() -> html.Aside:
@@ -51,7 +57,7 @@ def side() -> html.Aside:
                 **{"aria-label": "Panel"},
                 children=[
                     html.Button(words, role="radio", className="quiet", **{"data-panel-choice": name, "aria-checked": "false"})
-                    for name, words in (("numbers", "numbers"), ("fit", "fit"), ("estimates", "estimates"))
+                    for name, words in (("numbers", "numbers"), ("fit", "fit"), ("estimates", "estimates"), ("record", "record"))
                 ],
             ),
             html.Div(
@@ -65,6 +71,7 @@ def side() -> html.Aside:
             ),
             html.Div(className="panel", **{"data-panel": "fit"}, children=fit_panel()),
             html.Div(className="panel", **{"data-panel": "estimates"}, children=estimates_panel()),
+            html.Div(className="panel", **{"data-panel": "record"}, children=record_panel()),
         ],
     )
 
@@ -89,7 +96,7 @@ def _conditions() -> html.Div:
         children=[
             html.Div(
                 className="condition",
-                **{"data-condition": name, "data-title": label},
+                **{"data-condition": name, "data-title": label, "data-options": "|".join(CONDITION_CHOICES.get(name, ()))},
                 children=[
                     html.Span(label, className="label"),
                     html.Span(className="value"),

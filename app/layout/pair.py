@@ -7,6 +7,7 @@ from app.mechanisms import MECHANISMS
 
 from .bench import PLOT_CONFIG
 from .dials import METRIC_LABELS
+from .panels import KNOWN, stated, stated_switch
 
 
 def pair() -> list:
@@ -75,9 +76,8 @@ def pair() -> list:
                     className="budget",
                     children=[
                         html.Span("known besides noise:", className="hint"),
-                        _known("area", "area ±", "%", "Standard uncertainty of each area"),
-                        _known("lamp", "lamp ±", "%", "Standard uncertainty of the irradiance of each measurement, without what both have in common"),
-                        html.Button("one aperture", role="switch", className="quiet", **{"data-budget-switch": "area_shared", "aria-checked": "false"}),
+                        *(stated(name, words, title) for name, (words, title) in KNOWN.items()),
+                        stated_switch(),
                     ],
                 ),
                 html.H3("What if A had B’s …"),
@@ -99,12 +99,6 @@ def _comparison() -> html.Table:
         cells = [html.Td(className=column, **{"data-column": column}) for column in ("a", "b", "difference", "verdict")]
         rows.append(html.Tr([html.Th([letter, html.Sub(index)], scope="row"), *cells], **{"data-compared": name}))
     return html.Table(className="metrics", children=[html.Thead(head), html.Tbody(rows)])
-
-
-def _known(name: str, words: str, unit: str, title: str) -> html.Span:
-    return html.Span(
-        [words, html.Span(className="value", **{"data-budget": name, "data-title": title}), unit], className="known", title=title
-    )
 
 
 def _what_if(parameter: str, words: str) -> html.Div:

@@ -3,6 +3,7 @@
 from dash import html
 
 from app.ids import Id
+from core.statements import TEXTS
 
 SETTINGS = (
     ("model", "model", "", "one diode|two diodes"),
@@ -51,6 +52,58 @@ def estimates_panel() -> list:
             children=[html.Thead(html.Tr([html.Th("derived from the model"), html.Th()])), html.Tbody(id="derived-rows")],
         ),
     ]
+
+
+def record_panel() -> list:
+    """What the report and the verdict of a pair need to know and few files say."""
+    return [
+        html.P("How it was measured: for every sweep of this workspace whose file says nothing of it.", className="fit-line"),
+        html.Div(className="stated", role="group", children=[_told(name) for name in TEXTS], **{"aria-label": "How it was measured"}),
+        html.H3("How well it is known"),
+        html.Div(
+            className="conditions stated",
+            role="group",
+            **{"aria-label": "How well it is known"},
+            children=[
+                *(stated(name, words, title) for name, (words, title) in KNOWN.items()),
+                stated_switch(),
+            ],
+        ),
+    ]
+
+
+KNOWN = {
+    "area_uncertainty": ("area ±", "Standard uncertainty of each area"),
+    "lamp_uncertainty": (
+        "lamp ±",
+        "Standard uncertainty of the irradiance of each measurement, without what all have in common",
+    ),
+}
+
+
+def stated(name: str, words: str, title: str) -> html.Div:
+    """A field for one uncertainty that the user states of the whole workspace."""
+    return html.Div(
+        [html.Span(words, className="label"), html.Span(className="value"), html.Span("%", className="unit")],
+        className="condition known",
+        title=title,
+        **{"data-stated": name, "data-title": title},
+    )
+
+
+def stated_switch() -> html.Button:
+    """The switch that says that all areas are those of one aperture."""
+    title = "All devices were measured through the same aperture, so that its error is common to them"
+    return html.Button("one aperture", role="switch", className="quiet", title=title, **{"data-stated-switch": "area_shared", "aria-checked": "false"})
+
+
+def _told(name: str) -> html.Div:
+    options = "|aperture|active|total" if name == "area_kind" else ""
+    return html.Div(
+        [html.Span(TEXTS[name], className="label"), html.Span(className="value"), html.Span(className="unit")],
+        className="condition told",
+        **{"data-stated": name, "data-title": TEXTS[name], "data-options": options},
+    )
 
 
 def _setting(name: str, words: str, unit: str, options: str) -> html.Div:

@@ -1,11 +1,10 @@
-"""What journals ask to be reported of current–voltage measurements: what the files say, and what is missing.
+"""What journals ask to be reported of current–voltage measurements: what files and user say, and what is missing.
 
 The list is common practice of the field's reporting checklists, without one source.
 """
 
 from __future__ import annotations
 
-import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
@@ -13,24 +12,12 @@ import numpy as np
 
 from app.units import celsius
 from app.wording import field, number
+from core.protocol import said
+from core.statements import TEXTS
 from core.sweep import Sweep
 from core.workspace import Workspace
 
 MISSING = "missing"
-
-# Words by which the keys of a file's header are known; the longest text that a cell of the table takes.
-_LIGHT_SOURCE = re.compile(r"(?i)\b(light source|lamp( type)?|solar simulator|simulator|lichtquelle|sonnensimulator)\b")
-_NO_SOURCE = re.compile(r"(?i)^\W*(on|off|yes|no|ein|aus)?\W*$|\d\s*(m?w\b|suns?\b|sonnen?\b|%)")  # a lamp's state or power, not its kind
-_SPECTRUM = re.compile(r"(?i)spectrum|spektrum|\bam ?1\.5|filter")
-_SETTING = re.compile(r"(?i)reference (cell|diode|device)|calibrat|mismatch|referenz|kalibri")
-_APERTURE, _ACTIVE = re.compile(r"(?i)apertur|mask|blende"), re.compile(r"(?i)active|aktiv")
-_DELAY = re.compile(r"(?i)\bdelay|settling|dwell|integration|verzögerung|wartezeit|haltezeit")
-_PRECONDITION = re.compile(r"(?i)pre-?condition|light ?soak|vorbehandlung|vorbeleuchtung|konditionierung")
-_STABILISED = re.compile(r"(?i)stabili[sz]ed|steady[ -]state|tracking|stabilisiert")
-_LONGEST = 120
-
-Says = Callable[[Sweep], str]
-
 
 @dataclass(frozen=True)
 class Item:
@@ -53,54 +40,54 @@ class Item:
 
 def reporting_items(workspace: Workspace, entries: Sequence[str]) -> list[Item]:
     """The table for these sweeps, an item a line."""
-    sweeps = [workspace.sweep(entry) for entry in entries]
-    light = [sweep for sweep in sweeps if sweep.lit]
+    light = [entry for entry in entries if workspace.sweep(entry).lit]
+
+    def item(name: str, of: Sequence[str], says: Callable[[Sweep], str]) -> Item:
+        return _item(workspace, name, of, lambda entry: says(workspace.sweep(entry)))
+
+    def stated(name: str, of: Sequence[str]) -> Item:
+        return _item(workspace, TEXTS[name], of, lambda entry: _said(workspace, entry, name))
+
     return [
-        _item("light source", light, _header(_LIGHT_SOURCE, but=_NO_SOURCE)),
-        _item("spectrum", light, _header(_SPECTRUM)),
-        _item("irradiance", light, lambda s: _unless_assumed(s, "irradiance", f"{field(1e3 * s.irradiance)} mW cm⁻²")),
-        _item("how irradiance was set", light, _header(_SETTING)),
-        _item("area", sweeps, _area),
-        _item("scan rate", sweeps, lambda s: MISSING if s.scan_rate is None else f"{field(1e3 * s.scan_rate)} mV s⁻¹"),
-        _item("scan direction", sweeps, lambda s: f"{s.direction}, {'light' if s.lit else 'dark'}"),
-        _item("voltage range and step", sweeps, _range),
-        _item("delay", sweeps, _header(_DELAY)),
-        _item("preconditioning", sweeps, _header(_PRECONDITION)),
-        _item("temperature", sweeps, lambda s: _unless_assumed(s, "temperature", f"{field(celsius(s.temperature))} °C")),
-        _item("stabilised output", light, _header(_STABILISED)),
+        stated("light_source", light),
+        stated("spectrum", light),
+        item("irradiance", light, lambda s: _unless_assumed(s, "irradiance", f"{field(1e3 * s.irradiance)} mW cm⁻²")),
+        stated("irradiance_setting", light),
+        _item(workspace, "area", entries, lambda entry: _area(workspace, entry)),
+        item("scan rate", entries, lambda s: MISSING if s.scan_rate is None else f"{field(1e3 * s.scan_rate)} mV s⁻¹"),
+        item("scan direction", entries, lambda s: f"{s.direction}, {'light' if s.lit else 'dark'}"),
+        item("voltage range and step", entries, _range),
+        stated("delay", entries),
+        stated("preconditioning", entries),
+        item("temperature", entries, lambda s: _unless_assumed(s, "temperature", f"{field(celsius(s.temperature))} °C")),
+        stated("stabilised_output", light),
         _devices(workspace, entries),
     ]
 
 
-def _item(name: str, sweeps: Sequence[Sweep], says: Says) -> Item:
-    said: dict[str, list[str]] = {}
-    for sweep in sweeps:
-        said.setdefault(says(sweep), []).append(sweep.name)
-    values = tuple((words, tuple(names)) for words, names in said.items())
-    return Item(name, values, MISSING in said, any(words.endswith("(assumed)") for words in said))
+def _item(workspace: Workspace, name: str, entries: Sequence[str], says: Callable[[str], str]) -> Item:
+    found: dict[str, list[str]] = {}
+    for entry in entries:
+        found.setdefault(says(entry), []).append(workspace.sweep(entry).name)
+    values = tuple((words, tuple(names)) for words, names in found.items())
+    return Item(name, values, MISSING in found, any(words.endswith("(assumed)") for words in found))
+
+
+def _said(workspace: Workspace, entry: str, name: str) -> str:
+    known = said(workspace, entry, name)
+    return known.words if known else MISSING
 
 
 def _unless_assumed(sweep: Sweep, condition: str, words: str) -> str:
     return f"{words} (assumed)" if condition in sweep.assumed else words
 
 
-def _header(key: re.Pattern[str], but: re.Pattern[str] = re.compile(r"^\s*$")) -> Says:
-    """What the header says under such keys, leaving out values that say nothing of it."""
-
-    def says(sweep: Sweep) -> str:
-        found = [f"{name}: {value}" for name, value in sweep.header.items() if key.search(name) and not but.search(value)]
-        return "; ".join(found)[:_LONGEST] or MISSING
-
-    return says
-
-
-def _area(sweep: Sweep) -> str:
-    if sweep.area is None:
+def _area(workspace: Workspace, entry: str) -> str:
+    area, kind = workspace.sweep(entry).area, said(workspace, entry, "area_kind")
+    if area is None:
         return MISSING
-    words = f"{field(sweep.area)} cm²"
-    keys = " ".join(sweep.header)
-    kind = "aperture" if _APERTURE.search(keys) else "active" if _ACTIVE.search(keys) else ""
-    return f"{words}, {kind} area" if kind else f"{words}; whether aperture or active area is not said"
+    words = f"{field(area)} cm²"
+    return f"{words}, {kind.words} area" if kind else f"{words}; whether aperture or active area is not said"
 
 
 def _range(sweep: Sweep) -> str:

@@ -203,6 +203,7 @@ def _sweep(
         notes=(*notes, *recorded.notes),
         header=dict(origin.header),
         assumed=frozenset(assumed),
+        read_unit=pair.read_unit,
     )
     if pair.density:
         return sweep.under(replace(conditions, file_area=_first(pair.area, recorded.area)))

@@ -38,6 +38,7 @@ class Pair:
     area: float | None = None
     magnitude: bool = False  # the file gives |current|
     assumed_units: bool = False
+    read_unit: str = ""  # of a current whose unit the file does not give
     notes: tuple[str, ...] = ()
 
 
@@ -214,7 +215,7 @@ def _with_units(
     volts = np.abs(finite(block.values[:, voltage.index]))
     voltage_factor, current_factor = voltage.label.factor, current.label.factor
     density = current.label.kind == "density"
-    assumed = False
+    assumed, read_unit = False, ""
     if voltage.title == "V" and float(np.max(volts, initial=0.0)) > _VOLTS_AT_MOST:
         voltage_factor = None  # the letter is the symbol, not the unit
     if voltage_factor is None:
@@ -233,7 +234,7 @@ def _with_units(
             unit, current_factor, density = "mA cm⁻²", 1e-3, True
         else:
             unit, current_factor = "A", 1.0
-        both = f"{voltage_unit} and {unit}" if assumed else unit
+        read_unit, both = unit, f"{voltage_unit} and {unit}" if assumed else unit
         said.append(f"No unit given: read as {both}; check that this is right.")
         assumed = True
     elif assumed:
@@ -263,6 +264,7 @@ def _with_units(
         area=area,
         magnitude=current.label.magnitude,
         assumed_units=assumed,
+        read_unit=read_unit,
         notes=tuple(said),
     )
 

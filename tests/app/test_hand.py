@@ -6,9 +6,12 @@ from dataclasses import replace
 import pytest
 
 from app.hand import MODEL_KINDS, moved, step_for
+from app.readout import condition_rows
+from app.stating import statement_rows
 from core import handles, steps
 from core.dials import dial_ranges
 from core.errors import ConditionRefused, StepRefused, SweepbenchError
+from core.statements import STATEMENTS
 from core.sweep import Conditions
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, REVERSE, bench, sweep_of
 
@@ -189,3 +192,48 @@ def test_without_a_curve_there_is_nothing_to_move():
     workspace, (entry,) = bench(LIT)
     with pytest.raises(StepRefused, match="first guess"):
         moved(workspace, {"kind": "dial", "entry": entry, "parameter": "ideality", "fraction": 0.5})
+
+
+def test_statements_come_in_per_cent_and_go_when_emptied(lit):
+    workspace, _ = lit
+    stated, _ = after(workspace, {"kind": "statement", "name": "area_uncertainty", "text": " 0,5 "})
+    assert stated.stated("area_uncertainty") == pytest.approx(0.005)
+    stated, _ = after(stated, {"kind": "statement", "name": "area_shared", "text": "yes"})
+    stated, _ = after(stated, {"kind": "statement", "name": "preconditioning", "text": "60 s in light"})
+    assert statement_rows(stated, next(iter(stated.entries)))["texts"] == {
+        **dict.fromkeys(STATEMENTS, ""), "area_uncertainty": "0.5", "area_shared": "yes", "preconditioning": "60 s in light",
+    }  # fmt: skip
+    for name in ("area_uncertainty", "area_shared", "preconditioning"):
+        stated, _ = after(stated, {"kind": "statement", "name": name, "text": ""})
+    assert stated.statements == {}
+    assert step_for(stated, {"kind": "statement", "name": "delay", "text": ""}) == (None, "")
+
+
+@pytest.mark.parametrize(("name", "text"), [("area_uncertainty", "much"), ("lamp_uncertainty", "101"), ("lamp_uncertainty", "-1"), ("mood", "good")])
+def test_a_statement_that_cannot_be_is_refused_in_a_sentence(lit, name, text):
+    with pytest.raises(ConditionRefused, match=r"[.”]$"):
+        step_for(lit[0], {"kind": "statement", "name": name, "text": text})
+
+
+def test_a_group_is_the_device_s_and_an_empty_one_takes_it_out():
+    workspace, entries = bench(LIT, REVERSE)
+    named, _ = after(workspace, {"kind": "condition", "entry": entries[0], "name": "group", "text": " run 7 "})
+    assert condition_rows(named, entries[1], named.sweep(entries[1]))["group"]["text"] == "run 7"
+    left, _ = after(named, {"kind": "condition", "entry": entries[1], "name": "group", "text": ""})
+    assert left.devices == workspace.devices
+
+
+def test_a_unit_is_asked_only_where_the_file_gives_none():
+    told, (entry,) = bench(LIT)
+    assert not condition_rows(told, entry, told.sweep(entry))["units"]["shown"]
+    with pytest.raises(ConditionRefused):
+        step_for(told, {"kind": "condition", "entry": entry, "name": "units", "text": "mA"})
+    bare = replace(LIT, assumed=frozenset({"units"}), read_unit="mA cm⁻²", conditions=Conditions(), read_as="density")
+    workspace, (entry,) = bench(bare)
+    row = condition_rows(workspace, entry, workspace.sweep(entry))["units"]
+    assert row == {"text": "mA cm⁻²", "assumed": True, "shown": True}
+    confirmed, _ = after(workspace, {"kind": "confirm", "entry": entry, "names": ["units"]})
+    assert not condition_rows(confirmed, entry, confirmed.sweep(entry))["units"]["assumed"]
+    changed, _ = after(workspace, {"kind": "condition", "entry": entry, "name": "units", "text": "mA"})
+    assert not changed.sweep(entry).per_area
+    assert condition_rows(changed, entry, changed.sweep(entry))["units"] == {"text": "mA", "assumed": False, "shown": True}

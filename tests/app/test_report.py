@@ -241,6 +241,16 @@ def test_the_reporting_table_reads_the_header_and_marks_what_is_missing():
     assert both["temperature"].assumed and "not said" in both["area"].values[1][0]
 
 
+def test_what_the_user_states_fills_the_table_where_the_files_are_silent():
+    workspace, entries = bench(replace(LIT, header={"Settling time": "20 ms"}), OTHER)
+    for name, text in (("delay", "5 ms"), ("light_source", "xenon, class AAA"), ("area_kind", "aperture")):
+        workspace = steps.apply(workspace, steps.state(workspace, name, text))
+    items = {item.name: item for item in reporting_items(workspace, entries)}
+    assert [words for words, _ in items["delay"].values] == ["Settling time: 20 ms", "5 ms"]
+    assert items["light source"].values[0][0] == "xenon, class AAA" and not items["light source"].missing
+    assert items["area"].values[0][0].endswith("aperture area") and items["spectrum"].missing
+
+
 def test_every_source_is_cited_as_core_cites_it():
     folder = Path(core.__file__).parent
     cited = " ".join(re.sub(r"\s+", " ", path.read_text(encoding="utf-8")) for path in folder.glob("*.py"))

@@ -125,7 +125,7 @@ class Visitor:
         assert status == 200, content
         found = archive.unpack(content).workspace
         revision = json.loads(self.ask("GET", f"/live/{workspace}")[1])["revision"]
-        return Workspace(workspace, found.name, revision, found.devices, found.entries, found.fits)
+        return Workspace(workspace, found.name, revision, found.devices, found.entries, found.fits, found.statements)
 
 
 def _outputs(wire: Mapping[str, Any]) -> list[str]:

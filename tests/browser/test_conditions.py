@@ -128,3 +128,59 @@ def test_a_finger_drags_a_grip_the_whole_way(lit: Tab):
     assert abs(lit.grip("saturation_current").x - way[-1].x) < 2
     assert lit.model.saturation_current > LIT_MODEL.saturation_current
     lit.assert_agreement()
+
+
+def test_the_record_is_typed_kept_and_undone(lit):
+    tab = lit
+    tab.find("[data-panel-choice=record]").click()
+    delay = tab.find(".told[data-stated=delay] input")
+    delay.fill("20 ms")
+    with tab.one_change():
+        delay.press("Enter")
+    with tab.one_change():
+        tab.find(".told[data-stated=area_kind] select").select_option("aperture")
+    assert (tab.stored.stated("delay"), tab.stored.stated("area_kind")) == ("20 ms", "aperture")
+    lamp = tab.find(".panel [data-stated=lamp_uncertainty] input")
+    lamp.fill("0.5")
+    with tab.one_change():
+        lamp.press("Enter")
+    switch = tab.find(".panel [data-stated-switch]")
+    with tab.one_change():
+        switch.click()
+    expect(switch).to_have_attribute("aria-checked", "true")
+    assert (tab.stored.stated("lamp_uncertainty"), tab.stored.stated("area_shared")) == (0.005, True)
+    tab.reload()
+    assert delay.input_value() == "20 ms" and lamp.input_value() == "0.5"
+    with tab.one_change():
+        switch.click()
+    assert tab.stored.stated("area_shared") is None
+    with tab.one_change():
+        tab.button("undo").click()
+    expect(switch).to_have_attribute("aria-checked", "true")
+
+
+def test_a_file_without_units_is_read_in_the_unit_that_is_chosen(tab, files):
+    bare = files / "bare.txt"
+    voltage = np.linspace(-0.05, 1.1, 40)
+    bare.write_text("\n".join(f"{v:.4f}\t{1e3 * LIT_MODEL.current(v):.6f}" for v in voltage), encoding="utf-8")
+    tab.drop(bare)
+    tab.until("rows", 1)
+    tab.settle()
+    row = tab.find("[data-condition=units]")
+    assert row.locator("select").input_value() == "mA cm⁻²" and row.locator(".assumed").is_visible()
+    with tab.one_change():
+        row.locator("select").select_option("mA")
+    assert not tab.sweep.per_area and tab.dial("photocurrent").locator(".unit").inner_text() == "A"
+    assert row.locator(".assumed").is_hidden()
+    assert abs(tab.sweep.current).max() == pytest.approx(abs(1e3 * LIT_MODEL.current(voltage)).max() * 1e-3, rel=1e-4)
+    with tab.one_change():
+        tab.button("undo").click()
+    assert tab.sweep.per_area and row.locator(".assumed").is_visible()
+
+
+def test_a_group_is_typed_where_the_conditions_are(lit):
+    field = lit.find("[data-condition=group] input")
+    field.fill("run 7")
+    with lit.one_change():
+        field.press("Enter")
+    assert {device.group for device in lit.stored.devices.values()} == {"run 7"}

@@ -145,35 +145,44 @@ def test_what_if_follows_the_hand_by_mouse_and_by_keys_on_both_axes(three):
 
 def test_what_is_known_of_area_and_lamp_weighs_and_nonsense_is_told(three):
     tab, _ = three
-    area, lamp = tab.find("[data-budget=area] input"), tab.find("[data-budget=lamp] input")
-    for field, text in ((area, "0.2"), (lamp, "0.2")):
-        field.fill(text)
-        field.press("Enter")
-    expect(tab.find("[data-compared=pmp] [data-column=verdict]")).to_have_text("stands out")
+    area, lamp = (tab.find(f".budget [data-stated={name}_uncertainty] input") for name in ("area", "lamp"))
+    verdict = tab.find("[data-compared=pmp] [data-column=verdict]")
+    area.fill("0.2")
+    area.press("Enter")
+    lamp.fill("0.2")
+    lamp.press("Enter")
+    until(tab, "sweepbench.pair.stated.lamp_uncertainty === '0.2'")
+    expect(verdict).to_have_text("stands out")
     assert "stands out" in tab.text("#pair-story")
+    assert tab.stored.stated("area_uncertainty") == tab.stored.stated("lamp_uncertainty") == 0.002
     area.fill("plenty")
     area.press("Enter")
     tab.until("says", "“plenty” is not a number")
-    expect(tab.find("[data-compared=pmp] [data-column=verdict]")).to_have_text("cannot be told")
+    expect(area).to_have_value("0.2")
+    row = tab.find("[data-compared=pmp]")
     area.fill("")
     area.press("Enter")
-    switch = tab.find("[data-budget-switch=area_shared]")
+    expect(row).to_have_attribute("title", re.compile("area"))  # named as not known
+    switch = tab.find(".budget [data-stated-switch=area_shared]")
     switch.click()
     expect(switch).to_have_attribute("aria-checked", "true")
-    expect(tab.find("[data-compared=pmp] [data-column=verdict]")).to_have_text("stands out")
+    expect(row).not_to_have_attribute("title", re.compile("area"))
+    tab.find("#undo").click()
+    expect(switch).to_have_attribute("aria-checked", "false")
+    expect(row).to_have_attribute("title", re.compile("area"))
 
 
 def test_an_answer_leaves_alone_what_is_being_typed(three):
     tab, _ = three
-    area, lamp = tab.find("[data-budget=area] input"), tab.find("[data-budget=lamp] input")
+    area, lamp = (tab.find(f".budget [data-stated={name}_uncertainty] input") for name in ("area", "lamp"))
     with tab.answers_held():
         area.fill("0.2")
         area.press("Enter")
         lamp.fill("0.3")
-    until(tab, "sweepbench.pair.budget.area === '0.2'")
+    until(tab, "sweepbench.pair.stated.area_uncertainty === '0.2'")
     assert lamp.input_value() == "0.3"
     lamp.press("Enter")
-    until(tab, "sweepbench.pair.budget.lamp === '0.3'")
+    until(tab, "sweepbench.pair.stated.lamp_uncertainty === '0.3'")
     assert area.input_value() == "0.2"
 
 

@@ -10,7 +10,7 @@ from core.budget import Budget, budget_of
 from core.diode import OneDiode
 from core.metrics import measure
 from core.quantity import Metrics, Quantity
-from core.steps import add_sweeps, apply, set_group
+from core.steps import add_sweeps, apply, set_group, state
 from core.sweep import Conditions, Sweep
 from core.verdict import AREA, DIRECTION, LAMP, METRICS, NOISE, SCATTER, stands_out
 from core.workspace import Workspace
@@ -229,7 +229,9 @@ def test_a_workspace_knows_the_other_direction_and_the_group():
         asked.append(entry_id)
         return measure(workspace.sweep(entry_id))
 
-    budget = budget_of(workspace, ids["A forward"], ids["D forward"], metrics_of, area=0.01, lamp=0.002)
+    for name, value in (("area_uncertainty", 0.01), ("lamp_uncertainty", 0.002)):
+        workspace = apply(workspace, state(workspace, name, value))
+    budget = budget_of(workspace, ids["A forward"], ids["D forward"], metrics_of)
     assert budget.other_direction_a.jsc.value == pytest.approx(1.01 * 0.022, rel=3e-3)
     assert budget.other_direction_b is None
     assert sorted(member.jsc.value for member in budget.group_a) == pytest.approx([0.0215, 0.022, 0.0225], rel=3e-3)
