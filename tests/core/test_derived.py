@@ -66,6 +66,18 @@ def test_voc_at_temperature_agrees_with_the_saturation_current_law():
     assert voc_at_temperature(0.65, 1.206, 298.15, 333.15) == pytest.approx(expected, rel=1e-12)
 
 
+def test_fill_factor_of_an_ideal_silicon_cell_falls_with_temperature():
+    """(1/FF) dFF/dT of an ideal diode with Voc 0.65 V at 298.15 K: −0.00094 /K, recomputed (print: about −0.0015, from memory)."""
+
+    def fill_factor(temperature):
+        voc = voc_at_temperature(0.65, 1.206, 298.15, temperature)
+        saturation = 0.035 / math.expm1(voc / thermal_voltage(temperature))
+        return OneDiode(0.035, saturation, 1.0, 0.0, math.inf, temperature=temperature).landmarks().fill_factor
+
+    slope = (fill_factor(298.65) - fill_factor(297.65)) / fill_factor(298.15)
+    assert slope == pytest.approx(-0.00094, abs=5e-6)
+
+
 def test_cells_in_series_add_their_coefficients():
     module = voc_temperature_coefficient(36 * 0.65, 1.206, 298.15, series_cells=36)
     assert module == pytest.approx(36 * voc_temperature_coefficient(0.65, 1.206, 298.15), rel=1e-12)

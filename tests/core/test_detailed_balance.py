@@ -20,6 +20,7 @@ from core.detailed_balance import (
     radiative_voltage,
     spectrum,
 )
+from core.diode import OneDiode
 from core.errors import ConditionRefused
 from core.limit_check import check_against_limit
 from core.quantity import Quantity
@@ -218,3 +219,23 @@ def test_a_photocurrent_above_the_limit_is_a_finding():
 @pytest.mark.parametrize("jsc", [Quantity(0.025, 1e-5), Quantity(0.02548, 1e-5), Quantity(None, None, "not reached")])
 def test_a_photocurrent_at_or_below_the_limit_is_none(jsc):
     assert check_against_limit(jsc, 1.6) == ()
+
+
+@pytest.mark.parametrize(("emission", "efficiency", "best"), [("both", 29.35, 30.40), ("front", 30.04, 30.97)])
+def test_a_black_body_sun_as_in_the_paper_of_1961(emission, efficiency, best):
+    """Shockley and Queisser, J. Appl. Phys. 32 (1961) 510 (from memory): a 6000 K sun, a 300 K cell, about 30 % at 1.1 eV.
+
+    Recomputed with a dilution of 2.18e-5; the light is worked out here, the cell's emission and its curve in core.
+    """
+    energy = np.linspace(1e-3, 12.0, 200_001) * constants.e
+    photons = 2 * np.pi / (constants.h**3 * constants.c**2) * energy**2 / np.expm1(energy / (constants.k * 6000))
+    sun = 2.18e-5 * np.trapezoid(photons * energy, energy)  # W m⁻²
+
+    def percent(gap):
+        above = energy >= gap * constants.e
+        photocurrent = 1e-4 * constants.e * 2.18e-5 * np.trapezoid(photons[above], energy[above])
+        emitted = radiative_saturation_current(gap, 300.0, emission)
+        return 100 * OneDiode(photocurrent, emitted, 1.0, 0.0, math.inf, temperature=300.0).landmarks().pmp / (1e-4 * sun)
+
+    assert percent(1.1) == pytest.approx(efficiency, abs=0.02)
+    assert max(percent(gap) for gap in np.arange(1.25, 1.40, 0.005)) == pytest.approx(best, abs=0.02)
