@@ -51,8 +51,19 @@ def create_app(store: Store, door: Door, jobs: Jobs) -> Dash:
         activity.register(app, store, jobs)
     live.register(app.server, store)
     files.register(app.server, store)
+    _complete(app)
     door.guard(app.server)
     return app
+
+
+def _complete(app: Dash) -> None:
+    """Let Dash find assets and callbacks now.
+
+    It would do so on the first request, and a second one that came meanwhile (a browser asks for the page and its icon
+    at once) would get a page without style sheets and scripts.
+    """
+    with app.server.test_request_context():
+        app.server.preprocess_request()
 
 
 def first_readable(store: Store) -> Workspace:

@@ -3,9 +3,15 @@
 import base64
 import contextlib
 import hashlib
+import http.client
+import os
 import re
+import threading
+import time
+from concurrent.futures import ThreadPoolExecutor
 from html.parser import HTMLParser
 from pathlib import Path
+from urllib.parse import urlsplit
 
 import pytest
 from dash.development.base_component import Component
@@ -21,6 +27,7 @@ from app.layout.page import page as whole_page
 from app.places import ASSETS
 from app.readout import METRIC_ROWS, condition_rows
 from app.server import create_app
+from app.serving import serve
 from core.store import Store
 from tests.app.benches import LIT, bench
 
@@ -159,3 +166,31 @@ def test_two_applications_live_side_by_side(app, tmp_path):
         other = create_app(store, Door(8418), jobs)
         assert other.callback_map.keys() == app.callback_map.keys()
         assert other.server is not app.server
+
+
+def test_the_first_requests_get_the_whole_page_even_when_they_come_at_once(tmp_path, monkeypatch):
+    """A browser asks for a page and its icon together, and a disk may be slow."""
+
+    def slowly(*where, walk=os.walk, **how):
+        time.sleep(0.3)
+        return walk(*where, **how)
+
+    monkeypatch.setattr("os.walk", slowly)
+    with serve(tmp_path) as running:
+        link = urlsplit(running.entry_url)
+        with contextlib.closing(http.client.HTTPConnection(link.netloc)) as entrance:
+            entrance.request("GET", f"{link.path}?{link.query}")
+            answer = entrance.getresponse()
+        cookie = "; ".join(value.partition(";")[0] for value in answer.headers.get_all("Set-Cookie"))
+        ready = threading.Barrier(6)
+
+        def page_at_once(_):
+            with contextlib.closing(http.client.HTTPConnection(link.netloc)) as connection:
+                connection.connect()
+                ready.wait()
+                connection.request("GET", "/", headers={"Cookie": cookie})
+                return connection.getresponse().read().decode()
+
+        with ThreadPoolExecutor(6) as pool:
+            pages = list(pool.map(page_at_once, range(6)))
+    assert [page.count("/assets/") for page in pages] == [len(SCRIPTS) + len(STYLES)] * 6
