@@ -18,7 +18,14 @@ from core.workspace import Workspace
 
 from .mechanisms import BY_PARAMETER
 from .units import Units, celsius
-from .wording import concise, field, number, plus_minus, with_uncertainty
+from .wording import (
+    concise,
+    difference,
+    field,
+    number,
+    plus_minus,
+    with_uncertainty,
+)
 
 # A sweep never changes, so what is read off it is read once.
 measured = lru_cache(maxsize=4096)(measure)
@@ -151,8 +158,8 @@ def _model_cells(quantity: Quantity, modelled: float | None, factor: float) -> d
     shown = {"model": number(modelled * factor)}
     if quantity.value is None:
         return {**shown, "difference": "–"}
-    gap = (modelled - quantity.value) * factor
-    return {**shown, "difference": ("+" if gap > 0 else "") + number(gap, digits=2)}
+    uncertainty = None if quantity.uncertainty is None else quantity.uncertainty * factor
+    return {**shown, "difference": difference((modelled - quantity.value) * factor, uncertainty)}
 
 
 def _modelled(name: str, sweep: Sweep, marks: Landmarks | None) -> float | None:

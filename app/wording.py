@@ -112,5 +112,16 @@ def power_change(change: float) -> str:
     return "0.00" if text in ("+0.00", "−0.00") else text
 
 
+def difference(gap: float, uncertainty: float | None) -> str:
+    """A difference with its sign, as far as the uncertainty of the measured value reaches: ``+0.02``, ``0.00``."""
+    if not uncertainty or not math.isfinite(uncertainty) or not math.isfinite(gap):
+        return ("+" if gap > 0 else "") + number(gap, digits=2)
+    decimals = -_exponent(float(f"{uncertainty:.0e}"))
+    if not 0 <= decimals <= _MOST_DIGITS:
+        return ("+" if gap > 0 else "") + number(gap, uncertainty)
+    text = f"{gap:+.{decimals}f}".replace("-", "−")
+    return text if text.strip("+−0.") else text[1:]
+
+
 def plus_minus(uncertainty: float) -> str:
     return number(uncertainty, digits=2)

@@ -123,7 +123,11 @@ def test_measured_and_model_stand_beside_each_other_with_their_difference():
 def test_a_difference_is_model_less_measured_and_carries_its_sign():
     higher = readout.metric_rows(LIT, replace(CELL, photocurrent=0.024).landmarks())["jsc"]
     lower = readout.metric_rows(LIT, replace(CELL, photocurrent=0.020).landmarks())["jsc"]
-    assert (higher["difference"], lower["difference"]) == ("+2.0", "−2.0")
+    assert [cell[0] for cell in (higher["difference"], lower["difference"])] == ["+", "−"]
+    assert [float(cell[1:]) for cell in (higher["difference"], lower["difference"])] == pytest.approx([2, 2], abs=0.01)
+    # As many decimals as the measured value has, and no more.
+    decimals = [len(cells.partition("(")[0].partition(".")[2]) for cells in (higher["measured"], higher["difference"])]
+    assert decimals[0] == decimals[1] > 0
 
 
 def test_what_the_sweep_does_not_reach_has_a_reason_instead_of_a_number():
@@ -189,6 +193,8 @@ def test_conditions_are_shown_in_the_units_of_the_lab_and_assumed_until_confirme
         "irradiance": "100",
         "series_cells": "1",
         "lit": "light",
+        "units": "as given",
+        "group": "",
     }
     assert {name for name, row in rows.items() if row["assumed"]} == {"temperature", "irradiance", "series_cells"}
     confirmed = steps.apply(workspace, steps.confirm_conditions(workspace, entry, ["temperature"]))

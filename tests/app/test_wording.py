@@ -8,7 +8,14 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from app.units import ABSOLUTE, DENSITY, Units, celsius, kelvin
-from app.wording import concise, field, number, parse_number, with_uncertainty
+from app.wording import (
+    concise,
+    difference,
+    field,
+    number,
+    parse_number,
+    with_uncertainty,
+)
 from core.diode import PARAMETERS
 from core.errors import ConditionRefused
 
@@ -161,3 +168,11 @@ def test_densities_are_shown_per_area_and_currents_in_amperes():
 def test_temperatures_are_shown_in_degrees_celsius():
     assert celsius(298.15) == pytest.approx(25.0)
     assert celsius(kelvin(-40.0)) == pytest.approx(-40.0)
+
+
+@pytest.mark.parametrize(
+    ("gap", "uncertainty", "text"),
+    [(4.4e-7, 2e-5, "0.00000"), (-0.017, 0.02, "−0.02"), (0.5, None, "+0.50"), (12, 30, "+12"), (0.0, 1e-3, "0.000"), (-1.26, 0.1, "−1.3")],
+)
+def test_a_difference_goes_as_far_as_what_it_is_taken_from(gap, uncertainty, text):
+    assert difference(gap, uncertainty) == text
