@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from itertools import combinations
 
 import numpy as np
 
@@ -21,7 +22,9 @@ from .weighting import point_weights
 
 # More points than this are averaged to so many before the grid is searched; it makes the guess fast and calm.
 _ENOUGH_POINTS = 40
-_SLOPES, _RESISTANCES = 13, (0.0, 0.08, 0.2, 0.36, 0.52, 0.68, 0.83, 0.97)
+# Values of m at even ratios, and Rs as shares of the largest that the curve allows.
+_EVENLY = np.linspace(0.0, 1.0, 13)
+_RESISTANCES = np.array([0.0, 0.08, 0.2, 0.36, 0.52, 0.68, 0.83, 0.97])
 # Saturation current given to a sweep that shows no diode, as a share of the characteristic current.
 _FAINT = 1e-30
 _LEAST_DAMPING = 0.02  # no point counts less, whatever noise does to its slope
@@ -94,23 +97,25 @@ def _ranked(sweep: Sweep, hold: Mapping[str, float], count: int) -> list[OneDiod
     cell_voltage = sweep.series_cells * thermal_voltage(sweep.temperature)
     chosen: list[tuple[float, OneDiode]] = []
     taken: list[int] = []
-    for node in np.argsort(cost):
+    for node in np.argsort(cost).tolist():
+        resistance, slope = divmod(node, slopes.size)
         # Neighbours on the grid lead to the same valley.
-        if any(abs(node // resistances.size - other // resistances.size) < 2 for other in taken):
+        if any(abs(slope - other) < 2 for other in taken):
             continue
-        photocurrent, saturation, conductance = (float(value) for value in solution[node])
+        photocurrent, saturation, conductance = solution[:, node].tolist()
         model = OneDiode(
             photocurrent=photocurrent,
             saturation_current=hold.get("saturation_current", max(saturation, _FAINT * size.current)),
-            ideality=hold.get("ideality", float(slopes[node // resistances.size]) / cell_voltage),
-            series_resistance=hold.get("series_resistance", float(resistances[node % resistances.size])),
+            ideality=hold.get("ideality", float(slopes[slope]) / cell_voltage),
+            series_resistance=hold.get("series_resistance", float(resistances[resistance])),
             shunt_resistance=hold.get("shunt_resistance", 1.0 / conductance if conductance > 0 else math.inf),
             series_cells=sweep.series_cells,
             temperature=sweep.temperature,
         )
         miss = weight * (model.current(voltage) - current)
-        chosen.append((float(np.nan_to_num(miss @ miss, nan=np.inf)), model))
-        taken.append(int(node))
+        squares = float(miss @ miss)
+        chosen.append((squares if math.isfinite(squares) else math.inf, model))
+        taken.append(slope)
         if len(chosen) >= max(count, 3):
             break
     chosen.sort(key=lambda pair: pair[0])
@@ -153,10 +158,10 @@ def _grid(
     else:
         high = max(size.voltage / 4, 2.2 * cell_voltage)
         low = min(max(size.voltage / 60, 0.6 * cell_voltage), high / 6)
-        slopes = np.geomspace(low, high, _SLOPES)
+        slopes = low * (high / low) ** _EVENLY
     if "series_resistance" in hold:
         return slopes, np.array([hold["series_resistance"]])
-    return slopes, steepest_resistance(size, voltage, current) * np.array(_RESISTANCES)
+    return slopes, steepest_resistance(size, voltage, current) * _RESISTANCES
 
 
 def steepest_resistance(size: Scales, voltage: np.ndarray, current: np.ndarray) -> float:
@@ -176,47 +181,65 @@ def _solve_grid(
     resistances: np.ndarray,
     hold: Mapping[str, float],
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Cost and (Jph, J0, 1/Rsh) at each node, slopes outermost: shapes (nodes,) and (nodes, 3)."""
+    """Cost and (Jph, J0, 1/Rsh) at each node, resistances outermost: shapes (nodes,) and (3, nodes)."""
     junction = voltage + resistances[:, None] * current  # (r, n)
-    exponent = junction[None, :, :] / slopes[:, None, None]  # (m, r, n)
-    top = np.maximum(np.max(exponent, axis=2, keepdims=True), 0.0)
     # Divided by its largest value, so that nothing overflows; J0 is multiplied by it in turn.
-    diode = np.exp(np.maximum(exponent - top, -700.0))
-    growth = (diode - np.exp(-top)).reshape(-1, voltage.size)
-    scale = np.exp(np.minimum(top, 690.0)).reshape(-1)
-    rows = np.empty((growth.shape[0], 4, voltage.size))  # the three columns of the equation, and what they shall give
-    rows[:, 0] = 1.0
-    rows[:, 1] = -growth
-    rows[:, 2] = -np.tile(junction, (slopes.size, 1))
-    rows[:, 3] = current
+    top = np.maximum(junction.max(axis=1)[:, None] / slopes, 0.0)  # (r, m)
+    growth = np.exp(junction[:, None, :] / slopes[:, None] - top[:, :, None]) - np.exp(-top)[:, :, None]  # (r, m, n)
+    counted = weight * damping_of(resistances[:, None], voltage, current)
+    gram = _normal(-counted[:, None, :] * growth, np.stack([counted, -counted * junction, counted * current], axis=1))
+    scale = np.exp(np.minimum(top, 690.0)).ravel()
+    solution = np.zeros((3, scale.size))
     given = {
         0: hold.get("photocurrent"),
         1: None if "saturation_current" not in hold else hold["saturation_current"] * scale,
         2: None if "shunt_resistance" not in hold else 1.0 / hold["shunt_resistance"],
     }
-    solution = np.zeros((growth.shape[0], 3))
     for index, value in given.items():
-        if value is not None:
-            solution[:, index] = value
-            rows[:, 3] -= rows[:, index] * solution[:, index : index + 1]
-    damping = damping_of(resistances[:, None], voltage, current)
-    rows *= (weight * np.tile(damping, (slopes.size, 1)))[:, None, :]
-    free = [index for index, value in given.items() if value is None]
-    cost = _non_negative(rows, free, solution)
-    solution[:, 1] /= scale
+        if value is not None:  # what it carries is taken off the target, in its row and in its column
+            solution[index] = value
+            gram[3] -= solution[index] * gram[index]
+            gram[:, 3] -= solution[index] * gram[:, index]
+    cost = _non_negative(gram, [index for index, value in given.items() if value is None], solution)
+    solution[1] /= scale
     return np.where(np.isfinite(cost), cost, np.inf), solution
 
 
-def _non_negative(rows: np.ndarray, free: list[int], solution: np.ndarray) -> np.ndarray:
+def _normal(diode: np.ndarray, others: np.ndarray) -> np.ndarray:
+    """Products of the columns of the equation, summed over the points, at every node.
+
+    Parameters
+    ----------
+    diode : ndarray, shape (r, m, n)
+        Column of J0, the only one that m changes.
+    others : ndarray, shape (r, 3, n)
+        Columns of Jph and 1/Rsh, and the target.
+
+    Returns
+    -------
+    ndarray, shape (4, 4, nodes)
+        In the order Jph, J0, 1/Rsh, target.
+    """
+    gram = np.empty((4, 4, *diode.shape[:2]))
+    fixed, mixed = others @ others.transpose(0, 2, 1), diode @ others.transpose(0, 2, 1)
+    for i, row in enumerate((0, 2, 3)):
+        gram[row, 1] = gram[1, row] = mixed[:, :, i]
+        for j, column in enumerate((0, 2, 3)):
+            gram[row, column] = fixed[:, i, j, None]
+    gram[1, 1] = np.einsum("rmn,rmn->rm", diode, diode)
+    return gram.reshape(4, 4, -1)
+
+
+def _non_negative(gram: np.ndarray, free: list[int], solution: np.ndarray) -> np.ndarray:
     """Non-negative least squares at every node at once, by trying the sets of zeros where they are needed.
 
     Parameters
     ----------
-    rows : ndarray, shape (nodes, 4, n)
-        Columns of the three unknowns, then the target.
+    gram : ndarray, shape (4, 4, nodes)
+        Products of the columns of the three unknowns and of the target.
     free : list of int
         Unknowns to solve for.
-    solution : ndarray, shape (nodes, 3)
+    solution : ndarray, shape (3, nodes)
         The free unknowns are written here.
 
     Returns
@@ -224,29 +247,26 @@ def _non_negative(rows: np.ndarray, free: list[int], solution: np.ndarray) -> np
     ndarray, shape (nodes,)
         Sums of squared residuals.
     """
-    gram, norm = _normal(rows)
-    best = np.ones(gram.shape[0])  # share of the target's own squares
-    solution[:, free] = 0.0
-    patterns = [[i for bit, i in enumerate(free) if mask >> bit & 1] for mask in range(1, 2 ** len(free))]
-    open_nodes = np.arange(gram.shape[0])
-    for pattern in sorted(patterns, key=len, reverse=True):
-        if 1 in free and 1 not in pattern:
-            continue  # a curve without a diode is no start
-        part = gram[open_nodes]
-        answer = _solved(part, pattern)
-        cost = 1.0 - np.einsum("ki,ki->k", answer, part[:, pattern, 3])
-        better = (cost < best[open_nodes]) & (answer >= 0).all(axis=1)
-        nodes = open_nodes[better]
-        best[nodes] = cost[better]
-        for column in free:
-            solution[nodes, column] = 0.0
-        for place, column in enumerate(pattern):
-            solution[nodes, column] = answer[better, place] * norm[nodes, 3] / norm[nodes, column]
-        if len(pattern) == len(free):  # nothing beats a solution with nothing at zero
-            open_nodes = open_nodes[~better]
-        if open_nodes.size == 0:
+    norm = np.sqrt(np.maximum(np.einsum("iik->ik", gram), 1e-300))
+    gram = gram / (norm[:, None] * norm)
+    best = np.ones(norm.shape[1])  # share of the target's own squares
+    solution[free] = 0.0
+    needed = {1} & set(free)  # a curve without a diode is no start
+    for size in range(len(free), 0, -1):
+        still_open = best >= 1.0  # nothing beats a solution with fewer zeros
+        if not still_open.any():
             break
-    return best * norm[:, 3] ** 2
+        for pattern in map(list, combinations(free, size)):
+            if not needed <= set(pattern):
+                continue
+            answer = _solved(gram, pattern)
+            cost = 1.0 - (answer * gram[pattern, 3]).sum(axis=0)
+            better = still_open & (cost < best) & (answer >= 0).all(axis=0)
+            best[better] = cost[better]
+            solution[free] = np.where(better, 0.0, solution[free])
+            solution[pattern] = np.where(better, answer, solution[pattern])
+    solution[free] *= norm[3] / norm[free]
+    return best * norm[3] ** 2
 
 
 def damping_of(resistance: np.ndarray | float, voltage: np.ndarray, current: np.ndarray) -> np.ndarray:
@@ -266,13 +286,12 @@ def _steepness(voltage: np.ndarray, current: np.ndarray) -> np.ndarray:
     return np.where(span > 0, (current[ahead] - current[behind]) / np.where(span > 0, span, 1.0), 0.0)
 
 
-def _normal(rows: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Normal matrix of scaled rows at every node, and the scales."""
-    gram = rows @ rows.transpose(0, 2, 1)
-    norm = np.sqrt(np.maximum(np.einsum("kii->ki", gram), 1e-300))
-    return gram / (norm[:, :, None] * norm[:, None, :]), norm
-
-
 def _solved(gram: np.ndarray, pattern: list[int]) -> np.ndarray:
-    matrix = gram[:, pattern][:, :, pattern] + 1e-12 * np.eye(len(pattern))
-    return np.linalg.solve(matrix, gram[:, pattern, 3, None])[:, :, 0]
+    """Normal equations of some unknowns at every node, shape (unknowns, nodes): Gauss–Jordan elimination, which needs
+    no pivoting for a positive matrix, at all nodes together."""
+    rows = gram[pattern][:, [*pattern, 3]]
+    for pivot in range(len(pattern)):
+        row = rows[pivot] / (rows[pivot, pivot] + 1e-12)
+        rows -= rows[:, pivot, None] * row
+        rows[pivot] = row
+    return rows[:, -1]
