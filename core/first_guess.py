@@ -43,15 +43,15 @@ class Scales:
 def scales(sweep: Sweep) -> Scales:
     """Voc and Jsc, roughly; the ends of the sweep where it does not reach them."""
     voltage, current = sweep.voltage, sweep.current
-    largest = max(float(np.max(np.abs(current), initial=0.0)), 1e-30)
-    highest = float(np.max(voltage, initial=0.0)) or float(np.max(np.abs(voltage), initial=0.0)) or 1.0
+    largest = max(float(np.abs(current).max(initial=0.0)), 1e-30)
+    highest = float(voltage.max(initial=0.0)) or float(np.abs(voltage).max(initial=0.0)) or 1.0
     if not sweep.lit:
         return Scales(highest, largest)
     delivering = (current > 0) & (voltage > 0)
-    reach = float(np.max(voltage[delivering], initial=0.0))
+    reach = float(voltage[delivering].max(initial=0.0))
     # At V ≥ 0 only: a shunted or breaking-down device carries far more current in reverse.
     forward = current[delivering]
-    return Scales(max(reach, 0.05 * highest), float(np.max(forward, initial=0.0)) or largest)
+    return Scales(max(reach, 0.05 * highest), float(forward.max(initial=0.0)) or largest)
 
 
 def first_guess(sweep: Sweep, hold: Mapping[str, float] = {}) -> OneDiode:
@@ -80,7 +80,7 @@ def first_guess(sweep: Sweep, hold: Mapping[str, float] = {}) -> OneDiode:
 def starts(sweep: Sweep, hold: Mapping[str, float] = {}, count: int = 1) -> list[OneDiode]:
     """The best ``count`` nodes of the grid that differ clearly, best first. Raises as ``first_guess`` does."""
     usable = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
-    if not np.all(usable):
+    if not usable.all():
         sweep = replace(sweep, voltage=sweep.voltage[usable], current=sweep.current[usable])
     refuse_if_hopeless(sweep.voltage, sweep.current)
     if not sweep.lit:
@@ -167,7 +167,7 @@ def _grid(
 def steepest_resistance(size: Scales, voltage: np.ndarray, current: np.ndarray) -> float:
     """The largest Rs to try: the curve is nowhere steeper than Rs alone would make it, so its steepest end bounds Rs."""
     tail = max(3, voltage.size // 12)
-    spread = voltage[-tail:] - np.mean(voltage[-tail:])
+    spread = voltage[-tail:] - voltage[-tail:].mean()
     steepness = -float(spread @ current[-tail:]) / max(float(spread @ spread), 1e-300)
     natural = size.voltage / size.current
     return min(1.1 / steepness, natural) if steepness * natural > 1 else natural
@@ -275,15 +275,21 @@ def damping_of(resistance: np.ndarray | float, voltage: np.ndarray, current: np.
     The equation misses 1 + Rs·(dJ/du) times what the curve misses at that voltage, and the slope of the measured curve
     tells that factor: 1/(1 + Rs·(dJ/du)) = 1 + Rs·(dJ/dV).
     """
-    return np.clip(1.0 + resistance * _steepness(voltage, current), _LEAST_DAMPING, 1.0)
+    return np.minimum(np.maximum(1.0 + resistance * _steepness(voltage, current), _LEAST_DAMPING), 1.0)
 
 
 def _steepness(voltage: np.ndarray, current: np.ndarray) -> np.ndarray:
     """dJ/dV between the neighbours of each point; zero where they lie at one voltage."""
-    ahead = np.minimum(np.arange(voltage.size) + 1, voltage.size - 1)
-    behind = np.maximum(np.arange(voltage.size) - 1, 0)
-    span = voltage[ahead] - voltage[behind]
-    return np.where(span > 0, (current[ahead] - current[behind]) / np.where(span > 0, span, 1.0), 0.0)
+    span, rise = _across(voltage), _across(current)
+    return np.where(span > 0, rise / np.where(span > 0, span, 1.0), 0.0)
+
+
+def _across(values: np.ndarray) -> np.ndarray:
+    """Difference of the neighbours of each point; at either end, of the point and its one neighbour."""
+    across = values.copy()
+    across[1:-1] = values[2:] - values[:-2]
+    across[0], across[-1] = values[1] - values[0], values[-1] - values[-2]
+    return across
 
 
 def _solved(gram: np.ndarray, pattern: list[int]) -> np.ndarray:
