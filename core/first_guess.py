@@ -259,10 +259,11 @@ def _non_negative(gram: np.ndarray, free: list[int], solution: np.ndarray) -> np
         for pattern in map(list, combinations(free, size)):
             if not needed <= set(pattern):
                 continue
-            answer = _solved(gram, pattern)
-            cost = 1.0 - (answer * gram[pattern, 3]).sum(axis=0)
+            answer, cost = _solved(gram, pattern)
             better = still_open & (cost < best) & (answer >= 0).all(axis=0)
-            best[better] = cost[better]
+            if not better.any():
+                continue
+            best = np.where(better, cost, best)
             solution[free] = np.where(better, 0.0, solution[free])
             solution[pattern] = np.where(better, answer, solution[pattern])
     solution[free] *= norm[3] / norm[free]
@@ -292,12 +293,16 @@ def _across(values: np.ndarray) -> np.ndarray:
     return across
 
 
-def _solved(gram: np.ndarray, pattern: list[int]) -> np.ndarray:
-    """Normal equations of some unknowns at every node, shape (unknowns, nodes): Gauss–Jordan elimination, which needs
-    no pivoting for a positive matrix, at all nodes together."""
-    rows = gram[pattern][:, [*pattern, 3]]
+def _solved(gram: np.ndarray, pattern: list[int]) -> tuple[np.ndarray, np.ndarray]:
+    """Normal equations of some unknowns at every node: solution, shape (unknowns, nodes), and share of the target's
+    squares that is left, shape (nodes,).
+
+    Gauss–Jordan elimination, which needs no pivoting for a positive matrix, at all nodes together.
+    """
+    used = [*pattern, 3]
+    rows = gram[used][:, used]
     for pivot in range(len(pattern)):
-        row = rows[pivot] / (rows[pivot, pivot] + 1e-12)
-        rows -= rows[:, pivot, None] * row
-        rows[pivot] = row
-    return rows[:, -1]
+        row = rows[pivot, pivot + 1 :] / (rows[pivot, pivot] + 1e-12)
+        rows[:, pivot + 1 :] -= rows[:, pivot, None] * row
+        rows[pivot, pivot + 1 :] = row
+    return rows[:-1, -1], rows[-1, -1]
