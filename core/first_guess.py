@@ -10,7 +10,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from itertools import combinations
+from itertools import chain, combinations
 
 import numpy as np
 
@@ -206,19 +206,9 @@ def _solve_grid(
 
 
 def _normal(diode: np.ndarray, others: np.ndarray) -> np.ndarray:
-    """Products of the columns of the equation, summed over the points, at every node.
+    """Products of the columns of Jph, J0, 1/Rsh and the target, summed over the points: shape (4, 4, nodes).
 
-    Parameters
-    ----------
-    diode : ndarray, shape (r, m, n)
-        Column of J0, the only one that m changes.
-    others : ndarray, shape (r, 3, n)
-        Columns of Jph and 1/Rsh, and the target.
-
-    Returns
-    -------
-    ndarray, shape (4, 4, nodes)
-        In the order Jph, J0, 1/Rsh, target.
+    ``diode``, shape (r, m, n), is the column of J0, the only one that m changes; ``others``, shape (r, 3, n), the rest.
     """
     gram = np.empty((4, 4, *diode.shape[:2]))
     fixed, mixed = others @ others.transpose(0, 2, 1), diode @ others.transpose(0, 2, 1)
@@ -251,21 +241,25 @@ def _non_negative(gram: np.ndarray, free: list[int], solution: np.ndarray) -> np
     gram = gram / (norm[:, None] * norm)
     best = np.ones(norm.shape[1])  # share of the target's own squares
     solution[free] = 0.0
-    needed = {1} & set(free)  # a curve without a diode is no start
-    for size in range(len(free), 0, -1):
+    # The diode comes first: where J0 is free, a curve without it is no start.
+    order = sorted(free, key=lambda unknown: unknown != 1)
+    patterns = [
+        [pattern for pattern in combinations(order, size) if pattern[0] == 1 or 1 not in free]
+        for size in range(1, len(free) + 1)
+    ]
+    eliminated = {(): gram}
+    for pattern in chain.from_iterable(patterns):
+        eliminated[pattern] = _eliminated(eliminated[pattern[:-1]], pattern[-1])
+    for of_one_size in reversed(patterns):
         still_open = best >= 1.0  # nothing beats a solution with fewer zeros
-        if not still_open.any():
-            break
-        for pattern in map(list, combinations(free, size)):
-            if not needed <= set(pattern):
-                continue
-            answer, cost = _solved(gram, pattern)
+        for pattern in of_one_size:
+            rows = eliminated[pattern]
+            answer, cost = rows[[*pattern], 3], rows[3, 3]
             better = still_open & (cost < best) & (answer >= 0).all(axis=0)
-            if not better.any():
-                continue
-            best = np.where(better, cost, best)
-            solution[free] = np.where(better, 0.0, solution[free])
-            solution[pattern] = np.where(better, answer, solution[pattern])
+            if better.any():
+                best = np.where(better, cost, best)
+                solution[free] = np.where(better, 0.0, solution[free])
+                solution[[*pattern]] = np.where(better, answer, solution[[*pattern]])
     solution[free] *= norm[3] / norm[free]
     return best * norm[3] ** 2
 
@@ -293,16 +287,13 @@ def _across(values: np.ndarray) -> np.ndarray:
     return across
 
 
-def _solved(gram: np.ndarray, pattern: list[int]) -> tuple[np.ndarray, np.ndarray]:
-    """Normal equations of some unknowns at every node: solution, shape (unknowns, nodes), and share of the target's
-    squares that is left, shape (nodes,).
+def _eliminated(rows: np.ndarray, unknown: int) -> np.ndarray:
+    """Gauss–Jordan elimination of one more unknown at every node, shape (4, 4, nodes).
 
-    Gauss–Jordan elimination, which needs no pivoting for a positive matrix, at all nodes together.
+    In the last column stand then the solution for the unknowns eliminated so far and, below, the share of the target's
+    squares that is left. A positive matrix needs no other pivots.
     """
-    used = [*pattern, 3]
-    rows = gram[used][:, used]
-    for pivot in range(len(pattern)):
-        row = rows[pivot, pivot + 1 :] / (rows[pivot, pivot] + 1e-12)
-        rows[:, pivot + 1 :] -= rows[:, pivot, None] * row
-        rows[pivot, pivot + 1 :] = row
-    return rows[:-1, -1], rows[-1, -1]
+    row = rows[unknown] / (rows[unknown, unknown] + 1e-12)
+    rest = rows - rows[:, unknown, None] * row
+    rest[unknown] = row
+    return rest
