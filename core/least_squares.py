@@ -91,14 +91,17 @@ def _minimise(
             scale = np.sqrt(gram.diagonal())
             scale = np.where(scale > 0, scale, 1.0)
             normal, pull = gram / (scale[:, None] * scale), -gradient / scale
-            least, most = (lower - place) * scale, (upper - place) * scale
             fresh = False
-        step = _bounded_step(normal + damping * identity, pull, least, most)  # as the other four, in units of 1/scale
+        damped = normal + damping * identity
+        step = _solved(damped, pull)  # in units of 1/scale
+        trial = place + step / scale
+        if ((trial < lower) | (trial > upper)).any():
+            step = _bounded_step(damped, pull, (lower - place) * scale, (upper - place) * scale)
+            trial = np.clip(place + step / scale, lower, upper)
         promised = float(step @ (2.0 * pull - normal @ step))
         if damping <= 0.1 and promised <= cost_tolerance * cost:
             settled = True  # nearly a full Newton step, and it would gain nothing
             break
-        trial = np.minimum(np.maximum(place + step / scale, lower), upper)
         trial_residual, trial_jacobian = evaluate(trial)
         evaluations += 1
         trial_cost = float(trial_residual @ trial_residual)
@@ -117,12 +120,8 @@ def _minimise(
 
 
 def _bounded_step(normal: np.ndarray, pull: np.ndarray, least: np.ndarray, most: np.ndarray) -> np.ndarray:
-    """The solution of normal·step = pull between two ends: the plain one if it lies there, else by the primal active-set
-    method."""
+    """The step between two ends that makes ½·step·normal·step − pull·step least, by the primal active-set method."""
     size = pull.size
-    step = _solved(normal, pull)
-    if not ((step < least) | (step > most)).any():
-        return step
     step = np.zeros(size)
     pinned = ((least >= 0) & (pull < 0)) | ((most <= 0) & (pull > 0))
     for _ in range(4 * size):
