@@ -104,7 +104,7 @@ class Problem:
         order = np.argsort(self.sweep.voltage, kind="stable")
         noise = noise_level(replace(self.sweep, current=minimum.residual))
         # What is left on exact curves is rounding, whose structure means nothing.
-        rounding = _ROUNDING * float(np.max(np.abs(self.sweep.current * self.weight)))
+        rounding = _ROUNDING * float(np.abs(self.sweep.current * self.weight).max())
         return structure(minimum.residual[order], max(noise, rounding))
 
     def polished(self, minimum: Minimum) -> tuple[Problem, Minimum]:
@@ -157,7 +157,8 @@ class Problem:
 def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
     """Mask of the points that the settings leave for the fit, shape (n,)."""
     mask = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
-    mask[[index for index in settings.excluded if 0 <= index < mask.size]] = False
+    if settings.excluded:
+        mask[[index for index in settings.excluded if 0 <= index < mask.size]] = False
     if settings.window is not None:
         mask &= (sweep.voltage >= settings.window[0]) & (sweep.voltage <= settings.window[1])
     return mask
@@ -166,7 +167,7 @@ def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
 def points_used(sweep: Sweep, settings: FitSettings) -> Sweep:
     """The sweep with only the points that the settings leave for the fit."""
     keep = used(sweep, settings)
-    if np.all(keep):
+    if keep.all():
         return sweep
     return replace(sweep, voltage=sweep.voltage[keep], current=sweep.current[keep])
 

@@ -12,6 +12,7 @@ Technical University of Denmark (both from memory).
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -80,26 +81,31 @@ def _minimise(
     residual, jacobian = evaluate(place)
     cost = float(residual @ residual)
     evaluations, damping, growth, settled = 1, 1e-3, 2.0, place.size == 0
-    if not np.isfinite(cost) or not np.all(np.isfinite(jacobian)):
+    if not (math.isfinite(cost) and np.isfinite(jacobian).all()):
         return Minimum(place, residual, jacobian, np.inf, False, evaluations)
-    fresh = True
+    identity, fresh = np.eye(place.size), True
     while not settled and evaluations < limit:
         if fresh:
             gram = jacobian.T @ jacobian
             gradient = jacobian.T @ residual
-            scale = np.sqrt(np.diag(gram))
+            scale = np.sqrt(gram.diagonal())
             scale = np.where(scale > 0, scale, 1.0)
+            normal, pull = gram / (scale[:, None] * scale), -gradient / scale
             fresh = False
-        step = _bounded_step(gram, gradient, scale, damping, place, lower, upper)
-        promised = -float(step @ (2 * gradient + gram @ step))
+        damped = normal + damping * identity
+        step = _solved(damped, pull)  # in units of 1/scale
+        trial = place + step / scale
+        if ((trial < lower) | (trial > upper)).any():
+            step = _bounded_step(damped, pull, (lower - place) * scale, (upper - place) * scale)
+            trial = np.clip(place + step / scale, lower, upper)
+        promised = float(step @ (2.0 * pull - normal @ step))
         if damping <= 0.1 and promised <= cost_tolerance * cost:
             settled = True  # nearly a full Newton step, and it would gain nothing
             break
-        trial = np.clip(place + step, lower, upper)
         trial_residual, trial_jacobian = evaluate(trial)
         evaluations += 1
         trial_cost = float(trial_residual @ trial_residual)
-        if not trial_cost < cost or not np.all(np.isfinite(trial_jacobian)):
+        if not trial_cost < cost or not np.isfinite(trial_jacobian).all():
             if damping <= 0.1 and promised <= _ROUNDING * cost:
                 settled = True  # the loss is rounding, and rounding is all that is left
             damping, growth = damping * growth, growth * 2.0
@@ -113,27 +119,11 @@ def _minimise(
     return Minimum(place, residual, jacobian, cost, settled, evaluations)
 
 
-def _bounded_step(
-    gram: np.ndarray,
-    gradient: np.ndarray,
-    scale: np.ndarray,
-    damping: float,
-    place: np.ndarray,
-    lower: np.ndarray,
-    upper: np.ndarray,
-) -> np.ndarray:
-    """The damped step within bounds: the plain one if it stays inside, else by the primal active-set method."""
-    size = place.size
-    normal = gram / (scale[:, None] * scale)
-    normal.flat[:: size + 1] += damping
-    pull = -gradient / scale
-    step = _solved(normal, pull) / scale
-    wanted = place + step
-    if not ((wanted < lower) | (wanted > upper)).any():
-        return step
-    least, most = (lower - place) * scale, (upper - place) * scale
+def _bounded_step(normal: np.ndarray, pull: np.ndarray, least: np.ndarray, most: np.ndarray) -> np.ndarray:
+    """The step between two ends that makes ½·step·normal·step − pull·step least, by the primal active-set method."""
+    size = pull.size
     step = np.zeros(size)
-    pinned = ((place <= lower) & (pull < 0)) | ((place >= upper) & (pull > 0))
+    pinned = ((least >= 0) & (pull < 0)) | ((most <= 0) & (pull > 0))
     for _ in range(4 * size):
         chosen = np.flatnonzero(~pinned)
         target = step.copy()
@@ -158,7 +148,7 @@ def _bounded_step(
         if held_back[worst] <= 1e-12 * np.max(np.abs(pull)):
             break
         pinned[worst] = False
-    return step / scale
+    return step
 
 
 def _solved(matrix: np.ndarray, target: np.ndarray) -> np.ndarray:

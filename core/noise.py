@@ -39,8 +39,8 @@ def merged_points(sweep: Sweep) -> Points:
     order = np.argsort(voltage, kind="stable")
     voltage, current = voltage[order], current[order]
     # Closer than this, a difference of voltages is rounding.
-    steps = np.diff(voltage) > 1e-9 * (np.ptp(voltage) if voltage.size else 0.0)
-    if np.all(steps):
+    steps = voltage[1:] - voltage[:-1] > 1e-9 * (voltage[-1] - voltage[0] if voltage.size else 0.0)
+    if steps.all():
         return Points(voltage, current, np.ones(voltage.size), np.empty(0))
     member = np.concatenate([[0], np.cumsum(steps)])
     count = np.bincount(member)

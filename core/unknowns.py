@@ -133,22 +133,20 @@ class Unknowns:
 
     def chain(self, place: np.ndarray) -> np.ndarray:
         """∂(Jph, ln J0, n, Rs, 1/Rsh)/∂unknowns, shape (5, k)."""
-        ratio = self.scales.voltage / self.scales.current
-        factor = {
-            "photocurrent": self.scales.current,
-            "saturation_current": 1.0,
-            "series_resistance": ratio,
-            "shunt_resistance": 1.0 / ratio,
-        }
+        voltage, current = self.scales.voltage, self.scales.current
         matrix = np.zeros((5, len(self.free)))
         for column, name in enumerate(self.free):
-            row = PARAMETERS.index(name)
-            if name == "ideality":
-                matrix[row, column] = -self.scales.voltage / (place[column] ** 2 * self.cell_voltage)
-                if self.coupled:
-                    matrix[PARAMETERS.index("saturation_current"), column] = -1.0
+            if name == "photocurrent":
+                matrix[0, column] = current
+            elif name == "saturation_current":
+                matrix[1, column] = 1.0
+            elif name == "ideality":
+                matrix[2, column] = -voltage / (place[column] ** 2 * self.cell_voltage)
+                matrix[1, column] = -1.0 if self.coupled else 0.0
+            elif name == "series_resistance":
+                matrix[3, column] = voltage / current
             else:
-                matrix[row, column] = factor[name]
+                matrix[4, column] = current / voltage
         return matrix
 
     def limits(self, bounds: Mapping[str, tuple[float, float]]) -> dict[str, tuple[float, float]]:
