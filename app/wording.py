@@ -112,5 +112,11 @@ def power_change(change: float) -> str:
     return "0.00" if text in ("+0.00", "−0.00") else text
 
 
+def percent(share: float) -> str:
+    """A signed part of a whole, to a tenth of a per cent."""
+    text = f"{100 * share:.1f} %".replace("-", "−")
+    return "0.0 %" if text == "−0.0 %" else text
+
+
 def plus_minus(uncertainty: float) -> str:
     return number(uncertainty, digits=2)
