@@ -67,13 +67,13 @@ def _of_sweep(sweep: Sweep, metrics: Metrics) -> str:
 
 
 def _of_fit(refined: Refinement) -> str:
-    if UNSETTLED in refined.findings:
-        return "its fit did not come to rest. Refine it again on the bench, or hold a parameter."
     if refined.points <= len(refined.free) and not refined.others:
         return (
             f"its {refined.points} points are no more than the {len(refined.free)} parameters of the fit, so any values would do. "
             "Measure more points, or hold parameters on the bench."
         )
+    if UNSETTLED in refined.findings:
+        return "its fit did not come to rest. Refine it again on the bench, or hold a parameter."
     known = np.isfinite(np.diag(refined.covariance))
     unknown = [name for name, told in zip(refined.free, known, strict=True) if not told and name in _NEEDED]
     if not unknown:

@@ -28,8 +28,8 @@ from .verdict import Verdict
 
 # Leading mechanisms are named until they carry this much of what pulls their way, three at most.
 _ENOUGH, _MOST_NAMED = 0.9, 3
-# Shares below this part of the largest one are not worth a word; a gain against a limit is, much sooner.
-_WORTH_A_WORD, _GAIN_WORTH_A_WORD = 0.05, 0.01
+# Shares below this part of the largest one are not worth a word; what cannot be, or is not explained, is much sooner.
+_WORTH_A_WORD, _ODD_WORTH_A_WORD = 0.05, 0.01
 # Percentages of a difference mislead where the shares add up to more than this many times of it.
 _CANCELLING = 4.0
 
@@ -119,7 +119,7 @@ def tell_losses(
     """
     digits = share_digits(shares)
     losses = {n: -share for n, share in shares.by_mechanism.items() if -MILLI * share >= 0.5 * 10.0**-digits}
-    least = max(0.5 * 10.0**-digits / MILLI, _GAIN_WORTH_A_WORD * max(losses.values(), default=0.0))
+    least = max(0.5 * 10.0**-digits / MILLI, _ODD_WORTH_A_WORD * max(losses.values(), default=0.0))
     gains = {n: share for n, share in shares.by_mechanism.items() if share >= least}
     by_model = shares.residual is None
     return (
@@ -211,7 +211,8 @@ def _cautions(
     if gains:
         word = listed([mechanism_word(n, shunt_confirmed) for n in by_size(gains)])
         said.append(f"No device can gain by {word} against its limit: check gap, area, light and fit.")
-    if shares.residual is not None and abs(MILLI * shares.residual) >= 0.5 * 10.0**-digits:
+    worth = max(0.5 * 10.0**-digits / MILLI, _ODD_WORTH_A_WORD * max(map(abs, shares.by_mechanism.values())))
+    if shares.residual is not None and abs(shares.residual) >= worth:
         side = "above" if shares.residual > 0 else "below"
         said.append(f"The measured power lies {in_milliwatts(abs(shares.residual), digits)} {UNIT} {side} the model's.")
     said.extend(shares.notes)

@@ -277,8 +277,8 @@ def _sentence(
     said = (
         f"The difference in {title} stands out from its uncertainty, most of which is {known[0].name}."
         if word == "stands out"
-        else f"Whether the difference in {title} is chance cannot be told: it is larger than what is known of its uncertainty, "
-        "but another day or another device of the kind may differ as much."
+        else f"Whether the difference in {title} is chance cannot be told: "
+        "another day, or another device of the kind, may differ as much."
     )
     if not missing:
         return said
