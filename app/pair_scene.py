@@ -68,7 +68,8 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
         refusal = "One of the two has an area and the other has none. Give the missing area on the bench, or compare them normalised."
         return blank_figure(), blank_figure(), {**data, "refusal": refusal}
     states = state_of(workspace, a), state_of(workspace, b)
-    sides = [Side(workspace.sweep(e), s.model if s else None, full_name(workspace, e)) for e, s in zip((a, b), states, strict=True)]
+    drawn = tuple(s if s and s.worth_drawing else None for s in states)
+    sides = [Side(workspace.sweep(e), s.model if s else None, full_name(workspace, e)) for e, s in zip((a, b), drawn, strict=True)]
     curves = pair_figure(*sides, normalised=normalised, zoom_key=f"pair {a} {b} {normalised}")
     data["budget"] = view.get("budget") or {}
     try:
@@ -78,7 +79,7 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
     verdict = _verdict(workspace, a, b, states, {**known, "area_shared": bool(data["budget"].get("area_shared"))})
     data["compared"] = _compared(workspace, a, b, verdict)
     assumed = _assumed(workspace.assumed(a) | workspace.assumed(b))
-    data["sources"] = f"{_sources(states)} {assumed}".strip()
+    data["sources"] = f"{_sources(drawn)} {assumed}".strip()
     try:
         if None in states:
             raise BreakdownRefused(NO_CURVE)

@@ -21,6 +21,7 @@ from core.workspace import Workspace
 from .readout import measured
 
 _BY_HAND = "laid by hand and not refined"
+_ON_THE_SPOT = "fitted for this screen; refine on the bench to keep that"
 
 
 @dataclass(frozen=True)
@@ -44,6 +45,11 @@ class State:
     source: str = ""
     untold: str = ""
 
+    @property
+    def worth_drawing(self) -> bool:
+        """A curve of the user's own in any case, one fitted on the spot only if it says something."""
+        return not self.untold or self.source != _ON_THE_SPOT
+
 
 def state_of(workspace: Workspace, entry: str) -> State | None:
     """The state of a sweep, or None where no curve can be laid over it."""
@@ -56,7 +62,7 @@ def state_of(workspace: Workspace, entry: str) -> State | None:
     if model is not None and model != _guessed(sweep):
         return _state(sweep, model, model, _BY_HAND)
     fitted = _fitted(sweep)
-    return None if fitted is None else _state(sweep, fitted, fitted, "fitted for this screen; refine on the bench to keep that")
+    return None if fitted is None else _state(sweep, fitted, fitted, _ON_THE_SPOT)
 
 
 def _state(sweep: Sweep, one: Refinement | OneDiode, known: Refinement | OneDiode | TwoDiode, source: str = "") -> State:

@@ -10,8 +10,10 @@ from __future__ import annotations
 import numpy as np
 
 from .checks import check
+from .curve_shape import held_current, shape_of
 from .diode import OneDiode
 from .fit_findings import UNSETTLED
+from .fit_problem import used
 from .quantity import Metrics
 from .refinement import Refinement
 from .sweep import Sweep
@@ -33,7 +35,7 @@ def why_no_breakdown(sweep: Sweep, state: Refinement | OneDiode, metrics: Metric
     metrics : Metrics
         Of the sweep.
     """
-    reason = _of_sweep(sweep, metrics) or (_of_fit(state) if isinstance(state, Refinement) else "")
+    reason = _of_sweep(sweep, metrics) or (_of_fit(sweep, state) if isinstance(state, Refinement) else "")
     return f"“{sweep.name or sweep.device or 'unnamed'}” is not broken down: {reason}" if reason else ""
 
 
@@ -66,7 +68,13 @@ def _of_sweep(sweep: Sweep, metrics: Metrics) -> str:
     return ""
 
 
-def _of_fit(refined: Refinement) -> str:
+def _of_fit(sweep: Sweep, refined: Refinement) -> str:
+    held = held_current(shape_of(sweep))
+    if held and not held.to_the_end and np.any(used(sweep, refined.settings) & (sweep.voltage <= held.voltage)):
+        return (
+            f"up to {held.voltage:.3g} V its current is that of the source-meter's limit, and the fit rests on it. "
+            "Raise the limit and measure again, or exclude these points and refine."
+        )
     if refined.points <= len(refined.free) and not refined.others:
         return (
             f"its {refined.points} points are no more than the {len(refined.free)} parameters of the fit, so any values would do. "

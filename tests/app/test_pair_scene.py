@@ -95,6 +95,10 @@ def test_what_says_nothing_of_mechanisms_keeps_the_measured_difference_and_gets_
         assert len(curves.data) == 5 and data["compared"]["pmp"]["a"] != "–"
         powers = [1e3 * measure(workspace.sweep(entry)).pmp.value for entry in pair]
         assert bars_of(bars) == {"together": pytest.approx(powers[1] - powers[0])}
+        lines = {trace.uid: len(trace.x) for trace in curves.data}
+        side = "ab"[pair.index(bent)]
+        assert lines[f"model-{side}"] == 0 < lines[f"points-{side}"], "nothing is laid over it that nobody asked for"
+        assert f"curve of {side.upper()}" not in data["sources"]
         assert words in data["story"] and f"{max(powers):.2f} mW cm⁻²" in data["story"] and "It comes from" not in data["story"]
         assert data["still"] is True
         with pytest.raises(StepRefused, match=words):

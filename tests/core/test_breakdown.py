@@ -83,6 +83,15 @@ def test_what_says_nothing_of_mechanisms_is_refused_in_a_sentence_that_says_what
             compare(*first, *second)
 
 
+def test_a_plateau_that_the_source_meter_cut_off_is_refused_until_it_is_left_out():
+    (sweep,) = sample("K26.csv")
+    assert "source-meter's limit" in reason(sweep)
+    left_out = FitSettings(window=(0.88, 1.2), hold=frozenset({"photocurrent", "shunt_resistance"}))
+    model = OneDiode(0.0053, 1.2e-13, 1.7, 16.8, 6000.0)  # of 0.25 cm²: in A and Ω
+    assert "source-meter's limit" not in reason(sweep, refine(sweep, model, left_out))
+    assert reason(sweep, model) == ""
+
+
 def test_a_fit_that_did_not_come_to_rest_is_refused():
     fit = refine(GOOD)
     assert "come to rest" in reason(GOOD, replace(fit, findings=(UNSETTLED, *fit.findings)))
