@@ -23,7 +23,7 @@ class Mechanism:
     shape : str
         SVG path in a box of 16 by 16.
     loss : str
-        What it is called where power is counted.
+        What it is called where power is counted; see ``loss_names`` for the shunt.
     hatch : str
         Plotly's name of the fill pattern on bars.
     """
@@ -48,8 +48,14 @@ MECHANISMS = (
     Mechanism("series_resistance", "series resistance", "R", "s", "#009E73", "M8 1L15.5 14H0.5Z",
               "series resistance", "\\"),
     Mechanism("shunt_resistance", "shunt resistance", "R", "sh", "#D55E00", "M0.5 2H15.5L8 15Z",
-              "shunt", "x"),
+              "shunt or collection", "x"),
 )
+
+
+def loss_names(shunt_confirmed: bool) -> dict[str, str]:
+    """What mechanisms are called where power is counted; a shunt is one only if the dark sweep confirms it."""
+    return {m.parameter: "shunt" if shunt_confirmed and m.parameter == "shunt_resistance" else m.loss for m in MECHANISMS}
+
 
 BY_PARAMETER = {mechanism.parameter: mechanism for mechanism in MECHANISMS}
 

@@ -9,7 +9,9 @@ from typing import Any
 from core.checks import Finding, check, check_pair
 from core.dials import dial_ranges
 from core.diode import PARAMETERS, Landmarks, OneDiode
+from core.errors import ConditionRefused
 from core.handles import Handle, handles
+from core.limit_check import check_against_limit
 from core.metrics import measure
 from core.quantity import Metrics, Quantity
 from core.refinement import Refinement
@@ -217,9 +219,24 @@ def pair_findings(workspace: Workspace, entry: str) -> tuple[Finding, ...]:
     return ()
 
 
-def finding_rows(sweep: Sweep, refined: Refinement | None, paired: tuple[Finding, ...] = ()) -> list[dict[str, str]]:
-    """What to know before trusting this sweep or its fit."""
-    rows = [_finding(f) for f in (*checked(sweep), *paired)]
+def gap_findings(workspace: Workspace, entry: str) -> tuple[Finding, ...]:
+    """What the sweep and the band gap that was given for its device say together."""
+    return _against_gap(workspace.sweep(entry), workspace.devices[workspace.entry(entry).device].band_gap)
+
+
+def _against_gap(sweep: Sweep, gap: float | None) -> tuple[Finding, ...]:
+    if gap is None or not sweep.lit or not sweep.per_area or sweep.series_cells > 1:
+        return ()
+    try:
+        return check_against_limit(measured(sweep).jsc, gap, sweep.irradiance)
+    except ConditionRefused as refusal:
+        return (Finding("band gap", "caution", str(refusal), "", ""),)
+
+
+def finding_rows(sweep: Sweep, refined: Refinement | None, more: tuple[Finding, ...] = ()) -> list[dict[str, str]]:
+    """What to know before trusting this sweep or its fit; ``more`` is what only the workspace knows."""
+    stops = [f for f in more if f.severity == "stop"]
+    rows = [_finding(f) for f in (*stops, *checked(sweep), *(f for f in more if f not in stops))]
     rows += [{"severity": "note", "name": "fit", "what": sentence, "meaning": "", "remedy": ""}
              for sentence in (refined.findings if refined else ())]
     rows += [{"severity": "note", "name": "read", "what": note, "meaning": "", "remedy": ""} for note in sweep.notes]

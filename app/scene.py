@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 from plotly.graph_objects import Figure
 
+from core.finding import Finding
 from core.fit_problem import used
 from core.store import History
 from core.sweep import Sweep
@@ -111,7 +112,7 @@ def scene(workspace: Workspace, view: View, history: History) -> dict[str, Any]:
         "dials": readout.dial_rows(workspace, entry, sweep),
         "metrics": readout.metric_rows(sweep, model.landmarks() if model and sweep.lit else None),
         "conditions": readout.condition_rows(workspace, entry, sweep),
-        "findings": readout.finding_rows(sweep, refined, readout.pair_findings(workspace, entry)),
+        "findings": readout.finding_rows(sweep, refined, readout.gap_findings(workspace, entry) + readout.pair_findings(workspace, entry)),
         "fit": _fit_line(sweep, refined),
         "caution": next(iter(refined.findings), "") if refined else "",
         "panel": panel_of(view),
@@ -176,7 +177,7 @@ def tray_readings(workspace: Workspace, entries: Iterable[str], until: float = m
     readings = {}
     for entry in entries:
         if entry in workspace.entries:
-            readings[entry] = _tray_reading(workspace.sweep(entry))
+            readings[entry] = _read(workspace, entry)
             if time.monotonic() > until:
                 break
     return readings
@@ -196,7 +197,7 @@ def full_name(workspace: Workspace, entry: str) -> str:
 
 
 def _tray_row(workspace: Workspace, entry: Entry, until: float) -> dict[str, Any]:
-    reading = _tray_reading(workspace.sweep(entry.id)) if time.monotonic() < until else _UNREAD
+    reading = _read(workspace, entry.id) if time.monotonic() < until else _UNREAD
     return {
         "entry": entry.id,
         "name": entry.name,
@@ -209,10 +210,14 @@ def _tray_row(workspace: Workspace, entry: Entry, until: float) -> dict[str, Any
 _UNREAD = {"read": False, "value": "", "flag": "", "flags": "", "spark": ""}
 
 
+def _read(workspace: Workspace, entry: str) -> dict[str, Any]:
+    return _tray_reading(workspace.sweep(entry), readout.gap_findings(workspace, entry))
+
+
 @lru_cache(maxsize=2**15)  # above the largest tray: one more than fits, read in turn, would never be found again
-def _tray_reading(sweep: Sweep) -> dict[str, Any]:
+def _tray_reading(sweep: Sweep, of_gap: tuple[Finding, ...]) -> dict[str, Any]:
     """What the points of a sweep say in its line; the sweep never changes, so they are read once."""
-    findings = [f for f in readout.checked(sweep) if f.severity != "note"]
+    findings = [f for f in (*of_gap, *readout.checked(sweep)) if f.severity != "note"]
     worst = "stop" if any(f.severity == "stop" for f in findings) else "caution" if findings else ""
     return {
         "read": True,

@@ -14,8 +14,6 @@ import pandas as pd
 
 from core.checks import Finding, check_pair
 from core.diode import PARAMETERS
-from core.errors import ConditionRefused
-from core.limit_check import check_against_limit
 from core.quantity import Quantity
 from core.refinement import Refinement
 from core.sweep import Sweep
@@ -131,7 +129,7 @@ def all_findings(workspace: Workspace, entries: Sequence[str]) -> Iterator[tuple
     for entry in entries:
         refined = workspace.refined(entry)
         seen = set()
-        for finding in (*_of_gap(workspace, entry), *_of_sweep(workspace.sweep(entry), refined), *_of_pairs(workspace, entry, entries)):
+        for finding in (*readout.gap_findings(workspace, entry), *_of_sweep(workspace.sweep(entry), refined), *_of_pairs(workspace, entry, entries)):
             if finding.what not in seen:
                 seen.add(finding.what)
                 yield entry, finding
@@ -140,16 +138,6 @@ def all_findings(workspace: Workspace, entries: Sequence[str]) -> Iterator[tuple
 def _of_sweep(sweep: Sweep, refined: Refinement | None) -> Iterator[Finding]:
     for row in readout.finding_rows(sweep, refined):
         yield Finding(row["name"], row["severity"], row["what"], row["meaning"], row["remedy"])
-
-
-def _of_gap(workspace: Workspace, entry: str) -> tuple[Finding, ...]:
-    sweep, gap = workspace.sweep(entry), workspace.devices[workspace.entry(entry).device].band_gap
-    if gap is None or not sweep.lit or not sweep.per_area or sweep.series_cells > 1:
-        return ()
-    try:
-        return check_against_limit(readout.measured(sweep).jsc, gap, sweep.irradiance)
-    except ConditionRefused as refusal:
-        return (Finding("band gap", "caution", str(refusal), "", ""),)
 
 
 def _of_pairs(workspace: Workspace, entry: str, entries: Sequence[str]) -> Iterator[Finding]:

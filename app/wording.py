@@ -123,5 +123,11 @@ def difference(gap: float, uncertainty: float | None) -> str:
     return text if text.strip("+−0.") else text[1:]
 
 
+def percent(share: float) -> str:
+    """A signed part of a whole, to a tenth of a per cent."""
+    text = f"{100 * share:.1f} %".replace("-", "−")
+    return "0.0 %" if text == "−0.0 %" else text
+
+
 def plus_minus(uncertainty: float) -> str:
     return number(uncertainty, digits=2)

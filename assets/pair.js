@@ -28,6 +28,10 @@
     host.append(field);
     return field;
   }
+  /** What mechanisms are called: a shunt is one only if the dark sweep says so. */
+  const called = (rows, names) => {
+    for (const row of document.querySelectorAll(rows)) text(row.querySelector(".what"), names?.[row.dataset.parameter] ?? row.dataset.title);
+  };
   const turn = (field, fraction) => {
     field.value = fraction;
     field.style.setProperty("--fill", `${100 * fraction}%`);
@@ -56,6 +60,7 @@
     text(byId("pair-sources"), data.sources);
     text(byId("pair-bars-note"), data.note);
     text(byId("what-if-line"), data.whatIf);
+    called(".what-if:not(.target)", data.names);
     for (const [name, cells] of Object.entries(data.compared ?? {})) {
       const row = document.querySelector(`[data-compared=${name}]`);
       for (const column of ["a", "b", "difference", "verdict"]) text(row.querySelector(`[data-column=${column}]`), cells[column]);
@@ -63,7 +68,7 @@
     }
     for (const row of document.querySelectorAll(".what-if:not(.target)")) {
       const field = slider(row.querySelector(".slider"), `Move ${row.dataset.title} of A to B`);
-      field.disabled = Boolean(data.refusal);
+      field.disabled = Boolean(data.refusal) || data.still;
       turn(field, 0);
     }
     bench.paintStated(data.stated);
@@ -101,9 +106,23 @@
     if (index >= 0) window.Plotly.restyle(graph, { x: [x], y: [y] }, [index]);
   }
 
+  /** The chart fills its room also where the room changes while the chart is being drawn, as for the projector. */
+  function fill() {
+    const graph = document.querySelector("#ladder .js-plotly-plot");
+    if (!graph?._fullLayout) return;
+    const { clientWidth: width, clientHeight: height } = graph;
+    const drawn = graph._fullLayout;
+    if (width && height && (Math.abs(width - drawn.width) > 1 || Math.abs(height - drawn.height) > 1)) window.Plotly.Plots.resize(graph);
+    if (graph.dataset.filled) return;
+    graph.dataset.filled = "yes";
+    graph.on("plotly_afterplot", () => requestAnimationFrame(fill));
+    new ResizeObserver(fill).observe(graph);
+  }
+
   /* Losses */
   bench.receiveLosses = (data) => {
     if (!data) return;
+    requestAnimationFrame(fill);
     bench.losses = data;
     touched = {};
     text(byId("losses-title"), data.title);
@@ -111,6 +130,7 @@
     refuse("losses-refusal", data.refusal);
     check("data-ladder", data.ladder);
     byId("losses-story").replaceChildren(...(data.story ?? []).map((words) => Object.assign(document.createElement("p"), { textContent: words })));
+    text(byId("losses-cautions"), data.cautions);
     const gap = document.querySelector("[data-condition=band_gap]");
     const field = gap.querySelector("input") ?? gap.querySelector(".value").appendChild(document.createElement("input"));
     field.setAttribute("aria-label", "band gap");
@@ -122,10 +142,13 @@
     choice.replaceChildren(new Option("the front (mirror behind)", "front"), new Option("both faces", "both"));
     choice.value = data.emission;
     byId("losses-table").replaceChildren(...(data.rows ?? []).map(lossRow));
-    for (const [parameter, place] of Object.entries(data.targets ?? {})) {
-      const row = document.querySelector(`.target[data-parameter=${parameter}]`);
-      turn(slider(row.querySelector(".slider"), `Target of the ${row.dataset.title}`), place.fraction);
-      text(row.querySelector(".target-value"), place.text);
+    called(".target", data.names);
+    for (const row of document.querySelectorAll(".target")) {
+      const place = data.targets?.[row.dataset.parameter];
+      const handle = slider(row.querySelector(".slider"), `Target of the ${row.dataset.title}`);
+      handle.disabled = !place;
+      turn(handle, place?.fraction ?? 0);
+      text(row.querySelector(".target-value"), place?.text ?? "");
     }
     text(byId("target-line"), data.targetWords);
     document.body.classList.toggle("projector", Boolean(data.projector));

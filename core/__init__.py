@@ -8,6 +8,7 @@ from .checks import Finding, check, check_pair
 from .detailed_balance import limit
 from .diode import PARAMETERS, Landmarks, OneDiode
 from .errors import (
+    BreakdownRefused,
     ComparisonRefused,
     ConditionRefused,
     FitFailed,
@@ -36,6 +37,7 @@ from .workspace import Device, Entry, Fit, Workspace
 
 __all__ = [
     "PARAMETERS",
+    "BreakdownRefused",
     "ComparisonRefused",
     "ConditionRefused",
     "Conditions",

@@ -22,6 +22,8 @@ __all__ = ["Finding", "check", "check_pair"]
 
 # Figures without a source below are common practice.
 _FEW_POINTS = 20
+# With fewer, the bend of the knee alone looks like noise of up to 100 % of Jsc.
+_TELLING_POINTS = 12
 # The knee is where the power is above this share of its maximum, and needs this many points.
 _KNEE_SHARE, _KNEE_POINTS = 0.9, 4
 # Scatter of the points as a share of Jsc.
@@ -67,7 +69,7 @@ def _amount(shape: Shape, value: float) -> str:
 
 def _common(shape: Shape) -> list[Finding]:
     findings = []
-    voltage, current = shape.voltage, shape.current
+    voltage = shape.voltage
     if voltage.size < _FEW_POINTS:
         findings.append(
             Finding(
@@ -92,8 +94,24 @@ def _common(shape: Shape) -> list[Finding]:
                 "Exclude it, or refine with the robust loss.",
             )
         )
-    scale = abs(shape.jsc) if shape.sweep.lit and shape.jsc else np.max(np.abs(current))
-    if shape.sweep.lit and shape.noise > _NOISY_SHARE * scale:
+    return findings + (_noise(shape) if shape.sweep.lit else [])
+
+
+def _noise(shape: Shape) -> list[Finding]:
+    size = shape.sweep.voltage.size  # points at one voltage tell the noise too
+    if size < _TELLING_POINTS:
+        return [
+            Finding(
+                "noise",
+                "note",
+                f"How much the points scatter cannot be told from {size} of them.",
+                "Between so few, the bend of the curve and noise look alike, so uncertainties are missing or rough.",
+                f"Measure at {_FEW_POINTS} voltages or more, or repeat the sweep.",
+            )
+        ]
+    findings = []
+    scale = abs(shape.jsc) if shape.jsc else np.max(np.abs(shape.current))
+    if shape.noise > _NOISY_SHARE * scale:
         findings.append(
             Finding(
                 "noise",

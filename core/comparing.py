@@ -8,9 +8,10 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+from .breakdown import one_sided, why_no_breakdown
 from .detailed_balance import Emission, limiting_diode
 from .diode import OneDiode
-from .errors import ComparisonRefused, FitFailed
+from .errors import BreakdownRefused, ComparisonRefused, FitFailed
 from .fit_settings import FitSettings
 from .metrics import measure
 from .quantity import Metrics
@@ -49,6 +50,8 @@ def compare(
     ComparisonRefused
         If a sweep is dark or has no area, if temperature, irradiance or cells in series differ, or if two diodes cannot
         be replaced by one.
+    BreakdownRefused
+        If a sweep or its fit says nothing of its mechanisms.
     """
     for sweep in (sweep_a, sweep_b):
         _refuse_unfit(sweep)
@@ -65,13 +68,16 @@ def compare(
             "Choose sweeps of one irradiance, or correct the conditions."
         )
     (state_a, note_a), (state_b, note_b) = alongside(sweep_a, state_a), alongside(sweep_b, state_b)
-    model_a, model_b = _under(sweep_a, state_a), _under(sweep_b, state_b)
     metrics_a, metrics_b = metrics_a or measure(sweep_a), metrics_b or measure(sweep_b)
+    _refuse_untold(sweep_a, state_a, metrics_a)
+    _refuse_untold(sweep_b, state_b, metrics_b)
+    model_a, model_b = _under(sweep_a, state_a), _under(sweep_b, state_b)
     power_a, power_b = metrics_a.pmp.value, metrics_b.pmp.value
     if power_a is None or power_b is None:  # half a measured difference explains nothing
         power_a = power_b = None
     shares = difference_shares(model_a, model_b, measured_power_a=power_a, measured_power_b=power_b)
-    shares = replace(shares, notes=note_a + note_b)
+    bounds = one_sided(sweep_a, state_a) + one_sided(sweep_b, state_b)
+    shares = replace(shares, notes=directions(sweep_a, sweep_b) + note_a + note_b + bounds)
     if isinstance(state_a, OneDiode) or isinstance(state_b, OneDiode):
         return replace(shares, reason="Not both models are refined, so the shares have no intervals.")
     sampled = sample_shares(_refinement_under(state_a, model_a), _refinement_under(state_b, model_b))
@@ -103,6 +109,8 @@ def losses(
     ------
     ComparisonRefused
         If the sweep is dark, has no area, or several cells in series.
+    BreakdownRefused
+        If the sweep or its fit says nothing of its mechanisms.
     ConditionRefused
         If there is no limit for this gap.
     """
@@ -110,13 +118,24 @@ def losses(
     state, notes = alongside(sweep, state)
     model = _under(sweep, state)
     refuse_string(model)
+    metrics = metrics or measure(sweep)
+    _refuse_untold(sweep, state, metrics)
     start = limiting_diode(band_gap, sweep.temperature, sweep.irradiance, emission)
-    power = (metrics or measure(sweep)).pmp.value
-    shares = replace(difference_shares(start, model, measured_power_b=power), notes=notes)
+    shares = difference_shares(start, model, measured_power_b=metrics.pmp.value)
+    shares = replace(shares, notes=notes + one_sided(sweep, state))
     if isinstance(state, OneDiode):
         return replace(shares, reason="The model is not refined, so the shares have no intervals.")
     sampled = sample_shares(start, _refinement_under(state, model))
     return replace(shares, intervals=sampled.intervals, confidence=sampled.confidence, reason=sampled.reason)
+
+
+def directions(sweep_a: Sweep, sweep_b: Sweep) -> tuple[str, ...]:
+    """A sentence where one sweep ran forward and the other reverse."""
+    if sweep_a.direction == sweep_b.direction:
+        return ()
+    return (
+        f"{_title(sweep_a)} ran {sweep_a.direction} and {_title(sweep_b)} {sweep_b.direction}, so part of the difference may be hysteresis.",
+    )
 
 
 def alongside(sweep: Sweep, state: State | TwoDiode) -> tuple[State, tuple[str, ...]]:
@@ -148,6 +167,11 @@ def _refinement_under(state: State, model: OneDiode) -> State:
     scale = [factor if name == "ideality" else 1.0 for name in state.free]
     covariance = state.covariance * [[a * b for b in scale] for a in scale]
     return replace(state, model=model, covariance=covariance)
+
+
+def _refuse_untold(sweep: Sweep, state: State, metrics: Metrics) -> None:
+    if reason := why_no_breakdown(sweep, state, metrics):
+        raise BreakdownRefused(reason)
 
 
 def _refuse_unfit(sweep: Sweep) -> None:

@@ -4,6 +4,7 @@ SweepbenchError
 ├── UnreadableFile     a file that cannot be read as a sweep
 ├── ConditionRefused   a condition (area, temperature, …) that cannot be applied
 ├── ComparisonRefused  two states that cannot be compared mechanism by mechanism
+│   └── BreakdownRefused  a sweep or fit that says nothing of its mechanisms
 ├── StepRefused        a change of the workspace that cannot be made
 │   └── StaleRevision  the workspace has moved on; read it again
 ├── FitFailed          a fit that cannot be made or did not settle
@@ -32,6 +33,10 @@ class ConditionRefused(SweepbenchError, ValueError):
 
 class ComparisonRefused(SweepbenchError, ValueError):
     """Two states that cannot be compared mechanism by mechanism."""
+
+
+class BreakdownRefused(ComparisonRefused):
+    """A sweep or a fit that says nothing of its mechanisms; what was measured stands all the same."""
 
 
 class StepRefused(SweepbenchError):

@@ -22,6 +22,8 @@ _WORDS = {
     "series_resistance": "series resistance Rs",
     "shunt_resistance": "shunt resistance Rsh",
 }
+# Also how others recognise such a fit, kept with it.
+UNSETTLED = "The fit did not come to rest; refine again from here, or hold a parameter."
 # ln J0 is known to better than a factor of ten if its interval is narrower than this on either side.
 _FACTOR_TEN = math.log(10.0)
 _SHARE_OPEN = 0.5  # an interval wider than this share of n leaves n open
@@ -58,7 +60,7 @@ def findings(
             f"{structure.runs} runs of one sign. Errors and intervals describe noise only and are too small here."
         )
     if not settled:
-        said.append("The fit did not come to rest; refine again from here, or hold a parameter.")
+        said.append(UNSETTLED)
     if s_shaped:
         return tuple(said)  # what follows would speak of parameters that mean nothing here
     freedom = structure.count - len(unknowns.free)

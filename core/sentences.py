@@ -15,8 +15,8 @@ MECHANISM_WORDS = {
     "series_resistance": "series resistance",
     "shunt_resistance": "shunt",
 }
-# A plateau that slopes under light may be either; only the dark sweep tells.
-_UNCONFIRMED_SHUNT = "shunt or voltage-dependent collection"
+# A plateau that slopes under light may be a shunt or collection that depends on voltage; only the dark sweep tells.
+_UNCONFIRMED_SHUNT = "shunt or collection"
 
 UNIT = "mW cm⁻²"
 MILLI = 1e3

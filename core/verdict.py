@@ -1,13 +1,17 @@
 """Whether the difference between two measured devices stands out, metric by metric.
 
 Contributions are combined in quadrature and expanded to 95 % with the effective degrees of freedom. Noise of the points
-alone never makes a difference stand out: a device measured again tomorrow differs by more than that. What is not known is
-named, and how much of it would turn the verdict round is said.
+alone never makes a difference stand out: a device measured again tomorrow differs by more than that. Nor does one stand
+out that is smaller than the gap between forward and reverse of either device. What is known of one device only counts as
+a lower bound: it widens the uncertainty, and lends a difference no weight. What is not known is named, and how much of
+it would turn the verdict round is said.
 
 References
 ----------
 JCGM 100:2008, Guide to the expression of uncertainty in measurement: 4.3.7 (rectangular contributions), 5.1.2
-(quadrature), G.4.1 (effective degrees of freedom); clause numbers from memory.
+(quadrature), G.4.1 (effective degrees of freedom); clause numbers from memory. Median absolute deviation as a robust
+scale: F. R. Hampel, J. Am. Stat. Assoc. 69 (1974) 383; its factor for few values, n/(n − 0.8): C. Croux,
+P. J. Rousseeuw, in Computational Statistics 1 (1992) 411 (both from memory; the factor holds to 4 % by simulation).
 """
 
 from __future__ import annotations
@@ -40,6 +44,10 @@ _PER_AREA = frozenset({"jsc", "pmp", "efficiency"})
 # The lamp moves these in proportion; Voc by m·u(G)/G, FF by next to nothing.
 _WITH_LAMP = frozenset({"jsc", "pmp", "efficiency"})
 _COVERAGE = 0.95
+# From so many pixels on a median tells the scatter; among fewer an odd one cannot be told from the rest.
+_ROBUST = 5
+# Median of |x| for a standard normal x, and the efficiency of the median absolute deviation beside the standard deviation.
+_MEDIAN_DEVIATION, _EFFICIENCY = 0.6744897501960817, 0.3674
 
 NOISE, AREA, LAMP, DIRECTION, SCATTER = (
     "noise of the points",
@@ -49,14 +57,29 @@ NOISE, AREA, LAMP, DIRECTION, SCATTER = (
     "scatter of pixels",
 )
 
+# Standard uncertainty and degrees of freedom of one device; None where not known.
+_Side = tuple[float, float] | None
+
 
 @dataclass(frozen=True, slots=True)
 class Contribution:
-    """One part of the uncertainty of a difference: its name, standard uncertainty and degrees of freedom."""
+    """One part of the uncertainty of a difference.
+
+    Attributes
+    ----------
+    name : str
+    uncertainty : float
+        Standard uncertainty; a lower bound where ``whole`` is False.
+    freedom : float
+        Degrees of freedom.
+    whole : bool
+        Known of both devices.
+    """
 
     name: str
     uncertainty: float
     freedom: float = math.inf
+    whole: bool = True
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,11 +95,12 @@ class MetricVerdict:
     uncertainty : float or None
         Combined standard uncertainty of the difference from what is known.
     reach : float or None
-        Expanded uncertainty at 95 %: a difference beyond it is not chance alone.
+        Expanded uncertainty at 95 %, or the gap between the directions of either device if that is larger: a difference
+        beyond it is not chance alone.
     contributions : tuple of Contribution
         The largest first.
     missing : tuple of str
-        Names of contributions that are not known.
+        Names of contributions that are not known, with the device where only one side is not.
     word : "stands out", "may be chance" or "cannot be told"
     sentence : str
     """
@@ -98,7 +122,9 @@ class Verdict:
     by_metric: Mapping[str, MetricVerdict]
 
 
-def stands_out(measured_a: Metrics, measured_b: Metrics, budget: Budget = Budget()) -> Verdict:
+def stands_out(
+    measured_a: Metrics, measured_b: Metrics, budget: Budget = Budget(), names: tuple[str, str] = ("A", "B")
+) -> Verdict:
     """Weigh the differences between two measured sweeps.
 
     Parameters
@@ -106,52 +132,63 @@ def stands_out(measured_a: Metrics, measured_b: Metrics, budget: Budget = Budget
     measured_a, measured_b : Metrics
         From the points; a difference between models has no verdict.
     budget : Budget
+    names : tuple of str
+        What the two are called in the sentences.
 
     Returns
     -------
     Verdict
         For Jsc, Voc, FF, Pmp and PCE.
     """
-    return Verdict({metric: _weigh(metric, measured_a, measured_b, budget) for metric in METRICS})
+    return Verdict({metric: _weigh(metric, measured_a, measured_b, budget, names) for metric in METRICS})
 
 
-def _weigh(metric: str, measured_a: Metrics, measured_b: Metrics, budget: Budget) -> MetricVerdict:
+def _weigh(metric: str, measured_a: Metrics, measured_b: Metrics, budget: Budget, names: tuple[str, str]) -> MetricVerdict:
     first, second = getattr(measured_a, metric), getattr(measured_b, metric)
     title = _TITLES[metric]
     if first.value is None or second.value is None:
         reason = (first.reason if first.value is None else second.reason) or "no value"
         sentence = f"Whether {title} differs cannot be told: one of the two has no value ({reason})."
         return MetricVerdict(metric, None, None, None, (), (), "cannot be told", sentence)
-    known, missing = _contributions(metric, measured_a, measured_b, budget)
+    known, missing = _contributions(metric, measured_a, measured_b, budget, names)
     difference = second.value - first.value
     uncertainty = math.sqrt(sum(part.uncertainty**2 for part in known))
-    reach = _coverage(known, uncertainty) * uncertainty
+    gap = _widest_gap(metric, measured_a, measured_b, budget)
+    reach = max(_coverage(known, uncertainty) * uncertainty, gap)
     beyond = abs(difference) > reach
     common = {NOISE, AREA} if budget.area_shared or budget.same_device else {NOISE}
-    more_than_noise = any(part.name not in common and part.uncertainty > 0 for part in known)
+    more_than_noise = any(part.name not in common and part.whole and part.uncertainty > 0 for part in known)
     if not known or (beyond and not more_than_noise):
         word: Word = "cannot be told"
     else:
         word = "stands out" if beyond else "may be chance"
-    sentence = _sentence(title, word, difference, reach, known, missing, 0.5 * (abs(first.value) + abs(second.value)))
+    sentence = _sentence(title, word, difference, reach, gap, known, missing, 0.5 * (abs(first.value) + abs(second.value)))
     return MetricVerdict(metric, difference, uncertainty if known else None, reach if known else None, known, missing, word, sentence)
 
 
 def _contributions(
-    metric: str, measured_a: Metrics, measured_b: Metrics, budget: Budget
+    metric: str, measured_a: Metrics, measured_b: Metrics, budget: Budget, names: tuple[str, str]
 ) -> tuple[tuple[Contribution, ...], tuple[str, ...]]:
     """Known contributions, the largest first, and names of those not known."""
     first, second = getattr(measured_a, metric), getattr(measured_b, metric)
     parts: list[Contribution] = []
     missing: list[str] = []
 
-    def book(name: str, part: Contribution | None) -> None:
-        if part is None:
+    def book(name: str, *sides: _Side) -> None:
+        known = [side for side in sides if side is not None]
+        if known:
+            parts.append(_together(name, known, whole=len(known) == len(sides)))
+        if not known:
             missing.append(name)
-        else:
-            parts.append(part)
+        elif len(known) < len(sides):
+            missing.append(f"{name} of {names[sides.index(None)]}")
 
-    book(NOISE, _both(NOISE, first.uncertainty, second.uncertainty))
+    def both(relative_a: float | None, relative_b: float | None, sizes: tuple[float, float]) -> tuple[_Side, _Side]:
+        sides = zip((relative_a, relative_b), sizes, strict=True)
+        first_side, second_side = (None if relative is None else (relative * abs(size), math.inf) for relative, size in sides)
+        return first_side, second_side
+
+    book(NOISE, *(None if q.uncertainty is None else (q.uncertainty, math.inf) for q in (first, second)))
     if metric in _PER_AREA:
         if budget.area_shared or budget.same_device:
             # A common factor 1 + δ changes the difference by δ times itself, and that is small beside it.
@@ -159,54 +196,54 @@ def _contributions(
             shared = 0.0 if relative is None else relative * abs(second.value - first.value)
             parts.append(Contribution(AREA, shared))
         else:
-            book(AREA, _both(AREA, _times(budget.area_a, first.value), _times(budget.area_b, second.value)))
+            book(AREA, *both(budget.area_a, budget.area_b, (first.value, second.value)))
     if metric in _WITH_LAMP:
-        book(LAMP, _both(LAMP, _times(budget.lamp, first.value), _times(budget.lamp, second.value)))
+        book(LAMP, *both(budget.lamp, budget.lamp, (first.value, second.value)))
     elif metric == "voc":
         slope = budget.ideality * thermal_voltage(budget.temperature)
-        book(LAMP, _both(LAMP, _times(budget.lamp, slope), _times(budget.lamp, slope)))
+        book(LAMP, *both(budget.lamp, budget.lamp, (slope, slope)))
     if not budget.same_device:
-        book(
-            DIRECTION,
-            _both(
-                DIRECTION,
-                _gap(metric, measured_a, budget.other_direction_a),
-                _gap(metric, measured_b, budget.other_direction_b),
-            ),
-        )
-        book(SCATTER, _scatter(metric, budget))
+        gaps = _gaps(metric, measured_a, measured_b, budget)
+        # Half the gap between the directions is the half-width of a rectangular distribution.
+        book(DIRECTION, *(None if gap is None else (0.5 * gap / math.sqrt(3.0), math.inf) for gap in gaps))
+        book(SCATTER, *(_scatter(metric, group) for group in (budget.group_a, budget.group_b)))
     return tuple(sorted(parts, key=lambda part: -part.uncertainty)), tuple(missing)
 
 
-def _both(name: str, first: float | None, second: float | None) -> Contribution | None:
-    """Independent uncertainties of the two sides; one that is not known leaves the whole unknown."""
-    return None if first is None or second is None else Contribution(name, math.hypot(first, second))
+def _together(name: str, sides: list[tuple[float, float]], *, whole: bool) -> Contribution:
+    """Independent uncertainties of the devices in quadrature, with their effective degrees of freedom."""
+    total = math.hypot(*(uncertainty for uncertainty, _ in sides))
+    weights = sum(uncertainty**4 / freedom for uncertainty, freedom in sides)
+    return Contribution(name, total, total**4 / weights if weights > 0 else math.inf, whole)
 
 
-def _times(relative: float | None, value: float) -> float | None:
-    return None if relative is None else relative * abs(value)
+def _gaps(metric: str, measured_a: Metrics, measured_b: Metrics, budget: Budget) -> list[float | None]:
+    """How far the directions of each device lie apart; None where one is not known."""
+    gaps = []
+    for measured, other in ((measured_a, budget.other_direction_a), (measured_b, budget.other_direction_b)):
+        values = [getattr(metrics, metric).value for metrics in (measured, other) if metrics is not None]
+        gaps.append(None if len(values) < 2 or None in values else abs(values[0] - values[1]))
+    return gaps
 
 
-def _gap(metric: str, measured: Metrics, other: Metrics | None) -> float | None:
-    """Half the gap between the directions, as the half-width of a rectangular distribution."""
-    if other is None:
+def _widest_gap(metric: str, measured_a: Metrics, measured_b: Metrics, budget: Budget) -> float:
+    if budget.same_device:
+        return 0.0
+    return max((gap for gap in _gaps(metric, measured_a, measured_b, budget) if gap is not None), default=0.0)
+
+
+def _scatter(metric: str, group: tuple[Metrics, ...]) -> _Side:
+    """Scatter of one device within its group, such that a pixel under the mask or a loose clip does not set it.
+
+    The median absolute deviation, scaled as for a normal distribution; with few pixels the standard deviation.
+    """
+    values = [value for member in group if (value := getattr(member, metric).value) is not None]
+    if len(values) < 2:
         return None
-    here, there = getattr(measured, metric).value, getattr(other, metric).value
-    return None if here is None or there is None else 0.5 * abs(here - there) / math.sqrt(3.0)
-
-
-def _scatter(metric: str, budget: Budget) -> Contribution | None:
-    """Standard deviation of one device within its group, for both sides."""
-    spreads, freedoms = [], []
-    for group in (budget.group_a, budget.group_b):
-        values = [value for member in group if (value := getattr(member, metric).value) is not None]
-        if len(values) < 2:
-            return None
-        spreads.append(float(np.std(values, ddof=1)))
-        freedoms.append(len(values) - 1)
-    total = math.hypot(*spreads)
-    weights = sum(spread**4 / freedom for spread, freedom in zip(spreads, freedoms, strict=True))
-    return Contribution(SCATTER, total, total**4 / weights if weights > 0 else math.inf)
+    if len(values) < _ROBUST:
+        return float(np.std(values, ddof=1)), len(values) - 1.0
+    deviation = float(np.median(np.abs(np.array(values) - np.median(values)))) / _MEDIAN_DEVIATION
+    return deviation * len(values) / (len(values) - 0.8), _EFFICIENCY * (len(values) - 1.0)
 
 
 def _coverage(known: tuple[Contribution, ...], uncertainty: float) -> float:
@@ -222,32 +259,33 @@ def _sentence(
     word: Word,
     difference: float,
     reach: float,
+    gap: float,
     known: tuple[Contribution, ...],
     missing: tuple[str, ...],
     size: float,
 ) -> str:
     if not known:
-        return f"Whether the difference in {title} is more than chance cannot be told: nothing is known of {_list(missing)}."
-    largest = known[0].name
-    unknown = f"{_list(missing)} {'is' if len(missing) == 1 else 'are'} not known" if missing else ""
+        return f"Whether the difference in {title} is chance cannot be told: nothing is known of {_list(missing)}."
     if word == "may be chance":
-        tail = f"; {unknown} and could only widen it" if unknown else ""
-        return (
-            f"The difference in {title} may be chance: it lies within what is known of the uncertainty, "
-            f"most of which is {largest}{tail}."
+        cause = (
+            f"it is within its uncertainty, most of which is {known[0].name}"
+            if abs(difference) > gap
+            else "forward and reverse sweep of one device differ by as much"
         )
-    # How large what is not known would have to be, as a standard uncertainty, to make chance of the difference.
-    spare = math.sqrt(max(difference**2 - reach**2, 0.0)) / 1.96
-    margin = f" of some {100 * spare / size:.2g} % of {title}" if size > 0 else ""
-    if word == "cannot be told":
-        said = f"The difference in {title} is beyond the {largest}, but that alone says nothing about another day or device"
-        return f"{said}: {unknown}; a standard uncertainty{margin} from there would make it chance." if unknown else f"{said}."
-    if not missing:
-        return f"The difference in {title} stands out; most of its uncertainty is {largest}."
-    return (
-        f"The difference in {title} stands out from what is known, most of which is {largest}; {unknown}, "
-        f"and a standard uncertainty{margin} from there would make it chance."
+        tail = f" Not known, and only adding to that: {_list(missing)}." if missing else ""
+        return f"The difference in {title} may be chance: {cause}.{tail}"
+    said = (
+        f"The difference in {title} stands out from its uncertainty, most of which is {known[0].name}."
+        if word == "stands out"
+        else f"Whether the difference in {title} is chance cannot be told: "
+        "another day, or another device of the kind, may differ as much."
     )
+    if not missing:
+        return said
+    # How large what is not known would have to be at 95 % to make chance of the difference.
+    spare = math.sqrt(max(difference**2 - reach**2, 0.0))
+    margin = f" If that came to ±{100 * spare / size:.2g} % of {title}, the difference might be chance." if size > 0 else ""
+    return f"{said} Not known: {_list(missing)}.{margin}"
 
 
 def _list(names: tuple[str, ...]) -> str:

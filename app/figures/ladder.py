@@ -7,13 +7,15 @@ from html import escape
 
 import plotly.graph_objects as go
 
-from app.mechanisms import BY_PARAMETER
-from app.wording import number, power_change
+from app.mechanisms import BY_PARAMETER, loss_names
+from app.wording import number, percent, power_change
 
 from .style import FAINT, HAIR, INK, SOFT, quiet_axis, quiet_layout
 
 # Rows are told apart by words of our own, because a device may have any name, that of a mechanism too.
 TOP, FOOT = "top", "foot"
+_USUAL_ROWS = 7
+_SEEN = 0.002  # width of a rung that shows, as a share of the limit
 LONGEST_LABEL = 32  # characters; a longer name would take the chart's room
 
 
@@ -26,6 +28,8 @@ def ladder_figure(
     limit_name: str,
     device_name: str,
     rest: float | None = None,
+    rest_name: str = "not in the model",
+    shunt_confirmed: bool = False,
     large: bool = False,
 ) -> go.Figure:
     """The ladder.
@@ -37,15 +41,20 @@ def ladder_figure(
     losses : mapping of mechanism to float
         What each takes [mW cm⁻²], negative where power is lost.
     order : sequence of mechanisms
-        From the top down.
+        From the top down; empty where the gap is not broken down.
     rest : float, optional
-        Measured minus model [mW cm⁻²].
+        Measured minus model [mW cm⁻²]; no rung where it rounds to nothing.
+    rest_name : str
+        What the last rung is called.
+    shunt_confirmed : bool
+        The dark sweep gives the same Rsh.
     large : bool
         Type for a projector.
     """
-    steps = [(BY_PARAMETER[name].loss, losses[name], BY_PARAMETER[name].hue, BY_PARAMETER[name].hatch) for name in order]
-    if rest is not None:
-        steps.append(("not in the model", rest, FAINT, "-"))
+    called = loss_names(shunt_confirmed)
+    steps = [(called[name], losses[name], BY_PARAMETER[name].hue, BY_PARAMETER[name].hatch) for name in order]
+    if rest is not None and power_change(rest) != "0.00":
+        steps.append((rest_name, rest, FAINT, "-"))
     names, bases, widths, colours, hatches, words, levels = [], [], [], [], [], [], []
     level = limit
     for name, change, colour, hatch in steps:
@@ -58,9 +67,10 @@ def ladder_figure(
         levels.append((level, level + change))
         level += change
     size, thickness = (22, 0.62) if large else (13, 0.5)
-    words_of_device = f"{number(device)} mW cm⁻², {100 * device / limit:.1f} % of the limit"
-    # Words that the foot has no room for stand beside it.
-    inside = device > 0.55 * limit
+    thickness *= min((len(names) + 2) / _USUAL_ROWS, 1.0)  # few rows are no reason for heavy bars
+    words_of_device = f"{number(device)} mW cm⁻² ({percent(device / limit)})"
+    # Words that the foot's bar has no room for stand beside it.
+    inside = device > 0.5 * limit
     ends = go.Bar(
         y=[TOP, FOOT], x=[limit, device], orientation="h", width=thickness, marker={"color": [SOFT, INK]}, uid="ends",
         text=[f"{number(limit)} mW cm⁻²", words_of_device if inside else ""],
@@ -85,8 +95,9 @@ def ladder_figure(
     rows = [TOP, *names, FOOT]
     shown = [_label(limit_name), *names, _label(device_name)]
     for place, (start, _) in enumerate([*levels, (level, level)]):
-        # A plumb line from each level to the next rung, so that the eye can go down.
-        figure.add_shape(type="line", x0=start, x1=start, y0=place + thickness / 2, y1=place + 1 - thickness / 2, line={"color": FAINT, "width": 1})
+        # A plumb line from each level to the next rung, so that the eye can go down; through a rung too thin to be seen.
+        thin = place > 0 and widths[place - 1] < _SEEN * limit
+        figure.add_shape(type="line", x0=start, x1=start, y0=place + (-1 if thin else 1) * thickness / 2, y1=place + 1 - thickness / 2, line={"color": FAINT, "width": 1})
     return figure.update_layout(
         quiet_layout(
             "ladder",
@@ -108,4 +119,4 @@ def _label(name: str) -> str:
 
 
 def _words(change: float, limit: float) -> str:
-    return f"{power_change(change)} ({100 * abs(change) / limit:.1f} %)"
+    return f"{power_change(change)} ({percent(change / limit)})"

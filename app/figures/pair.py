@@ -10,7 +10,7 @@ import numpy as np
 import plotly.graph_objects as go
 
 from app.curves import thinned, voltage_grid
-from app.mechanisms import MECHANISMS
+from app.mechanisms import MECHANISMS, loss_names
 from app.units import Units
 from app.wording import power_change
 from core.diode import OneDiode
@@ -106,36 +106,38 @@ def shares_figure(
     *,
     intervals: Mapping[str, tuple[float, float]] | None = None,
     rest: float | None = None,
-    large: bool = False,
+    shunt_confirmed: bool = False,
 ) -> go.Figure:
     """What each mechanism adds to the difference in power, as bars to the left and right of zero.
 
     Parameters
     ----------
     shares : mapping of mechanism to float
-        [mW cm⁻²]
+        [mW cm⁻²]; empty where the difference is not shared out.
     total : float
         The measured difference, or the model's where nothing was measured [mW cm⁻²].
     rest : float, optional
-        Measured minus model, shown as a bar of its own [mW cm⁻²].
+        Measured minus model [mW cm⁻²]: a bar of its own, but where it rounds to nothing.
+    shunt_confirmed : bool
+        The dark sweeps give the same Rsh.
     """
-    names = [m.loss for m in MECHANISMS]
-    values = [shares[m.parameter] for m in MECHANISMS]
-    colours, hatches = [m.hue for m in MECHANISMS], [m.hatch for m in MECHANISMS]
-    if rest is not None:
+    called, shared = loss_names(shunt_confirmed), [m for m in MECHANISMS if m.parameter in shares]
+    names, values = [called[m.parameter] for m in shared], [shares[m.parameter] for m in shared]
+    colours, hatches = [m.hue for m in shared], [m.hatch for m in shared]
+    if rest is not None and power_change(rest) != "0.00":
         names, values, colours, hatches = [*names, "not in the model"], [*values, rest], [*colours, FAINT], [*hatches, "-"]
     names, values, colours, hatches = [*names, "together"], [*values, total], [*colours, INK], [*hatches, ""]
     bars = go.Bar(
-        y=names, x=values, orientation="h", uid="shares", width=0.62, hoverinfo="skip",
+        y=names, x=values, orientation="h", uid="shares", width=0.62 if shared else 0.12, hoverinfo="skip",
         marker={"color": colours, "pattern": {"shape": hatches, "fgcolor": "rgba(255,255,255,0.75)", "size": 6, "solidity": 0.25},
                 "line": {"width": 0}},
     )
     # Words stand beyond the whisker, so that neither hides the other.
-    known = [(intervals or {}).get(m.parameter) for m in MECHANISMS]
+    known = [(intervals or {}).get(m.parameter) for m in shared]
     tips = [_tip(v, known[i] if i < len(known) else None) for i, v in enumerate(values)]
     words = go.Scatter(
         y=names, x=tips, mode="text", text=[f" {power_change(v)} " for v in values], uid="share-words", hoverinfo="skip",
-        textposition=["middle left" if v < 0 else "middle right" for v in values], textfont={"size": 18 if large else 13}, cliponaxis=False,
+        textposition=["middle left" if v < 0 else "middle right" for v in values], textfont={"size": 13}, cliponaxis=False,
     )
     reach = 1.35 * max(abs(v) for v in (*values, *tips)) or 1.0
     return go.Figure([bars, _whiskers(names, values, known), words]).update_layout(
@@ -143,7 +145,7 @@ def shares_figure(
             "shares",
             xaxis=quiet_axis("mW cm⁻²", range=[-reach, reach], zeroline=True, zerolinecolor=FAINT, zerolinewidth=1, fixedrange=True),
             yaxis={"autorange": "reversed", "showgrid": False, "ticks": "", "showline": False, "fixedrange": True,
-                   "tickfont": {"size": 18 if large else 13}, "automargin": True},
+                   "tickfont": {"size": 13}, "automargin": True},
             margin={"l": 166, "r": 24, "t": 4, "b": 40},
             dragmode=False,
         )

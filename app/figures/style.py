@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
+import plotly.graph_objects as go
+
 INK, SOFT, FAINT, HAIR = "#23211c", "#6d685d", "#8c887d", "#dedacf"
 FONT = "system-ui, -apple-system, 'Segoe UI', Roboto, 'Noto Sans', sans-serif"
 CLEAR = {"paper_bgcolor": "rgba(255,255,255,0)", "plot_bgcolor": "rgba(255,255,255,0)"}
@@ -36,3 +38,8 @@ def quiet_layout(zoom_key: str = "", **more: Any) -> dict[str, Any]:
         **CLEAR,
         **more,
     }
+
+
+def blank_figure() -> go.Figure:
+    """Nothing on no ground, for the place where a sentence stands instead."""
+    return go.Figure(layout=quiet_layout(xaxis={"visible": False}, yaxis={"visible": False}))

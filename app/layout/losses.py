@@ -35,6 +35,7 @@ def losses() -> list:
                 ),
                 dcc.Graph(id=Id.LADDER, config=PLOT_CONFIG, className="ladder", responsive=True),
                 html.Div(id="losses-story", className="losses-story"),
+                html.P(id="losses-cautions", className="losses-cautions"),
                 html.Div(id="losses-refusal", className="refusal", hidden=True),
             ],
         ),
@@ -76,5 +77,5 @@ def _target(parameter: str, words: str) -> html.Div:
     return html.Div(
         className="target what-if",
         **{"data-parameter": parameter, "data-title": words},
-        children=[html.Span(className="mark"), html.Span(words), html.Span(className="target-value"), html.Span(className="slider")],
+        children=[html.Span(className="mark"), html.Span(words, className="what"), html.Span(className="target-value"), html.Span(className="slider")],
     )

@@ -105,5 +105,5 @@ def _what_if(parameter: str, words: str) -> html.Div:
     return html.Div(
         className="what-if",
         **{"data-parameter": parameter, "data-title": words},
-        children=[html.Span(className="mark"), html.Span(words), html.Span(className="slider")],
+        children=[html.Span(className="mark"), html.Span(words, className="what"), html.Span(className="slider")],
     )

@@ -14,9 +14,10 @@ LAMP = Conditions(area=0.1)
 DARK = Conditions(area=0.1, lit=False, irradiance=0.0)
 
 
-def sweep_of(model, name="forward", *, device="A", conditions=LAMP, points=56, noise=2e-6, high=1.15, **fields):
+def sweep_of(model, name="forward", *, device="A", conditions=LAMP, points=56, noise=2e-6, low=None, high=1.15, **fields):
     """A sweep of a model with a little scatter, the same every time."""
-    voltage = np.linspace(0.0 if conditions.lit else 0.02, high, points)
+    low = (0.0 if conditions.lit else 0.02) if low is None else low
+    voltage = np.linspace(low, high, points)
     scatter = np.random.default_rng(len(name)).normal(0.0, noise, points) if conditions.lit else 0.0
     current = model.current(voltage) + scatter
     fields = {"per_area": conditions.area is not None, "read_as": "current", **fields}
@@ -29,6 +30,12 @@ IN_THE_DARK = sweep_of(replace(CELL, photocurrent=0.0), "dark", conditions=DARK)
 # The same device without its area: amperes and ohms.
 AMPERES = sweep_of(CELL.scaled(0.1), "amperes", device="B", conditions=Conditions(), noise=2e-7)
 OTHER = sweep_of(replace(CELL, photocurrent=0.02), "other", device="C")
+_S = np.linspace(0.0, 1.05, 106)
+# A step in the middle of the fall: no diode does this.
+S_SHAPED = Sweep(
+    _S, 0.02 * (0.5 * (1 - np.tanh((_S - 0.45) / 0.08)) * 0.55 + 0.45 * (1 - (_S / 1.0) ** 12)), True, LAMP, read_as="density",
+    name="bent", device="S",
+)
 
 
 def bench(*sweeps, models=()):

@@ -56,16 +56,43 @@ def test_a_plumb_line_goes_from_each_level_to_the_next_row():
 
 def test_words_give_power_and_share_of_the_limit():
     _, traces = drawn()
-    assert traces["labels"].text[0].strip() == "−3.50 (11.7 %)"
+    assert traces["labels"].text[0].strip() == "−3.50 (−11.7 %)"
     assert traces["labels"].text[2].strip() == "+0.40 (1.3 %)"
-    assert traces["ends"].text[1] == f"19.90 mW cm⁻², {100 * DEVICE / LIMIT:.1f} % of the limit"
+    assert traces["ends"].text[1] == f"19.90 mW cm⁻² ({100 * DEVICE / LIMIT:.1f} %)"
 
 
 def test_words_of_a_poor_device_stand_beside_its_short_bar():
     _, traces = drawn(device=3.0, rest=3.0 - LIMIT - sum(LOSSES.values()))
     assert traces["ends"].text[1] == ""
     assert traces["labels"].y[-1] == FOOT and traces["labels"].x[-1] == 3.0
-    assert traces["labels"].text[-1].strip() == "3.000 mW cm⁻², 10.0 % of the limit"
+    assert traces["labels"].text[-1].strip() == "3.000 mW cm⁻² (10.0 %)"
+
+
+@pytest.mark.parametrize("large", [False, True])
+@pytest.mark.parametrize("share", [0.45, 0.515, 0.58, 0.65, 0.75, 0.95])
+def test_words_of_the_device_have_room_wherever_they_stand(share, large):
+    """By rough widths: 1280 pixels with the side, and 1900 with the projector's type."""
+    figure, traces = drawn(device=share * LIMIT, losses={}, order=(), rest=(share - 1) * LIMIT, large=large)
+    width = (1500 if large else 430) / (figure.layout.xaxis.range[1] / LIMIT)
+    words = traces["ends"].text[1] or traces["labels"].text[-1].strip()
+    room = share * width if traces["ends"].text[1] else (figure.layout.xaxis.range[1] / LIMIT - share) * width + 24
+    assert len(words) * (11 if large else 6.6) < room
+
+
+def test_what_rounds_to_nothing_has_no_rung():
+    assert list(drawn(rest=0.004)[1]["rungs"].y) == [m.loss for m in MECHANISMS]
+    assert list(drawn(rest=-0.006)[1]["rungs"].y)[-1] == "not in the model"
+
+
+def test_a_gap_that_is_not_broken_down_is_one_rung():
+    figure, traces = drawn(losses={}, order=(), rest=DEVICE - LIMIT, rest_name="not broken down")
+    assert list(traces["rungs"].y) == ["not broken down"]
+    assert ends_of(traces["rungs"]) == [(LIMIT, pytest.approx(DEVICE))]
+
+
+def test_a_confirmed_shunt_is_called_so():
+    assert "shunt or collection" in drawn()[1]["rungs"].y
+    assert "shunt" in drawn(shunt_confirmed=True)[1]["rungs"].y
 
 
 def test_rows_stay_apart_whatever_a_device_is_called():

@@ -248,3 +248,21 @@ def test_an_assumed_condition_is_a_finding_until_it_is_confirmed(full):
     assert "assumed" in told(workspace)
     names = sorted(workspace.assumed(lit))
     assert "assumed" not in told(steps.apply(workspace, steps.confirm_conditions(workspace, lit, names)))
+
+
+def test_a_photocurrent_above_the_limit_of_a_given_gap_stops_on_the_bench_and_in_the_tray():
+    workspace, (entry,) = bench(LIT)
+
+    def told(workspace):
+        (device,) = scene.tray(workspace)
+        return [f["name"] for f in shown(workspace, active=entry)["findings"]], device["sweeps"][0], scene.tray_key(workspace)
+
+    names, row, key = told(workspace)
+    assert "photocurrent above the limit" not in names and row["flag"] != "stop"
+    wrong = steps.apply(workspace, steps.set_band_gap(workspace, entry, 1.9))
+    names, row, other_key = told(wrong)
+    assert names[0] == "photocurrent above the limit" and row["flag"] == "stop" and "allows" in row["flags"]
+    assert other_key != key
+    assert scene.tray_readings(wrong, [entry])[entry]["flag"] == "stop"
+    names, row, _ = told(steps.apply(wrong, steps.set_band_gap(wrong, entry, 1.6)))
+    assert "photocurrent above the limit" not in names and row["flag"] != "stop"

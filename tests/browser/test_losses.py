@@ -52,7 +52,7 @@ def loss(tab: Tab, parameter: str) -> float:
 
 
 def power_told(tab: Tab) -> float:
-    return float(re.search(r": ([\d.]+) mW cm⁻²", tab.text("#target-line"))[1])
+    return float(re.search(r"^The model[^:]*: ([\d.]+) mW cm⁻²", tab.text("#target-line"))[1])
 
 
 def test_a_typed_gap_takes_the_mark_away_and_the_losses_are_core_s(three):
@@ -98,12 +98,13 @@ def test_the_order_of_the_ladder_changes_by_buttons_and_by_dragging_a_row(three)
     assert [loss(tab, name) for name in order] == pytest.approx([1e3 * expected[name] for name in order], abs=0.006)
 
     tab.find("#losses-table tr[data-loss=shunt_resistance]").drag_to(tab.find("#losses-table tr[data-loss=photocurrent]"))
-    until(tab, RUNGS, "shunt")
+    until(tab, RUNGS, "shunt or collection")
     assert rows(tab)[:5] == ["shunt_resistance", *order[:4]]
     expected = ladder(limiting_diode(1.6), model, rows(tab)[:5])
     assert loss(tab, "shunt_resistance") == pytest.approx(1e3 * expected["shunt_resistance"], abs=0.006)
     labels, _ = reversed(trace(tab, "ladder", "rungs"))
-    assert labels[:2] == ["shunt", "photocurrent"]
+    assert labels[:2] == ["shunt or collection", "photocurrent"]
+    expect(tab.find("#losses-story p").nth(1)).to_contain_text("One after another: shunt or collection, photocurrent")
     tab.find("[data-ladder=shares]").click()
     expect(tab.find("#losses-table .order")).to_have_count(0)
 
@@ -114,7 +115,7 @@ def test_targets_follow_the_hand_and_come_to_rest_again(three):
     assert power_told(tab) == pytest.approx(1e3 * model.landmarks().pmp, abs=0.006)
     field = ".target[data-parameter=series_resistance] input"
     slide(tab, field, 0.1, release=False)
-    until(tab, "document.querySelector('#target-line').textContent.startsWith('With these targets')")
+    until(tab, "document.querySelector('#target-line').textContent.startsWith('The model with these targets')")
     value = float(tab.find(field).input_value()) * 2 * mechanism_value(model, "series_resistance")
     moved = target(model, "series_resistance", value)
     assert power_told(tab) == pytest.approx(1e3 * moved.landmarks().pmp, abs=0.006)
@@ -143,6 +144,7 @@ def test_the_projector_goes_from_device_to_device_by_arrow_keys(three):
     until(tab, "document.querySelector('#ladder .js-plotly-plot')._fullLayout.yaxis.tickfont.size > 20")
     room, window = tab.find("#ladder").bounding_box(), tab.page.evaluate("[innerWidth, innerHeight]")
     assert room["width"] > 0.9 * window[0] and room["height"] > 0.5 * window[1]
+    until(tab, "document.querySelector('#ladder .js-plotly-plot')._fullLayout.width > argument", 0.9 * window[0])
     assert tab.page.evaluate("document.documentElement.scrollWidth <= innerWidth")
     tab.page.keyboard.press("Escape")
     until(tab, "!document.body.classList.contains('projector')")
@@ -170,6 +172,19 @@ def test_pictures_are_named_after_the_device_and_a_reload_stays_here(three, tmp_
     tab.until("screen", "losses")
     until(tab, f"sweepbench.losses && {TITLE}", "K11")
     assert tab.page.url.endswith("/losses")
+
+
+def test_an_s_shaped_sweep_keeps_the_whole_gap_and_is_not_broken_down(running, workspace, open_tab):
+    entry, _ = add_sample(running.store, workspace, "K21.csv")
+    tab = open_tab()
+    tab.find("nav [data-screen=losses]").click()
+    until(tab, RUNGS, "not broken down")
+    expect(tab.find("#losses-story")).to_contain_text("S-shaped")
+    assert rows(tab) == ["total"]
+    power = measure(tab.stored.sweep(entry)).pmp.value
+    expect(tab.find("#losses-story p").first).to_contain_text(f"delivers {1e3 * power:.2f} mW cm⁻²")
+    for field in tab.find(".target input").all():
+        expect(field).to_be_disabled()
 
 
 def test_a_dark_sweep_has_no_losses_and_says_so(running, workspace, open_tab):

@@ -8,6 +8,7 @@ from playwright.sync_api import expect
 
 from core.metrics import measure
 from core.shares import difference_shares, what_if
+from tests.browser.loading import LIT, add_sample
 from tests.browser.screens import (
     assert_nothing_hangs_over,
     go,
@@ -218,9 +219,19 @@ def test_a_reload_stays_on_the_pair_as_it_was(three):
     tab.until("screen", "pair")
 
 
-def test_one_sweep_alone_is_refused_in_a_sentence(running, workspace, open_tab):
-    from tests.browser.loading import LIT, add_sample
+def test_an_s_shaped_sweep_is_compared_as_measured_and_not_shared_out(running, workspace, open_tab):
+    bent, straight = add_sample(running.store, workspace, "K21.csv")[0], add_sample(running.store, workspace, "K11.csv")[0]
+    tab = open_tab()
+    go(tab, "pair")
+    compared(tab, bent, straight)
+    expect(tab.find("#pair-story")).to_contain_text("S-shaped")
+    assert trace(tab, "pair-bars", "shares")[1] == ["together"]
+    assert cell(tab, "pmp", "difference") != "–"
+    for parameter in ("ideality", "shunt_resistance"):
+        expect(tab.find(WHAT_IF.format(parameter))).to_be_disabled()
 
+
+def test_one_sweep_alone_is_refused_in_a_sentence(running, workspace, open_tab):
     add_sample(running.store, workspace, LIT)
     tab = open_tab()
     tab.find("nav [data-screen=pair]").click()

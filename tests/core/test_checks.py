@@ -90,6 +90,13 @@ def test_noise():
     assert "noise" not in names(check(sweep(current=noisy(0.005))))
 
 
+@pytest.mark.parametrize("points", range(3, 24))
+def test_the_bend_of_few_points_without_noise_is_not_called_noise(points):
+    told = [f for f in check(sweep(np.linspace(-0.1, 1.05, points))) if f.name == "noise"]
+    assert [f.severity for f in told] == (["note"] if points < 12 else [])
+    assert all("cannot be told" in f.what and "%" not in f.what for f in told)
+
+
 def test_a_single_jump_is_an_outlier():
     current = CELL.current(VOLTAGE).copy()
     current[40] *= 1.03
