@@ -134,7 +134,7 @@ def _knowledge(
     curvature: Curvature, unknowns: AnyUnknowns, limits: Mapping[str, tuple[float, float]], confidence: float
 ) -> Knowledge:
     place, free = curvature.place, unknowns.free
-    model = unknowns.final(place)
+    model = unknowns.final(place, limits)
     lower, upper = unknowns.box(limits)
     near = unknowns.near_bound(place)
     bound = (place <= lower + near) | (place >= upper - near)

@@ -25,7 +25,7 @@ from .least_squares import minimise
 from .models import Model
 from .refinement import Refinement
 from .sweep import Sweep
-from .unknowns import Kind
+from .unknowns import FARTHEST, Kind
 
 # An end is found when the growth of the sum of squares hits its mark to this part of t.
 _CLOSE = 2e-3
@@ -188,7 +188,8 @@ class _Profiler:
         held = held.with_weight(problem.weight)
         variance = float(self.chain[row] @ self.curvature.inverse @ self.chain[row])
         step = math.sqrt(max(variance * self.curvature.variance, 0.0))
-        ends = sorted(_scaled_end(kind, value) for value in problem.limits[name])
+        farthest = _LARGEST_LOG if kind == "log" else FARTHEST * abs(float(self.chain[row, row]))
+        ends = sorted(min(max(_scaled_end(kind, value), -farthest), farthest) for value in problem.limits[name])
         # How the others go with the parameter near the minimum.
         slope = (self.curvature.inverse @ self.chain[row]) / variance if variance > 0 else np.zeros(row + 1)
         return _Line(self, held, name, kind, step, (ends[0], ends[1]), slope)
@@ -208,8 +209,7 @@ class _Line:
         slope: np.ndarray,
     ):
         self.profiler, self.problem, self.name, self.kind = profiler, problem, name, kind
-        farthest = _LARGEST_LOG if kind == "log" else math.inf
-        self.low, self.high = max(ends[0], -farthest), min(ends[1], farthest)
+        self.low, self.high = ends
         self.centre = min(max(scaled(kind, getattr(profiler.model, name)), self.low), self.high)
         # Where the linear spread says nothing, a first stride that the search can lengthen.
         scale = max(abs(self.centre), 1e-12)
@@ -243,12 +243,12 @@ class _Line:
         value = self.centre + side * reach
         for _ in range(_STEPS):
             if (value - limit) * side >= 0:
-                value = limit if math.isfinite(limit) else math.copysign(1e300, side)
+                value = limit
             here = self.growth(value)
             if abs(here - mark) <= _CLOSE * mark:
                 return value, True
             if here < mark:
-                if value == limit or not abs(value) < 1e280:
+                if value == limit:
                     return limit, False
                 inner, grown = value, here
             else:
