@@ -167,8 +167,9 @@ def _knowledge(
         else:
             low, high = value - reach, value + reach
         low, high = natural_ends(kind, low, high)
-        low = float(max(low, limits[name][0]))
-        intervals[name] = low, max(float(min(high, limits[name][1])), low)
+        # Rounding on the way to the scale and back leaves the refined value inside.
+        here = float(getattr(model, name))
+        intervals[name] = min(float(max(low, limits[name][0])), here), max(float(min(high, limits[name][1])), here)
         if not bound[index] and math.isfinite(spread):
             errors[name] = _natural_error(kind, name, model, spread)
     return Knowledge(covariance, errors, intervals, at_bound, frozenset(np.array(free)[open_ones].tolist()))

@@ -18,7 +18,7 @@ from .constants import thermal_voltage
 from .errors import FitFailed
 from .first_guess import Scales
 from .two_diode import TWO_DIODE_PARAMETERS, TwoDiode
-from .unknowns import FARTHEST, Kind, kept_within
+from .unknowns import FARTHEST, LEAST_LOG, Kind, kept_within
 
 # Physical bounds of n₁ and n₂.
 _IDEALITY = (0.5, 5.0)
@@ -130,7 +130,7 @@ class TwoDiodeUnknowns:
                 if name not in self.logarithmic:
                     steepness = self.scales.voltage / (natural[n] * self.cell_voltage)
                     log_saturation = math.log(max(value[name], FAINT) * self.scales.current) - steepness
-                natural[name] = math.exp(min(max(log_saturation, -_LARGEST_LOG), 100.0))
+                natural[name] = math.exp(min(max(log_saturation, LEAST_LOG), 100.0))
         return TwoDiode(**natural, series_cells=base.series_cells, temperature=base.temperature)
 
     def final(self, place: np.ndarray, limits: Mapping[str, tuple[float, float]]) -> TwoDiode:
@@ -188,7 +188,7 @@ class TwoDiodeUnknowns:
             if name == "photocurrent":
                 ends.append((low / current, high / current))
             elif name in self.logarithmic:
-                ends.append((math.log(max(low, 1e-290)), math.log(high) if math.isfinite(high) else math.inf))
+                ends.append((max(math.log(max(low, 1e-300)), LEAST_LOG), math.log(high) if math.isfinite(high) else math.inf))
             elif name.startswith("saturation_current"):
                 # With n free the limits are the physical ones, which hold for every n.
                 steepness = voltage / (getattr(self.base, f"ideality_{name[-1]}") * self.cell_voltage)

@@ -22,9 +22,10 @@ from .first_guess import Scales
 # Physical bounds of n; wider where the sweep's voltage shows that the cells in series are not what they are said to be.
 _IDEALITY = (0.3, 10.0)
 Kind = Literal["plain", "log", "inverse"]
-_LARGEST_LOG = 690.0  # exp() of more is not a float
+# Smallest ln J0: with it the exponent of the diode, ln(J/J0), stays below the largest that the solver holds.
+LEAST_LOG = -600.0
 # No sweep tells an unknown of this size from infinity, and beyond it products of parameters leave the range of floats.
-FARTHEST = 1e15
+FARTHEST = 1e12
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,7 +121,7 @@ class Unknowns:
             ideality = voltage / (steepness * self.cell_voltage)
         if "saturation_current" in value:
             log_saturation = value["saturation_current"] - (steepness if self.coupled else 0.0)
-            saturation = math.exp(min(max(log_saturation, -_LARGEST_LOG), 100.0))
+            saturation = math.exp(min(max(log_saturation, LEAST_LOG), 100.0))
         if "shunt_resistance" in value:
             conductance = value["shunt_resistance"] * current / voltage
             shunt = 1.0 / conductance if conductance > 0 else math.inf
@@ -195,4 +196,4 @@ def kept_within(limits: Mapping[str, tuple[float, float]], values: Mapping[str, 
 
 def _log(value: float) -> float:
     """Logarithm with the ends that J0 may have."""
-    return math.inf if math.isinf(value) else math.log(max(value, 1e-290))
+    return math.inf if math.isinf(value) else max(math.log(max(value, 1e-300)), LEAST_LOG)
