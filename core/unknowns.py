@@ -22,8 +22,9 @@ from .first_guess import Scales
 # Physical bounds of n; wider where the sweep's voltage shows that the cells in series are not what they are said to be.
 _IDEALITY = (0.3, 10.0)
 Kind = Literal["plain", "log", "inverse"]
-# Smallest ln J0: with it the exponent of the diode, ln(J/J0), stays below the largest that the solver holds.
-LEAST_LOG = -600.0
+# Smallest ln J0: the exponent of the diode, ln(J/J0), stays below the largest that the solvers hold, and they do not yet
+# take the diode for absent.
+LEAST_LOG = -450.0
 # No sweep tells an unknown of this size from infinity, and beyond it products of parameters leave the range of floats.
 FARTHEST = 1e12
 

@@ -189,3 +189,11 @@ def test_any_points_end_in_a_curve_or_a_sentence(points, lit):
         json.dumps(result.to_dict(), allow_nan=False)
         for name, (low, high) in result.intervals.items():
             assert low <= getattr(result.model, name) <= high
+
+
+def test_a_saturation_current_never_falls_to_where_the_solver_takes_the_diode_for_absent():
+    """Found by searching: points that no diode describes, whose fit without shunt then had no Voc."""
+    voltage = np.array([0.0, 0.0, 0.05, 0.5, 0.5, 0.5, 44.4, 44.9, 49.4])
+    current = np.array([0.5, 0.05, 0.5, 49.4, 44.9, 0.0, 0.5, 0.0, 44.4])
+    result = refine(Sweep(voltage, current), settings=FitSettings(model="two diodes", hold=FREE))
+    assert math.isfinite(result.model.landmarks().voc)
