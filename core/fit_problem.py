@@ -89,9 +89,10 @@ class Problem:
 
     def evaluate(self, place: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Weighted residuals, model less measured, and their Jacobian in the unknowns."""
-        modelled, jacobian = self.unknowns.model(place).current_and_jacobian(self.sweep.voltage)
-        residual = self.weight * (modelled - self.sweep.current)
-        return residual, (self.weight[:, None] * jacobian) @ self.unknowns.chain(place)
+        with np.errstate(all="ignore"):  # a place far from wild points may leave the range of floats
+            modelled, jacobian = self.unknowns.model(place).current_and_jacobian(self.sweep.voltage)
+            residual = self.weight * (modelled - self.sweep.current)
+            return residual, (self.weight[:, None] * jacobian) @ self.unknowns.chain(place)
 
     def minimum_from(self, start: Model) -> Minimum:
         """The minimum reached from a model."""

@@ -10,6 +10,7 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
+import numpy as np
 from scipy.special import fdtrc
 
 from .errors import FitFailed
@@ -103,9 +104,10 @@ def refine_together(
     settings = [settings] * len(sweeps) if isinstance(settings, FitSettings) else list(settings)
     switches = _switches(sweeps, settings, shared)
     alone = _alone(sweeps, starts or [None] * len(sweeps), settings)
-    joint = JointProblem.of(sweeps, alone, settings, switches)
-    minimum = joint.lowest()
-    conflict = _conflict(joint, minimum, sweeps, alone, settings, switches)
+    with np.errstate(all="ignore"):  # on the scale of one sweep another may leave the range of floats
+        joint = JointProblem.of(sweeps, alone, settings, switches)
+        minimum = joint.lowest()
+        conflict = _conflict(joint, minimum, sweeps, alone, settings, switches)
     return JointRefinement(_refinements(joint, sweeps, alone, minimum, switches), switches, tuple(conflict))
 
 

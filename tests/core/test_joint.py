@@ -328,6 +328,32 @@ def test_a_joint_refinement_kept_without_its_bond_still_loads_and_says_what_to_d
         profile_intervals(lit(), old)
 
 
+def test_wild_points_end_in_curves_or_a_sentence():
+    """Found by searching: of sweeps that differ by 300 decades one leaves the range of floats on the other's scale."""
+    flat = Sweep(np.full(12, 0.5), np.zeros(12), conditions=Conditions(lit=False))
+    three = Sweep([0.5, 1.0, 29.61151793], [1.0, -7.6e-17, 2.41609223])
+    voltage = np.array([0.0, 1.1e-41, 0.5, 0.5, 0.5, 1, 1, 1, 1, 1, 1, 1])
+    current = np.array([-7.6, -40.8, 0.5, -19.9, 1, -19.9, -19.9, -19.9, -19.9, 1, 0, -19.9])
+    dim = Sweep([-42.67, *10 * [0.0]], [0.5, 0, 1, 0.99999, 0.4, 0, 0.5, 50, 1, 0, -6.7e-202])
+    bright = Sweep(
+        [0, 0, 0, 1.16e-42, 0.5, 1, 1, 4.80236719, 34.6912916],
+        [-39.2436501, 1, 36.652764, -1.6e-177, 1.2, 0.5, 30.8672904, 1, 1],
+        conditions=Conditions(lit=False),
+    )
+    wild = Sweep(voltage, current, conditions=Conditions(lit=False))
+    apart = dict.fromkeys(CELL.parameters, False)
+    for sweeps, shared in (([flat, three, wild], {"saturation_current": True, "photocurrent": True}), ([bright, dim], {"shunt_resistance": True})):
+        try:
+            joint = refine_together(sweeps, settings=FitSettings(loss="robust"), shared=apart | shared)
+        except FitFailed as failure:
+            assert str(failure)
+            continue
+        for index, fit in enumerate(joint.refinements):
+            assert math.isfinite(fit.rmse)
+            for name, interval in profiles(sweeps, joint, index).items():
+                assert interval.low <= getattr(fit.model, name) <= interval.high
+
+
 def test_what_is_usually_shared():
     assert usually_shared([lit(), dark()])["shunt_resistance"]
     assert not usually_shared([lit(), lit(), dark()])["shunt_resistance"]
