@@ -71,14 +71,16 @@ def interval_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
         return {"rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": ""}
     level = workspace.fit(entry).settings.confidence  # the one that stands now needs no new fit
     try:
-        found = _profiles(sweep, refined, level)
+        found = _profiles(sweep, refined, level, beside=workspace.beside(entry))
     except FitFailed as failure:
         return {"rows": [], "sentence": str(failure), "choice": ""}
     units = Units.of(sweep.per_area)
     rows = [
         {"name": BY_PARAMETER[name].title, "words": interval_words(interval, units, name)} for name, interval in found.items()
     ]
-    return {"rows": rows, "sentence": f"{100 * level:.4g} % intervals by profile likelihood, fit noise only.", "choice": _choice(sweep, refined)}
+    of_all = " of all sweeps refined together" if refined.others else ""
+    sentence = f"{100 * level:.4g} % intervals by profile likelihood{of_all}, fit noise only."
+    return {"rows": rows, "sentence": sentence, "choice": _choice(sweep, refined)}
 
 
 def _choice(sweep: Sweep, refined: Refinement) -> str:

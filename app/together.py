@@ -43,5 +43,7 @@ def refine_sweeps_together(workspace: Workspace, event: Mapping[str, Any]) -> di
     starts = [m if type(m) is type(here.model) else None for m in models]
     shared = {str(name): bool(on) for name, on in dict(event["shared"]).items()}
     joint = refine_together([workspace.sweep(e) for e in entries], starts, settings, shared)
-    told = [replace(r, findings=(*joint.findings, *r.findings)) for r in joint.refinements]
+    told = [
+        replace(r, findings=(*joint.findings, *r.findings), bond=replace(r.bond, entries=tuple(entries))) for r in joint.refinements
+    ]
     return steps.record_refinements(workspace, dict(zip(entries, told, strict=True)))

@@ -45,6 +45,8 @@ class Problem:
         Of the unknowns.
     weight : ndarray, shape (n,)
         Of the residuals, frozen.
+    coupled : bool
+        Whether J0 and n may move as one combination.
     """
 
     sweep: Sweep
@@ -54,6 +56,7 @@ class Problem:
     lower: np.ndarray
     upper: np.ndarray
     weight: np.ndarray
+    coupled: bool = True
 
     @classmethod
     def of(
@@ -82,13 +85,14 @@ class Problem:
         unknowns = kind.of(base, held, size or scales(sweep), settings.bounds, coupled=coupled)
         limits = unknowns.limits(settings.bounds)
         lower, upper = unknowns.box(limits)
-        return cls(sweep, settings, unknowns, limits, lower, upper, point_weights(sweep, settings.weights))
+        return cls(sweep, settings, unknowns, limits, lower, upper, point_weights(sweep, settings.weights), coupled)
 
     def evaluate(self, place: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Weighted residuals, model less measured, and their Jacobian in the unknowns."""
-        modelled, jacobian = self.unknowns.model(place).current_and_jacobian(self.sweep.voltage)
-        residual = self.weight * (modelled - self.sweep.current)
-        return residual, (self.weight[:, None] * jacobian) @ self.unknowns.chain(place)
+        with np.errstate(all="ignore"):  # a place far from wild points may leave the range of floats
+            modelled, jacobian = self.unknowns.model(place).current_and_jacobian(self.sweep.voltage)
+            residual = self.weight * (modelled - self.sweep.current)
+            return residual, (self.weight[:, None] * jacobian) @ self.unknowns.chain(place)
 
     def minimum_from(self, start: Model) -> Minimum:
         """The minimum reached from a model."""
@@ -143,6 +147,13 @@ class Problem:
     def with_weight(self, weight: np.ndarray) -> Problem:
         """The problem with other weights, shape (n,)."""
         return replace(self, weight=weight)
+
+    def holding(self, name: str, model: Model) -> Problem:
+        """The problem with one more parameter held, at the value of a model; points and weights stay."""
+        held = Problem.of(
+            self.sweep, self.settings, model, size=self.unknowns.scales, coupled=self.coupled, hold=(name,)
+        )
+        return held.with_weight(self.weight)
 
     def held_at(self, name: str, value: float) -> Problem:
         """The problem with another value of a held parameter."""

@@ -134,7 +134,7 @@ def _knowledge(
     curvature: Curvature, unknowns: AnyUnknowns, limits: Mapping[str, tuple[float, float]], confidence: float
 ) -> Knowledge:
     place, free = curvature.place, unknowns.free
-    model = unknowns.final(place)
+    model = unknowns.final(place, limits)
     lower, upper = unknowns.box(limits)
     near = unknowns.near_bound(place)
     bound = (place <= lower + near) | (place >= upper - near)
@@ -167,8 +167,9 @@ def _knowledge(
         else:
             low, high = value - reach, value + reach
         low, high = natural_ends(kind, low, high)
-        low = float(max(low, limits[name][0]))
-        intervals[name] = low, max(float(min(high, limits[name][1])), low)
+        # Rounding on the way to the scale and back leaves the refined value inside.
+        here = float(getattr(model, name))
+        intervals[name] = min(float(max(low, limits[name][0])), here), max(float(min(high, limits[name][1])), here)
         if not bound[index] and math.isfinite(spread):
             errors[name] = _natural_error(kind, name, model, spread)
     return Knowledge(covariance, errors, intervals, at_bound, frozenset(np.array(free)[open_ones].tolist()))

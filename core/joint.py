@@ -10,6 +10,7 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
+import numpy as np
 from scipy.special import fdtrc
 
 from .errors import FitFailed
@@ -20,7 +21,7 @@ from .joint_problem import JointProblem
 from .least_squares import Minimum
 from .models import Model
 from .refine import refine, refinement_of
-from .refinement import Refinement
+from .refinement import Bond, Refinement
 from .sweep import Sweep
 
 _TEMPERATURES = 1.0  # [K], as far apart as sweeps of one J0 may be
@@ -103,10 +104,11 @@ def refine_together(
     settings = [settings] * len(sweeps) if isinstance(settings, FitSettings) else list(settings)
     switches = _switches(sweeps, settings, shared)
     alone = _alone(sweeps, starts or [None] * len(sweeps), settings)
-    joint = JointProblem(sweeps, alone, settings, switches)
-    minimum = joint.lowest()
-    conflict = _conflict(joint, minimum, sweeps, alone, settings, switches)
-    return JointRefinement(_refinements(joint, sweeps, minimum, switches), switches, tuple(conflict))
+    with np.errstate(all="ignore"):  # on the scale of one sweep another may leave the range of floats
+        joint = JointProblem.of(sweeps, alone, settings, switches)
+        minimum = joint.lowest()
+        conflict = _conflict(joint, minimum, sweeps, alone, settings, switches)
+    return JointRefinement(_refinements(joint, sweeps, alone, minimum, switches), switches, tuple(conflict))
 
 
 def _switches(
@@ -140,30 +142,35 @@ def _switches(
 
 def _alone(
     sweeps: Sequence[Sweep], starts: Sequence[Model | None], settings: Sequence[FitSettings]
-) -> list[Refinement | None]:
-    alone: list[Refinement | None] = []
+) -> list[Model | None]:
+    alone: list[Model | None] = []
     last: FitFailed | None = None
     for sweep, start, each in zip(sweeps, starts, settings, strict=True):
         try:
-            alone.append(refine(sweep, start, each))
+            alone.append(refine(sweep, start, each).model)
         except FitFailed as failed:
             # A sweep that cannot stand alone may still say something beside others.
             last = failed
             alone.append(None)
-    if all(fit is None for fit in alone):
+    if all(model is None for model in alone):
         raise last or FitFailed("None of these sweeps can be refined.")
     return alone
 
 
 def _refinements(
-    joint: JointProblem, sweeps: Sequence[Sweep], minimum: Minimum, switches: Mapping[str, bool]
+    joint: JointProblem,
+    sweeps: Sequence[Sweep],
+    alone: Sequence[Model | None],
+    minimum: Minimum,
+    switches: Mapping[str, bool],
 ) -> list[Refinement]:
     curvature, first, made = Curvature.of(minimum), 0, []
     free = {name for name, _ in joint.names}
     common = [_WORDS[name] for name in switches if switches[name] and name in free]
     others = "one other sweep" if len(sweeps) == 2 else f"{len(sweeps) - 1} other sweeps"
     said = f"Refined together with {others}{f', sharing {_listed(common)}' if common else ''}."
-    for sweep, problem, columns in zip(sweeps, joint.problems, joint.columns, strict=True):
+    shared = frozenset(name for name, on in switches.items() if on)
+    for index, (sweep, problem, columns) in enumerate(zip(sweeps, joint.problems, joint.columns, strict=True)):
         rows = slice(first, first + problem.sweep.voltage.size)
         first = rows.stop
         residual = minimum.residual[rows]
@@ -175,7 +182,8 @@ def _refinements(
             cost=float(residual @ residual),
         )
         one = refinement_of(sweep, problem, part, curvature.of_these(columns), problem.pattern(part))
-        made.append(replace(one, findings=(said, *one.findings), others=len(sweeps) - 1))
+        bond = Bond(index, shared, alone[index])
+        made.append(replace(one, findings=(said, *one.findings), others=len(sweeps) - 1, bond=bond))
     return made
 
 
@@ -183,12 +191,12 @@ def _conflict(
     joint: JointProblem,
     minimum: Minimum,
     sweeps: Sequence[Sweep],
-    alone: Sequence[Refinement | None],
+    alone: Sequence[Model | None],
     settings: Sequence[FitSettings],
     switches: Mapping[str, bool],
 ) -> list[str]:
     """Whether sharing costs more than noise explains, and which parameter disagrees most."""
-    if any(fit is None for fit in alone):
+    if any(model is None for model in alone):
         return ["Not every sweep can be refined alone, so whether they agree was not weighed."]
     free = {name for name, _ in joint.names}
     common = [name for name in switches if switches[name] and sum(name in p.unknowns.free for p in joint.problems) > 1]
@@ -207,7 +215,8 @@ def _conflict(
     gains = {}
     for name in common:
         try:
-            gains[name] = minimum.cost - JointProblem(sweeps, alone, settings, {**switches, name: False}).lowest().cost
+            apart_in = JointProblem.of(sweeps, alone, settings, {**switches, name: False})
+            gains[name] = minimum.cost - apart_in.lowest().cost
         except FitFailed:
             continue
     worst = max(gains, key=gains.__getitem__, default=None)

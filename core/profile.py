@@ -12,7 +12,7 @@ lies where the sum of squares has grown by the factor 1 + t²/ν, t being Studen
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -21,16 +21,16 @@ from scipy.special import stdtrit
 from .errors import FitFailed
 from .fit_problem import Problem, points_used
 from .intervals import Curvature, natural_ends, scaled
+from .joint_problem import JointProblem
 from .least_squares import minimise
 from .models import Model
 from .refinement import Refinement
 from .sweep import Sweep
-from .unknowns import Kind
+from .unknowns import FARTHEST, LEAST_LOG, Kind
 
 # An end is found when the growth of the sum of squares hits its mark to this part of t.
 _CLOSE = 2e-3
 _STEPS = 25
-_LARGEST_LOG = 690.0
 _COST_TOLERANCE, _LIMIT = 1e-9, 50
 
 
@@ -72,8 +72,17 @@ class ProfileCurve:
     mark: float
 
 
+# The other sweeps of a joint fit with their refinements, in the order of that fit.
+Beside = Sequence[tuple[Sweep, Refinement]]
+
+
 def profile_intervals(
-    sweep: Sweep, refinement: Refinement, confidence: float | None = None, parameters: Iterable[str] | None = None
+    sweep: Sweep,
+    refinement: Refinement,
+    confidence: float | None = None,
+    parameters: Iterable[str] | None = None,
+    *,
+    beside: Beside = (),
 ) -> dict[str, Interval]:
     """Profile-likelihood intervals of free parameters.
 
@@ -86,74 +95,77 @@ def profile_intervals(
         Level; None: that of the refinement's settings.
     parameters : iterable of str or None
         Names; None: all that were free.
+    beside : sequence of (Sweep, Refinement)
+        Where the sweep was refined together with others: these, with their refinements, in the order of that fit.
 
     Returns
     -------
     dict of str to Interval
-        Fit noise only. Weights are frozen as the refinement left them.
+        Fit noise only. Weights are frozen as the refinement left them. Of a joint fit all sweeps say how far a
+        parameter of this one can move.
 
     Raises
     ------
     FitFailed
         If a name was not free, there are no more points than free parameters, or the sweep was refined together
-        with others.
+        with others that are not those given.
     """
     with np.errstate(all="ignore"):  # a trial may leave the range of floats; it then counts as far off
-        profiler = _Profiler(sweep, refinement, confidence)
+        profiler = _Profiler(sweep, refinement, confidence, beside)
         names = refinement.free if parameters is None else tuple(parameters)
         return {name: profiler.interval(name) for name in names}
 
 
 def profile_curve(
-    sweep: Sweep, refinement: Refinement, parameter: str, *, confidence: float | None = None, points: int = 25
+    sweep: Sweep,
+    refinement: Refinement,
+    parameter: str,
+    *,
+    confidence: float | None = None,
+    points: int = 25,
+    beside: Beside = (),
 ) -> ProfileCurve:
     """The profile of one parameter over somewhat more than its interval. Parameters and errors as for ``profile_intervals``."""
     with np.errstate(all="ignore"):
-        profiler = _Profiler(sweep, refinement, confidence)
+        profiler = _Profiler(sweep, refinement, confidence, beside)
         return profiler.curve(parameter, points)
 
 
 class _Profiler:
-    """The problem of a refinement, with one parameter after the other held."""
+    """The problem of a refinement or of the joint fit it belongs to, with one parameter after the other held."""
 
-    def __init__(self, sweep: Sweep, refinement: Refinement, confidence: float | None):
-        if refinement.others:
-            raise FitFailed(
-                "This sweep was refined together with others, so its intervals are those of the joint fit; "
-                "refine it alone for profile intervals."
-            )
-        settings = refinement.settings
-        level = settings.confidence if confidence is None else confidence
+    def __init__(self, sweep: Sweep, refinement: Refinement, confidence: float | None, beside: Beside):
+        level = refinement.settings.confidence if confidence is None else confidence
         if not 0 < level < 1:
             raise FitFailed("The confidence of intervals must lie between 0 and 1, for instance 0.95.")
-        self.given = self.model = refinement.model
-        self.problem = Problem.of(points_used(sweep, settings), settings, self.model).around(self.model)
-        unknowns = self.problem.unknowns
-        freedom = self.problem.sweep.voltage.size - len(unknowns.free)
+        self.problem, self.index, models = _problem_of(sweep, refinement, beside)
+        self.own, columns = self.problem.problems[self.index], self.problem.columns[self.index]
+        freedom = self.problem.count - len(self.problem.names)
         if freedom < 1:
             raise FitFailed("There are as many free parameters as points, so no interval can be given; hold some of them.")
-        place = np.clip(unknowns.place(self.model), self.problem.lower, self.problem.upper)
+        place = np.clip(self.problem.place(models), self.problem.lower, self.problem.upper)
         # Polished, for the model may have been read back from rounded numbers.
         self.minimum = minimise(self.problem.evaluate, place, self.problem.lower, self.problem.upper)
-        self.model = unknowns.model(self.minimum.place)
+        self.given, self.models = refinement.model, self.problem.models_at(self.minimum.place)
         self.curvature = Curvature.of(self.minimum)
         known = np.isfinite(np.diag(refinement.covariance))
         # What the refinement found not determined is not searched for ends.
         self.open = {name for name, flag in zip(refinement.free, known, strict=True) if not flag}
-        self.chain = unknowns.scaled_chain(self.minimum.place)
+        self.chain = np.zeros((columns.size, self.minimum.place.size))
+        self.chain[:, columns] = self.own.unknowns.scaled_chain(self.minimum.place[columns])
         self.mark = float(stdtrit(freedom, 0.5 + level / 2))
-        rounding = 1e-24 * float(np.sum((self.problem.weight * self.problem.sweep.current) ** 2))
+        rounding = 1e-24 * sum(float(np.sum((each.weight * each.sweep.current) ** 2)) for each in self.problem.problems)
         self.unit = max(self.minimum.cost, rounding) / freedom
 
     def interval(self, name: str) -> Interval:
         if name in self.open:
-            return Interval(*self.problem.limits[name], low_bounded=False, high_bounded=False)
+            return Interval(*self.own.limits[name], low_bounded=False, high_bounded=False)
         line = self._line(name)
         low, low_bounded = line.end(-1.0, self.mark)
         high, high_bounded = line.end(+1.0, self.mark)
         ends = natural_ends(line.kind, low, high)
         bounded = (high_bounded, low_bounded) if line.kind == "inverse" else (low_bounded, high_bounded)
-        limit = self.problem.limits[name]
+        limit = self.own.limits[name]
         here = getattr(self.given, name)
         # An end that the data do not set is that of the bounds; the refined value itself always lies inside.
         return Interval(
@@ -180,18 +192,50 @@ class _Profiler:
         return ProfileCurve(values[order], growth[order], self.mark)
 
     def _line(self, name: str) -> _Line:
-        problem, unknowns = self.problem, self.problem.unknowns
+        unknowns = self.own.unknowns
         if name not in unknowns.free:
             raise FitFailed(f"The {name.replace('_', ' ')} was not free in this fit, so it has no interval.")
         kind, row = unknowns.kind(name), unknowns.free.index(name)
-        held = Problem.of(problem.sweep, problem.settings, self.model, size=unknowns.scales, hold=(name,))
-        held = held.with_weight(problem.weight)
-        variance = float(self.chain[row] @ self.curvature.inverse @ self.chain[row])
+        move = self.chain[row]
+        variance = float(move @ self.curvature.inverse @ move)
         step = math.sqrt(max(variance * self.curvature.variance, 0.0))
-        ends = sorted(_scaled_end(kind, value) for value in problem.limits[name])
-        # How the others go with the parameter near the minimum.
-        slope = (self.curvature.inverse @ self.chain[row]) / variance if variance > 0 else np.zeros(row + 1)
-        return _Line(self, held, name, kind, step, (ends[0], ends[1]), slope)
+        farthest = -LEAST_LOG if kind == "log" else FARTHEST * abs(float(move[self.problem.columns[self.index][row]]))
+        ends = sorted(min(max(_scaled_end(kind, value), -farthest), farthest) for value in self.own.limits[name])
+        # How all unknowns go with the parameter near the minimum.
+        slope = (self.curvature.inverse @ move) / variance if variance > 0 else np.zeros(move.size)
+        return _Line(self, name, kind, step, (ends[0], ends[1]), slope)
+
+
+def _problem_of(sweep: Sweep, refinement: Refinement, beside: Beside) -> tuple[JointProblem, int, tuple[Model, ...]]:
+    """The least-squares problem of a refinement, the place of the sweep in it, and the refined models."""
+    bond, settings = refinement.bond, refinement.settings
+    if bond is None and refinement.others:
+        raise FitFailed(
+            "This sweep was refined together with others, and what its profile intervals need was not kept; "
+            "refine them together again."
+        )
+    if bond is None:
+        problem = Problem.of(points_used(sweep, settings), settings, refinement.model).around(refinement.model)
+        models: tuple[Model, ...] = (refinement.model,)
+        return JointProblem.over([problem], models, dict.fromkeys(settings.parameters, False)), 0, models
+    whole = [*beside[: bond.place], (sweep, refinement), *beside[bond.place :]]
+    if len(beside) != refinement.others or any(
+        fit.others != refinement.others
+        or fit.bond is None
+        or (fit.bond.place, fit.bond.shared, fit.bond.entries) != (place, bond.shared, bond.entries)
+        for place, (_, fit) in enumerate(whole)
+    ):
+        raise FitFailed(
+            "This sweep was refined together with others that are gone or were refined anew since, so its profile "
+            "intervals are not known; refine them together again."
+        )
+    joint = JointProblem.of(
+        [each for each, _ in whole],
+        [fit.bond.alone for _, fit in whole],
+        [fit.settings for _, fit in whole],
+        {name: name in bond.shared for name in settings.parameters},
+    )
+    return joint, bond.place, tuple(fit.model for _, fit in whole)
 
 
 class _Line:
@@ -200,22 +244,22 @@ class _Line:
     def __init__(
         self,
         profiler: _Profiler,
-        problem: Problem,
         name: str,
         kind: Kind,
         step: float,
         ends: tuple[float, float],
         slope: np.ndarray,
     ):
-        self.profiler, self.problem, self.name, self.kind = profiler, problem, name, kind
-        farthest = _LARGEST_LOG if kind == "log" else math.inf
-        self.low, self.high = max(ends[0], -farthest), min(ends[1], farthest)
-        self.centre = min(max(scaled(kind, getattr(profiler.model, name)), self.low), self.high)
+        self.profiler, self.name, self.kind = profiler, name, kind
+        self.sharing = profiler.problem.sharing(name, profiler.index)
+        self.problem = profiler.problem.holding(name, self.sharing, profiler.models)
+        self.low, self.high = ends
+        self.centre = min(max(scaled(kind, getattr(profiler.models[profiler.index], name)), self.low), self.high)
         # Where the linear spread says nothing, a first stride that the search can lengthen.
         scale = max(abs(self.centre), 1e-12)
         most, usual = (50.0, 3.0) if kind == "log" else (1e6 * scale, 0.1 * scale)
         self.step = step if 0 < step < most else usual
-        self.known: list[tuple[float, np.ndarray]] = [(self.centre, problem.unknowns.place(profiler.model))]
+        self.known: list[tuple[float, np.ndarray]] = [(self.centre, self.problem.place(profiler.models))]
         self.first = self._predicted(slope)
 
     def growth(self, value: float) -> float:
@@ -243,12 +287,12 @@ class _Line:
         value = self.centre + side * reach
         for _ in range(_STEPS):
             if (value - limit) * side >= 0:
-                value = limit if math.isfinite(limit) else math.copysign(1e300, side)
+                value = limit
             here = self.growth(value)
             if abs(here - mark) <= _CLOSE * mark:
                 return value, True
             if here < mark:
-                if value == limit or not abs(value) < 1e280:
+                if value == limit:
                     return limit, False
                 inner, grown = value, here
             else:
@@ -264,21 +308,17 @@ class _Line:
                 value = inner + min(max(share, 0.05), 0.95) * (outer - inner)
         return (limit, False) if math.isinf(outer) else (outer, True)
 
-    def _held_at(self, value: float) -> Problem:
+    def _held_at(self, value: float) -> JointProblem:
         natural = natural_ends(self.kind, value, value)[0]
-        return self.problem.held_at(self.name, natural)
+        return self.problem.held_at(self.name, self.sharing, natural)
 
     def _predicted(self, slope: np.ndarray) -> Callable[[float], np.ndarray]:
         """Places of the others near the minimum, to first order."""
-        profiler = self.profiler
-        full, wide = profiler.minimum.place, profiler.problem.unknowns
+        full, wide = self.profiler.minimum.place, self.profiler.problem
 
         def at(value: float) -> np.ndarray:
-            if slope.size != full.size:
-                return self.known[0][1]
-            moved = np.clip(full + slope * (value - self.centre), profiler.problem.lower, profiler.problem.upper)
-            model: Model = wide.model(moved)
-            return self.problem.unknowns.place(model)
+            moved = np.clip(full + slope * (value - self.centre), wide.lower, wide.upper)
+            return self.problem.place(wide.models_at(moved))
 
         return at
 

@@ -85,7 +85,7 @@ def refinement_of(
 ) -> Refinement:
     """What a minimum says, as the outcome of a fit."""
     used, settings, unknowns, limits = problem.sweep, problem.settings, problem.unknowns, problem.limits
-    model = unknowns.final(minimum.place)
+    model = unknowns.final(minimum.place, limits)
     s_shaped = sweep.lit and pattern.systematic and looks_s_shaped(used)
     reaches_voc = not sweep.lit or bool(np.min(used.current) <= 0)
     known = knowledge(curvature, unknowns, limits, settings.confidence)

@@ -13,6 +13,49 @@ from .fit_settings import FitSettings
 from .models import Model, model_from_dict
 
 
+@dataclass(frozen=True, slots=True)
+class Bond:
+    """What ties the refinement of one sweep to those of the others in a joint fit.
+
+    With the other sweeps and their refinements it gives the least-squares problem of that fit back.
+
+    Attributes
+    ----------
+    place : int
+        Of this sweep among those of the fit.
+    shared : frozenset of str
+        Parameters that had one value for all.
+    alone : OneDiode, TwoDiode or None
+        This sweep as refined alone, which set its weight beside the others; None where it could not be.
+    entries : tuple of str
+        The sweeps of the fit by their ids in a workspace, in order; empty outside one.
+    """
+
+    place: int
+    shared: frozenset[str]
+    alone: Model | None
+    entries: tuple[str, ...] = ()
+
+    def to_dict(self) -> dict[str, Any]:
+        """As JSON-ready values; ``from_dict`` gives an equal bond back."""
+        return {
+            "place": self.place,
+            "shared": sorted(self.shared),
+            "alone": None if self.alone is None else self.alone.to_dict(),
+            "entries": list(self.entries),
+        }
+
+    @classmethod
+    def from_dict(cls, values: Mapping[str, Any]) -> Bond:
+        alone = values["alone"]
+        return cls(
+            int(values["place"]),
+            frozenset(values["shared"]),
+            None if alone is None else model_from_dict(alone),
+            tuple(str(entry) for entry in values["entries"]),
+        )
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Refinement:
     """A refined model with its statistics. Uncertainties are of fit noise only.
@@ -42,6 +85,8 @@ class Refinement:
         Sentences on what the fit says, and what it cannot say.
     others : int
         Sweeps that it was refined together with.
+    bond : Bond or None
+        What ties it to them; None where it was refined alone, or kept before bonds were.
     """
 
     model: Model
@@ -55,6 +100,7 @@ class Refinement:
     findings: tuple[str, ...] = ()
     weights: str = "uniform"
     others: int = 0
+    bond: Bond | None = None
 
     def __post_init__(self):
         covariance = np.array(self.covariance, dtype=float)
@@ -82,6 +128,7 @@ class Refinement:
             "findings": list(self.findings),
             "weights": self.weights,
             "others": self.others,
+            "bond": None if self.bond is None else self.bond.to_dict(),
         }
 
     @classmethod
@@ -100,6 +147,7 @@ class Refinement:
                     for name, (low, high) in values["intervals"].items()
                 },
                 "findings": tuple(values["findings"]),
+                "bond": None if values.get("bond") is None else Bond.from_dict(values["bond"]),
             }
         )
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import ClassVar
 
 import numpy as np
@@ -18,7 +18,7 @@ from .constants import thermal_voltage
 from .errors import FitFailed
 from .first_guess import Scales
 from .two_diode import TWO_DIODE_PARAMETERS, TwoDiode
-from .unknowns import Kind
+from .unknowns import FARTHEST, LEAST_LOG, Kind, kept_within
 
 # Physical bounds of n₁ and n₂.
 _IDEALITY = (0.5, 5.0)
@@ -130,12 +130,13 @@ class TwoDiodeUnknowns:
                 if name not in self.logarithmic:
                     steepness = self.scales.voltage / (natural[n] * self.cell_voltage)
                     log_saturation = math.log(max(value[name], FAINT) * self.scales.current) - steepness
-                natural[name] = math.exp(min(max(log_saturation, -_LARGEST_LOG), 100.0))
+                natural[name] = math.exp(min(max(log_saturation, LEAST_LOG), 100.0))
         return TwoDiode(**natural, series_cells=base.series_cells, temperature=base.temperature)
 
-    def final(self, place: np.ndarray) -> TwoDiode:
+    def final(self, place: np.ndarray, limits: Mapping[str, tuple[float, float]]) -> TwoDiode:
         """The model at a place where a fit came to rest; a diode that carries nothing there is absent."""
-        natural = self.model(place).to_dict()
+        model = self.model(place)
+        natural = {name: getattr(model, name) for name in self.free}
         absent = [
             name
             for name, value in zip(self.free, place.tolist(), strict=True)
@@ -143,7 +144,7 @@ class TwoDiodeUnknowns:
         ]
         for name in absent[: 1 if len(absent) > 1 else None]:
             natural[name] = 0.0
-        return TwoDiode.from_dict(natural)
+        return replace(model, **kept_within(limits, natural))
 
     def chain(self, place: np.ndarray) -> np.ndarray:
         """∂(Jph, ln J0₁, ln J0₂, n₁, n₂, Rs, 1/Rsh)/∂unknowns, shape (7, k)."""
@@ -187,7 +188,7 @@ class TwoDiodeUnknowns:
             if name == "photocurrent":
                 ends.append((low / current, high / current))
             elif name in self.logarithmic:
-                ends.append((math.log(max(low, 1e-290)), math.log(high) if math.isfinite(high) else math.inf))
+                ends.append((max(math.log(max(low, 1e-300)), LEAST_LOG), math.log(high) if math.isfinite(high) else math.inf))
             elif name.startswith("saturation_current"):
                 # With n free the limits are the physical ones, which hold for every n.
                 steepness = voltage / (getattr(self.base, f"ideality_{name[-1]}") * self.cell_voltage)
@@ -199,5 +200,5 @@ class TwoDiodeUnknowns:
                 ends.append((low * current / voltage, high * current / voltage))
             else:
                 ends.append((voltage / (current * high), voltage / (current * low) if low > 0 else math.inf))
-        lower, upper = np.array(ends, dtype=float).reshape(-1, 2).T
+        lower, upper = np.clip(np.array(ends, dtype=float).reshape(-1, 2).T, -FARTHEST, FARTHEST)
         return lower, upper

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import ClassVar, Literal
 
 import numpy as np
@@ -22,7 +22,11 @@ from .first_guess import Scales
 # Physical bounds of n; wider where the sweep's voltage shows that the cells in series are not what they are said to be.
 _IDEALITY = (0.3, 10.0)
 Kind = Literal["plain", "log", "inverse"]
-_LARGEST_LOG = 690.0  # exp() of more is not a float
+# Smallest ln J0: the exponent of the diode, ln(J/J0), stays below the largest that the solvers hold, and they do not yet
+# take the diode for absent.
+LEAST_LOG = -450.0
+# No sweep tells an unknown of this size from infinity, and beyond it products of parameters leave the range of floats.
+FARTHEST = 1e12
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,9 +84,10 @@ class Unknowns:
         """How close to its bound an unknown counts as lying on it, shape (k,)."""
         return 1e-7 * np.maximum(np.abs(place), 1e-3)
 
-    def final(self, place: np.ndarray) -> OneDiode:
+    def final(self, place: np.ndarray, limits: Mapping[str, tuple[float, float]]) -> OneDiode:
         """The model at a place where a fit came to rest."""
-        return self.model(place)
+        model = self.model(place)
+        return replace(model, **kept_within(limits, {name: getattr(model, name) for name in self.free}))
 
     def scaled_chain(self, place: np.ndarray) -> np.ndarray:
         """∂(free parameters, each on the scale of its kind)/∂unknowns, shape (k, k)."""
@@ -117,7 +122,7 @@ class Unknowns:
             ideality = voltage / (steepness * self.cell_voltage)
         if "saturation_current" in value:
             log_saturation = value["saturation_current"] - (steepness if self.coupled else 0.0)
-            saturation = math.exp(min(max(log_saturation, -_LARGEST_LOG), 100.0))
+            saturation = math.exp(min(max(log_saturation, LEAST_LOG), 100.0))
         if "shunt_resistance" in value:
             conductance = value["shunt_resistance"] * current / voltage
             shunt = 1.0 / conductance if conductance > 0 else math.inf
@@ -176,10 +181,18 @@ class Unknowns:
                 ends.append((low * current / voltage, high * current / voltage))
             else:
                 ends.append((voltage / (current * high), voltage / (current * low) if low > 0 else math.inf))
-        lower, upper = np.array(ends, dtype=float).reshape(-1, 2).T
+        lower, upper = np.clip(np.array(ends, dtype=float).reshape(-1, 2).T, -FARTHEST, FARTHEST)
         return lower, upper
+
+
+def kept_within(limits: Mapping[str, tuple[float, float]], values: Mapping[str, float]) -> dict[str, float]:
+    """The parameters inside their limits to the last digit.
+
+    An unknown on the end of its box can come back as a parameter that lies a rounding beyond the limit itself.
+    """
+    return {name: min(max(value, limits[name][0]), limits[name][1]) for name, value in values.items()}
 
 
 def _log(value: float) -> float:
     """Logarithm with the ends that J0 may have."""
-    return math.inf if math.isinf(value) else math.log(max(value, 1e-290))
+    return math.inf if math.isinf(value) else max(math.log(max(value, 1e-300)), LEAST_LOG)

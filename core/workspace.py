@@ -238,6 +238,22 @@ class Workspace:
         stands = fit.refinement is not None and fit.refinement.model == fit.model
         return fit.refinement if stands else None
 
+    def beside(self, entry_id: str) -> tuple[tuple[Sweep, Refinement], ...]:
+        """The other sweeps that a sweep was refined together with, and their refinements, in the order of that fit.
+
+        Those that are gone, or were refined anew since, are left out; empty where the sweep was refined alone.
+        """
+        mine = self.fit(entry_id).refinement
+        if mine is None or mine.bond is None:
+            return ()
+        others = [each for each in mine.bond.entries if each != entry_id and each in self.entries]
+        kept = [(each, self.fit(each).refinement) for each in others]
+        return tuple(
+            (self.sweep(each), fit)
+            for each, fit in kept
+            if fit is not None and fit.bond is not None and fit.bond.entries == mine.bond.entries
+        )
+
     def entries_of(self, device_id: str) -> list[Entry]:
         """The sweeps of one device, in their order."""
         return sorted((e for e in self.entries.values() if e.device == device_id), key=_place)

@@ -4,14 +4,17 @@ import dataclasses
 import json
 import math
 
+import lmfit
 import numpy as np
 import pytest
+from scipy.optimize import brentq, least_squares, minimize_scalar
+from scipy.stats import t as student
 
 from core.diode import OneDiode
 from core.errors import FitFailed
 from core.fit_settings import FitSettings
 from core.joint import refine_together, usually_shared
-from core.profile import profile_intervals
+from core.profile import profile_curve, profile_intervals
 from core.refine import Refinement, refine
 from core.sweep import Conditions, Sweep
 from core.two_diode import TwoDiode
@@ -163,12 +166,192 @@ def test_a_sweep_that_cannot_stand_alone_is_carried_by_the_others():
     assert "not weighed" in joint.findings[0]
 
 
-def test_a_joint_refinement_says_so_and_has_no_profile_of_its_own():
-    fit = refine_together([lit(), dark()]).refinements[0]
-    again = Refinement.from_dict(json.loads(json.dumps(fit.to_dict(), allow_nan=False)))
-    assert fit.others == again.others == 1 and refine(lit()).others == 0
-    with pytest.raises(FitFailed, match="refined together"):
-        profile_intervals(lit(), again)
+def read_back(fit):
+    return Refinement.from_dict(json.loads(json.dumps(fit.to_dict(), allow_nan=False)))
+
+
+def profiles(sweeps, joint, index=0, **asked):
+    """Profile intervals of one sweep of a joint fit."""
+    pairs = list(zip(sweeps, joint.refinements, strict=True))
+    sweep, fit = pairs.pop(index)
+    return profile_intervals(sweep, fit, beside=pairs, **asked)
+
+
+def of_values(values, index):
+    """The model of one sweep from parameters whose own ones end in its number."""
+
+    def own(name):
+        return values[f"{name}_{index}"] if f"{name}_{index}" in values else values[name]
+
+    return OneDiode(
+        1e-2 * own("photocurrent"), math.exp(own("log_saturation")), own("ideality"), own("series"), 1e4 / own("conductance")
+    )
+
+
+def test_profile_intervals_agree_with_lmfit():
+    """The same joint problem stated anew for lmfit, the noise of each sweep from lmfit's fits of it alone."""
+    sweeps = [lit(seed=1, noise=3e-3, points=50), lit(level=0.4, seed=2, noise=3e-3, points=40)]
+    joint = refine_together(sweeps)
+
+    def parameters(indices):
+        values = lmfit.Parameters()
+        model = joint.refinements[0].model
+        values.add("log_saturation", math.log(model.saturation_current))
+        values.add("ideality", model.ideality)
+        values.add("series", model.series_resistance)
+        for index in indices:
+            model = joint.refinements[index].model
+            values.add(f"photocurrent_{index}", 1e2 * model.photocurrent)
+            values.add(f"conductance_{index}", 1e4 / model.shunt_resistance)
+        return values
+
+    def misses(values, indices, noise):
+        plain = values.valuesdict()
+        return np.concatenate(
+            [(of_values(plain, i).current(sweeps[i].voltage) - sweeps[i].current) / noise[i] for i in indices]
+        )
+
+    alone = [lmfit.minimize(misses, parameters([i]), args=([i], [1e-5, 1e-5]), xtol=1e-12, ftol=1e-12) for i in (0, 1)]
+    noise = [1e-5 * math.sqrt(fit.redchi) for fit in alone]
+    minimiser = lmfit.Minimizer(misses, parameters([0, 1]), fcn_args=([0, 1], noise))
+    found = minimiser.minimize(xtol=1e-12, ftol=1e-12)
+    names = ["log_saturation", "ideality", "series", "photocurrent_1", "conductance_1"]
+    ends = {name: (rows[0][1], rows[2][1]) for name, rows in lmfit.conf_interval(minimiser, found, p_names=names, sigmas=[0.95]).items()}
+    ours = profiles(sweeps, joint, index=1)
+    for name, theirs, turn in (
+        ("saturation_current", ends["log_saturation"], math.log),
+        ("ideality", ends["ideality"], float),
+        ("series_resistance", ends["series"], float),
+        ("photocurrent", ends["photocurrent_1"], lambda value: 1e2 * value),
+        ("shunt_resistance", ends["conductance_1"], lambda value: 1e4 / value),
+    ):
+        interval = ours[name]
+        assert interval.low_bounded and interval.high_bounded
+        mine = sorted((turn(interval.low), turn(interval.high)))
+        assert mine == pytest.approx(theirs, abs=0.01 * (theirs[1] - theirs[0])), name
+        if not name.startswith(("photocurrent", "shunt")):
+            assert profiles(sweeps, joint, index=0)[name] == interval  # a shared parameter has one interval
+
+
+def test_a_shunt_that_may_be_absent_is_bounded_from_below_only_as_a_scan_finds_it():
+    """Lit and dark share all but Jph; the other parameters are refitted by scipy at every shunt that is tried."""
+    bare = dataclasses.replace(CELL, shunt_resistance=math.inf)
+    sweeps = [lit(bare, noise=3e-3, seed=4), lit(bare, level=0.5, noise=3e-3, seed=5)]
+    joint = refine_together(sweeps, shared={"shunt_resistance": True})
+    noise = [math.sqrt(80 / 75) * refine(sweep).rmse for sweep in sweeps]
+
+    def cost(conductance):
+        def misses(place):
+            values = dict(zip(("log_saturation", "ideality", "series", "photocurrent_0", "photocurrent_1"), place, strict=True))
+            values["conductance"] = conductance
+            models = [of_values(values, index) for index in (0, 1)]
+            return np.concatenate([(m.current(s.voltage) - s.current) / n for m, s, n in zip(models, sweeps, noise, strict=True)])
+
+        start = [math.log(CELL.saturation_current), 1.6, 3.0, 2.2, 1.1]
+        return 2 * least_squares(misses, start, x_scale=[1, 0.1, 1, 1, 1], xtol=1e-14, ftol=1e-14, gtol=1e-14).cost
+
+    freedom = 160 - 6
+    lowest = minimize_scalar(cost, bounds=(1e-6, 20.0), method="bounded", options={"xatol": 1e-4})
+    mark = lowest.fun * (1 + student.ppf(0.975, freedom) ** 2 / freedom)
+    end = brentq(lambda conductance: cost(conductance) - mark, lowest.x, 50.0)
+    interval = profiles(sweeps, joint)["shunt_resistance"]
+    assert interval.low == pytest.approx(1e4 / end, rel=0.01)
+    assert interval.low_bounded and interval.high == math.inf and not interval.high_bounded
+    # Linear ends: close by, for the minimum is no more than a bound away.
+    assert joint.refinements[1].intervals["shunt_resistance"][0] == pytest.approx(interval.low, rel=0.2)
+
+
+def test_sweeps_that_share_nothing_have_nearly_the_intervals_of_their_own():
+    sweeps = [lit(seed=1), dark()]
+    joint = refine_together(sweeps, shared=dict.fromkeys(CELL.parameters, False))
+    for index, sweep in enumerate(sweeps):
+        alone = profile_intervals(sweep, refine(sweep))
+        for name, interval in profiles(sweeps, joint, index).items():
+            width = alone[name].high - alone[name].low
+            # Student's t is of more degrees of freedom.
+            assert interval.low == pytest.approx(alone[name].low, abs=0.02 * width), name
+            assert interval.high == pytest.approx(alone[name].high, abs=0.02 * width), name
+
+
+@pytest.mark.parametrize("asked", [FitSettings(loss="robust"), FitSettings(weights="effective", voltage_noise=1e-3)])
+def test_weights_of_a_joint_fit_are_those_that_it_was_made_with(asked):
+    sweeps = [lit(seed=1), lit(level=0.5, seed=2)]
+    joint = refine_together(sweeps, settings=asked)
+    for name, interval in profiles(sweeps, joint).items():
+        low, high = joint.refinements[0].intervals[name]
+        assert interval.low == pytest.approx(low, abs=0.03 * (high - low))
+        assert interval.high == pytest.approx(high, abs=0.03 * (high - low))
+
+
+def test_the_profile_curve_of_a_joint_fit_crosses_its_mark_at_the_ends_of_the_interval():
+    sweeps = [lit(seed=1), dark()]
+    first, second = refine_together(sweeps).refinements
+    beside = [(sweeps[1], second)]
+    interval = profile_intervals(sweeps[0], first, beside=beside)["series_resistance"]
+    curve = profile_curve(sweeps[0], first, "series_resistance", beside=beside)
+    beyond = (curve.values < interval.low) | (curve.values > interval.high)
+    assert np.any(beyond) and np.all(curve.growth[beyond] > 0.99 * curve.mark)
+    assert np.all(curve.growth[~beyond] < 1.01 * curve.mark)
+
+
+def test_two_diodes_refined_together_have_intervals_too():
+    cell = TwoDiode(0.035, 3e-13, 4e-9, 0.8, 2500.0)
+    sweeps = [lit(cell, seed=1), lit(cell, 0.2, seed=2)]
+    for hold in (None, frozenset()):
+        joint = refine_together(sweeps, settings=FitSettings(model="two diodes", hold=hold))
+        for name, interval in profiles(sweeps, joint).items():
+            assert interval.low <= getattr(joint.refinements[0].model, name) <= interval.high
+            assert interval.low < getattr(cell, name) < interval.high, name
+
+
+def test_a_joint_refinement_says_so_and_its_profile_needs_the_others():
+    sweeps = [lit(seed=seed, level=level) for seed, level in enumerate((1.0, 0.5, 0.2))]
+    joint = refine_together(sweeps)
+    again = [read_back(fit) for fit in joint.refinements]
+    assert [fit.others for fit in again] == [2, 2, 2] and refine(lit()).others == 0
+    assert [fit.bond for fit in again] == [fit.bond for fit in joint.refinements]
+    beside = [(sweeps[0], again[0]), (sweeps[2], again[2])]
+    assert profile_intervals(sweeps[1], again[1], beside=beside) == profiles(sweeps, joint, index=1)
+    strangers = [(sweeps[0], refine(sweeps[0])), beside[1]]
+    pair = refine_together(sweeps[1:])
+    for wrong in ([], beside[:1], beside[::-1], strangers, [(sweeps[0], pair.refinements[0]), beside[1]]):
+        with pytest.raises(FitFailed, match="gone or were refined anew"):
+            profile_intervals(sweeps[1], again[1], beside=wrong)
+
+
+def test_a_joint_refinement_kept_without_its_bond_still_loads_and_says_what_to_do():
+    values = refine_together([lit(), dark()]).refinements[0].to_dict()
+    del values["bond"]
+    old = Refinement.from_dict(json.loads(json.dumps(values)))
+    assert old.others == 1 and old.bond is None
+    with pytest.raises(FitFailed, match="refine them together again"):
+        profile_intervals(lit(), old)
+
+
+def test_wild_points_end_in_curves_or_a_sentence():
+    """Found by searching: of sweeps that differ by 300 decades one leaves the range of floats on the other's scale."""
+    flat = Sweep(np.full(12, 0.5), np.zeros(12), conditions=Conditions(lit=False))
+    three = Sweep([0.5, 1.0, 29.61151793], [1.0, -7.6e-17, 2.41609223])
+    voltage = np.array([0.0, 1.1e-41, 0.5, 0.5, 0.5, 1, 1, 1, 1, 1, 1, 1])
+    current = np.array([-7.6, -40.8, 0.5, -19.9, 1, -19.9, -19.9, -19.9, -19.9, 1, 0, -19.9])
+    dim = Sweep([-42.67, *10 * [0.0]], [0.5, 0, 1, 0.99999, 0.4, 0, 0.5, 50, 1, 0, -6.7e-202])
+    bright = Sweep(
+        [0, 0, 0, 1.16e-42, 0.5, 1, 1, 4.80236719, 34.6912916],
+        [-39.2436501, 1, 36.652764, -1.6e-177, 1.2, 0.5, 30.8672904, 1, 1],
+        conditions=Conditions(lit=False),
+    )
+    wild = Sweep(voltage, current, conditions=Conditions(lit=False))
+    apart = dict.fromkeys(CELL.parameters, False)
+    for sweeps, shared in (([flat, three, wild], {"saturation_current": True, "photocurrent": True}), ([bright, dim], {"shunt_resistance": True})):
+        try:
+            joint = refine_together(sweeps, settings=FitSettings(loss="robust"), shared=apart | shared)
+        except FitFailed as failure:
+            assert str(failure)
+            continue
+        for index, fit in enumerate(joint.refinements):
+            assert math.isfinite(fit.rmse)
+            for name, interval in profiles(sweeps, joint, index).items():
+                assert interval.low <= getattr(fit.model, name) <= interval.high
 
 
 def test_what_is_usually_shared():

@@ -6,6 +6,9 @@ import math
 
 import numpy as np
 import pytest
+from hypothesis import example, given, settings
+from hypothesis import strategies as st
+from hypothesis.extra import numpy as arrays
 
 from core.diode import OneDiode
 from core.errors import FitFailed
@@ -166,3 +169,31 @@ def test_a_refinement_of_two_diodes_survives_the_way_through_json():
     before = refine(sweep_of(dataclasses.replace(CELL, shunt_resistance=math.inf)), settings=TWO)
     after = Refinement.from_dict(json.loads(json.dumps(before.to_dict(), allow_nan=False)))
     assert after.model == before.model and after.settings == before.settings and after.intervals == before.intervals
+
+
+numbers = st.floats(-50, 50, allow_subnormal=False) | st.sampled_from([0.0, 0.5, 1.0])
+
+
+@settings(max_examples=10, deadline=None)
+@given(st.integers(3, 12).flatmap(lambda n: st.tuples(*[arrays.arrays(float, n, elements=numbers)] * 2)), st.booleans())
+# Found by searching: the one-diode fit that a start is made from has a J0 beyond what the solver's exponents hold.
+@example((np.array([-0.02, 0.0, 0.0, 0.0, 0.5, 0.5]), np.array([0.0, 0.0, 0.0, -0.02, 0.5, 0.5])), True)
+def test_any_points_end_in_a_curve_or_a_sentence(points, lit):
+    voltage, current = points
+    try:
+        result = refine(Sweep(np.sort(voltage), current, conditions=Conditions(lit=lit)), settings=TWO)
+    except FitFailed as failure:
+        assert str(failure)
+    else:
+        assert np.isfinite(result.rmse)
+        json.dumps(result.to_dict(), allow_nan=False)
+        for name, (low, high) in result.intervals.items():
+            assert low <= getattr(result.model, name) <= high
+
+
+def test_a_saturation_current_never_falls_to_where_the_solver_takes_the_diode_for_absent():
+    """Found by searching: points that no diode describes, whose fit without shunt then had no Voc."""
+    voltage = np.array([0.0, 0.0, 0.05, 0.5, 0.5, 0.5, 44.4, 44.9, 49.4])
+    current = np.array([0.5, 0.05, 0.5, 49.4, 44.9, 0.0, 0.5, 0.0, 44.4])
+    result = refine(Sweep(voltage, current), settings=FitSettings(model="two diodes", hold=FREE))
+    assert math.isfinite(result.model.landmarks().voc)
