@@ -184,7 +184,7 @@ class OneDiode:
         saturation, photocurrent = self.saturation_current, self.photocurrent
 
         def current_and_steepness(junction: float) -> tuple[float, float]:
-            growth = math.expm1(junction / slope)
+            growth = math.expm1(min(junction / slope, LARGEST_EXPONENT))
             current = photocurrent - saturation * growth - junction * conductance
             return current, saturation * (growth + 1.0) / slope + conductance
 
@@ -235,7 +235,7 @@ class OneDiode:
             junction = (voltage + resistance * self.photocurrent) / divider
         else:
             generated, scaled_slope = self.photocurrent + saturation, divider * slope
-            offset = math.log(diode_drop / scaled_slope) + resistance * generated / scaled_slope
+            offset = math.log(diode_drop) - math.log(scaled_slope) + resistance * generated / scaled_slope
             omega = wrightomega(voltage / scaled_slope + offset)
             if saturation <= self.photocurrent:
                 emission = omega * (scaled_slope / resistance)

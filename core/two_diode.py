@@ -165,7 +165,7 @@ class TwoDiode:
         saturation_1, saturation_2 = self.saturation_current_1, self.saturation_current_2
 
         def current_and_steepness(junction: float) -> tuple[float, float]:
-            growth_1, growth_2 = math.expm1(junction / first), math.expm1(junction / second)
+            growth_1, growth_2 = (math.expm1(min(junction / slope, LARGEST_EXPONENT)) for slope in (first, second))
             current = photocurrent - saturation_1 * growth_1 - saturation_2 * growth_2 - junction * conductance
             diodes = saturation_1 * (growth_1 + 1.0) / first + saturation_2 * (growth_2 + 1.0) / second
             return current, diodes + conductance

@@ -10,6 +10,7 @@ from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from core.diode import PARAMETERS, OneDiode
+from core.two_diode import TwoDiode
 
 CELL = OneDiode(0.022, 1e-12, 1.6, 3.0, 2000.0)
 EPSILON = np.finfo(float).eps
@@ -239,3 +240,21 @@ def test_json_gives_the_same_model_back(shunt):
     model = OneDiode(0.022, np.float64(1e-12), 1.6, 3.0, shunt, series_cells=3, temperature=310.0)
     text = json.dumps(model.to_dict(), allow_nan=False)
     assert OneDiode.from_dict(json.loads(text)) == model
+
+
+@settings(max_examples=300, deadline=None)
+@given(
+    photocurrent=st.floats(-15, 6),
+    saturation=st.floats(-200, 6),
+    ideality=st.floats(-1, 3),
+    series=st.none() | st.floats(-9, 9),
+    shunt=st.none() | st.floats(-6, 15),
+    second=st.none() | st.floats(-200, 6),
+)
+@example(photocurrent=6.0, saturation=-200.0, ideality=-1.0, series=9.0, shunt=None, second=-200.0)
+def test_landmarks_of_whatever_the_dials_take_are_told_and_never_raise(photocurrent, saturation, ideality, series, shunt, second):
+    common = {"series_resistance": 0.0 if series is None else 10**series, "shunt_resistance": math.inf if shunt is None else 10**shunt}
+    model = OneDiode(10**photocurrent, 10**saturation, 10**ideality, **common)
+    assert model.landmarks().jsc <= model.photocurrent * (1 + 1e-9)
+    two = TwoDiode(10**photocurrent, 10**saturation, 0.0 if second is None else 10**second, **common)
+    assert two.landmarks().jsc <= two.photocurrent * (1 + 1e-9)
