@@ -10,8 +10,9 @@ import numpy as np
 from .guesses import finite, level_at_zero, pairs_by_numbers, voltage_likeness
 from .refusal import Refusal
 from .table import Block
+from .thousands import NAMES, Doubt
 from .units import Label, parse_label, parse_unit
-from .words import device_in
+from .words import device_in, is_german
 
 # A voltage without unit beyond this is read as millivolts [V]; module strings end far below.
 _VOLTS_AT_MOST = 150.0
@@ -21,6 +22,11 @@ _AMPERES_OF_CELL = 1.5
 _AMPERES_AT_MOST = 15.0
 # A density without unit above this at one sun cannot be in A cm⁻².
 _DENSITY_AT_MOST = 0.15
+# Where a point or comma may mark decimals or thousands, a reading beyond these is none:
+# a voltage [V] below the first or beyond _VOLTS_AT_MOST, a density [A cm⁻²], a current [A].
+_DOUBTED_VOLTS_AT_LEAST = 0.02
+_DOUBTED_DENSITY_AT_MOST = 1.0
+_DOUBTED_AMPERES_AT_MOST = 100.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -239,6 +245,13 @@ def _with_units(
         assumed = True
     elif assumed:
         said.append(f"No unit given for the voltage: read as {voltage_unit}; check that this is right.")
+    if block.doubt is not None:
+        larger, note = _resolved(block, block.doubt, voltage, current, voltage_factor, current_factor, density)
+        said += note
+        voltage_factor *= larger.get(voltage.index, 1.0)
+        current_factor *= larger.get(current.index, 1.0)
+    if block.note:
+        said.append(block.note)
     device = current.device or voltage.device or _device_in_label(current.label)
     area = None
     if density and current.label.factor is not None:
@@ -250,7 +263,7 @@ def _with_units(
                         f"The file gives current and density; their ratio, {area:.4g} cm², is taken as its area."
                     )
                     break
-    if voltage_factor == 1e-3 and voltage.label.factor is not None:
+    if voltage.label.factor == 1e-3:
         said.append("The voltage was read in mV.")
     return Pair(
         voltage.index,
@@ -267,6 +280,49 @@ def _with_units(
         read_unit=read_unit,
         notes=tuple(said),
     )
+
+
+def _resolved(
+    block: Block,
+    doubt: Doubt,
+    voltage: _Column,
+    current: _Column,
+    voltage_factor: float,
+    current_factor: float,
+    density: bool,
+) -> tuple[dict[int, float], list[str]]:
+    """Factors for columns in which a point or comma turns out to stand between thousands, and a note.
+
+    Raises
+    ------
+    Refusal
+        If decimals and thousands are equally possible.
+    """
+    doubted = [c.index for c in (voltage, current) if c.index in doubt.first]
+    if not doubted:
+        return {}, []
+    votes = set()
+    if voltage.index in doubted:
+        volts = voltage_factor * float(np.max(np.abs(finite(block.values[:, voltage.index])), initial=0.0))
+        if 1e3 * volts > _VOLTS_AT_MOST:
+            votes.add("decimal")
+        elif volts < _DOUBTED_VOLTS_AT_LEAST:
+            votes.add("thousands")
+    if current.index in doubted:
+        amps = current_factor * float(np.max(np.abs(finite(block.values[:, current.index])), initial=0.0))
+        if 1e3 * amps > (_DOUBTED_DENSITY_AT_MOST if density else _DOUBTED_AMPERES_AT_MOST):
+            votes.add("decimal")
+    expected = doubt.mark == ("," if is_german(" ".join(cell for row in block.labels for cell in row)) else ".")
+    if len(votes) > 1 or not (votes or expected):
+        raise doubt.refusal(doubted[-1])
+    _, cell = doubt.first[doubted[-1]]
+    if votes == {"thousands"}:
+        digits = cell.replace(doubt.mark, "")
+        return dict.fromkeys(doubted, 1e3), [f"A {NAMES[doubt.mark]} stands between thousands: “{cell}” is read as {digits}."]
+    if votes:
+        return {}, []
+    decimals = cell.replace(doubt.mark, ".")
+    return {}, [f"The {NAMES[doubt.mark]} is taken for a decimal mark: “{cell}” is read as {decimals}; check that this is right."]
 
 
 def _device_in_label(label: Label) -> str:

@@ -19,6 +19,7 @@ from .limits import (
     MIN_POINTS,
 )
 from .refusal import EXPORT_TEXT, Refusal
+from .thousands import Doubt
 from .units import parse_label
 from .words import direction_in, light_in
 
@@ -43,7 +44,8 @@ class Block:
     """One run of rows with numbers, and the words that belong to it.
 
     ``values`` has NaN where a cell is empty and inf where the file marks a reading as void; ``broken`` maps
-    (row, column) to text that stands where a number should.
+    (row, column) to text that stands where a number should. ``doubt`` is what is open in how the file writes
+    its numbers, and ``note`` says what is peculiar in it.
     """
 
     values: np.ndarray
@@ -52,6 +54,8 @@ class Block:
     labels: tuple[tuple[str, ...], ...]
     header: dict[str, str]
     words: str
+    doubt: Doubt | None = None
+    note: str = ""
 
 
 @dataclass(slots=True)

@@ -26,6 +26,13 @@ _GENERIC_SHEET = re.compile(r"(?i)^(sheet|tabelle|table|blatt|feuille|hoja|data|
 _SUNS = re.compile(r"(?i)(?<![A-Za-z0-9])(\d{1,4}(?:[.,p]\d{1,4})?)[\s_-]?suns?(?![A-Za-z])")
 _NUMBERED_FILLER = re.compile(r"^(scan|sweep|run|iv|jv|messung)\d+$")
 
+_GERMAN = {"spannung", "strom", "stromdichte", "leistung", "zeit", "messpunkt", "fläche", "flaeche", "betrag"}
+
+
+def is_german(headings: str) -> bool:
+    """Whether headings are German, so that a comma is the decimal mark to expect."""
+    return not _GERMAN.isdisjoint(_tokens(headings))
+
 
 def _tokens(text: str) -> list[str]:
     return [t for t in re.split(r"[^A-Za-zÀ-ÿ0-9]+", text.lower()) if t]
