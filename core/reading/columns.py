@@ -44,6 +44,7 @@ class Pair:
     area: float | None = None
     magnitude: bool = False  # the file gives |current|
     assumed_units: bool = False
+    bare: bool = False  # chosen by its numbers alone
     read_unit: str = ""  # of a current whose unit the file does not give
     notes: tuple[str, ...] = ()
 
@@ -112,7 +113,7 @@ def _labelled(block: Block) -> list[_Column]:
             unit = parse_unit(cell.strip("()[] ")) if cell else None
             if unit is not None and row > main:
                 if label.kind is None or unit.kind == label.kind or {unit.kind, label.kind} == {"current", "density"}:
-                    label = replace(label, kind=unit.kind, factor=unit.factor)
+                    label = replace(label, kind=unit.kind, factor=unit.factor, capital=unit.capital)
             elif cell and row < main and not scores[row]:
                 above = parse_label(cell)
                 label = replace(
@@ -263,6 +264,8 @@ def _with_units(
                         f"The file gives current and density; their ratio, {area:.4g} cm², is taken as its area."
                     )
                     break
+    if voltage.label.capital or current.label.capital:
+        said.append("The M of the unit in the heading is read as milli: no solar cell is measured in megavolts or megaamperes.")
     if voltage.label.factor == 1e-3:
         said.append("The voltage was read in mV.")
     return Pair(
@@ -277,6 +280,7 @@ def _with_units(
         area=area,
         magnitude=current.label.magnitude,
         assumed_units=assumed,
+        bare=voltage.label.kind is None and current.label.kind is None,
         read_unit=read_unit,
         notes=tuple(said),
     )
