@@ -48,16 +48,16 @@ def out_of_reach(sweep: Sweep) -> list[Finding]:
 def _dim(sweep: Sweep) -> list[Finding]:
     order = np.argsort(sweep.voltage, kind="stable")
     volts, amps = sweep.voltage[order], sweep.current[order]
-    if not volts[0] <= 0 <= volts[-1]:
-        return []
-    level, suns = float(np.interp(0.0, volts, amps)), sweep.irradiance / ONE_SUN
+    # A sweep that does not reach V = 0 delivers its largest current nearest to it.
+    level = float(np.interp(0.0, volts, amps) if volts[0] <= 0 <= volts[-1] else np.max(amps))
+    suns = sweep.irradiance / ONE_SUN
     if not 0 < level < _DENSITY_OF_SUN_AT_LEAST * suns:
         return []
     return [
         Finding(
             "density",
             "caution",
-            f"A short-circuit current of {1e3 * level:.3g} mA cm⁻² is very little for {suns:.3g} suns.",
+            f"A current of {1e3 * level:.3g} mA cm⁻² at V = 0 or nearest to it is very little for {suns:.3g} suns.",
             "Unit, area or irradiance is wrong, or the device hardly responds to light.",
             "Check the unit of current, the area in cm² and the irradiance.",
         )

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from .guesses import finite, level_at_zero, pairs_by_numbers, voltage_likeness
+from .guesses import finite, is_count, level_at_zero, pairs_by_numbers, voltage_likeness
 from .refusal import Refusal
 from .table import Block
 from .thousands import NAMES, Doubt
@@ -163,12 +163,25 @@ def _by_label(block: Block, columns: list[_Column]) -> tuple[list[tuple[_Column,
         found = list(zip(voltages, currents, strict=True))
     else:
         found = [(_nearest(voltages, c), c) for c in currents]
+    _refuse_shifted(block, found)
     used = {c.index for pair in found for c in pair}
     left = [c.title or f"column {c.index + 1}" for c in columns if c.index not in used]
     if left:
         names = ", ".join(f"“{name[:40]}”" for name in left[:5]) + (" and more" if len(left) > 5 else "")
         notes.append(f"Not used: {names}.")
     return found, tuple(notes)
+
+
+def _refuse_shifted(block: Block, found: list[tuple[_Column, _Column]]) -> None:
+    """Headings that lost a cell stand above the wrong columns; a count of the rows then looks like the voltage."""
+    headings = max(map(len, block.labels), default=0)
+    if headings < block.values.shape[1] and any(is_count(block.values[:, voltage.index]) for voltage, _ in found):
+        raise Refusal(
+            f"the rows have {block.values.shape[1]} columns and the headings only {headings}, and what stands under the "
+            "voltage counts the rows",
+            "Give each column its heading",
+            line=int(block.lines[0]),
+        )
 
 
 def _nearest(voltages: list[_Column], current: _Column) -> _Column:

@@ -34,10 +34,11 @@ _LONG_LINE = 40 * MAX_COLUMNS
 # More blank lines than this share of the others: the file is double spaced, blanks divide nothing.
 _DOUBLE_SPACED = 0.4
 _COMMENT = re.compile(r"^\s*\"?\s*(#+|%+|//+|!+)\s*")
-_NUMBER = re.compile(r"^[-+]?(\d+\.?\d*|\.\d+)([eEdD][-+]?\d{1,4})?$")
+_NUMBER = re.compile(r"^[-+]?(\d+\.?\d*|\.\d+)([eEdD][-+]?\d{1,4})?$", re.ASCII)
 _NUMBER_STARTS = tuple("+-−–.,0123456789")
 # Two neighbouring cells that may be one number; behind a decimal comma ("-100,22 050") only without decimals.
 _CUT_NUMBER = re.compile(r"[-+]?[1-9]\d{0,2} (\d{3})(?:[.,]\d*)?|\S*,[-+]?[1-9]\d{0,2} (\d{3})")
+_POINTS_BETWEEN_THOUSANDS = re.compile(r"[-+]?[1-9]\d{0,2}(?:\.\d{3})+")
 _PADDED = {",": re.compile(r",0\d\d(?!\d)"), None: re.compile(r"[ \t\u00a0]0\d\d(?!\d)")}
 # Share of rows in which a divider must stand where a thousands sign would.
 _MOST_ROWS = 0.9
@@ -175,7 +176,8 @@ def _feed(lines: list[str], dialect: Dialect, gatherer: Gatherer) -> None:
         if len(line) > _LONG_LINE:
             line = _bounded(line, number, dialect)
         quick = line.replace(",", ".") if comma else line
-        slow = dialect.grouped and OTHER[dialect.decimal] in line
+        # Python's float takes digits of any script, mixed as well.
+        slow = not line.isascii() or (dialect.grouped and OTHER[dialect.decimal] in line)
         try:
             values = [] if slow else list(map(float, quick.rstrip(strip).split(delimiter)))
         except ValueError:
@@ -232,8 +234,9 @@ def _refuse_commas_for_both(lines: list[str], dialect: Dialect) -> None:
     if any(_labels(cells) >= 2 for cells in headings):
         return  # as many headings as cells: no comma is a decimal mark
     fractions = [cell for row in rows for cell in row[1::2]]
-    if all(cell.isdigit() for cell in fractions) and not any("." in cell for row in rows for cell in row):
-        if len({len(cell) for cell in fractions}) <= 2 and max(map(len, fractions)) > 1:
+    pointed = [cell for row in rows for cell in row if "." in cell]
+    if all(cell.isdigit() for cell in fractions) and all(_POINTS_BETWEEN_THOUSANDS.fullmatch(cell) for cell in pointed):
+        if len({len(cell) for cell in fractions}) <= 2 and (pointed or max(map(len, fractions)) > 1):
             raise Refusal(
                 "commas seem to divide the cells and to mark decimals as well",
                 "Export again with semicolons between the cells, or with decimal points",
@@ -245,7 +248,8 @@ def _refuse_divided_thousands(lines: list[str], dialect: Dialect) -> None:
     if dialect.quoted:
         return
     padded = told = rows = 0
-    for number, line in enumerate(lines[:_SAMPLE_LINES], 1):
+    widths, whole = set(), set()  # cells of the rows as they are cut, and with numbers put together
+    for number, line in enumerate(lines, 1):
         if line.lstrip()[:1] not in _NUMBER_STARTS:
             continue
         cells = dialect.cells(line[:_SAMPLE_WIDTH])[:MAX_COLUMNS]
@@ -253,9 +257,11 @@ def _refuse_divided_thousands(lines: list[str], dialect: Dialect) -> None:
         groups = [found[1] or found[2] for found in cut if found]
         rows += 1
         told += bool(groups)
+        widths.add(len(cells))
+        whole.add(len(cells) - len(groups))
         if not padded and any(group[0] == "0" for group in groups):
             padded = number
-    if padded and told > _MOST_ROWS * rows:
+    if padded and (told > _MOST_ROWS * rows or len(whole) == 1 < len(widths)):
         signs = "commas" if dialect.delimiter else "blanks"
         raise Refusal(f"{signs} seem to divide the cells and to stand between thousands as well", WITHOUT, line=padded)
 

@@ -180,6 +180,14 @@ def test_units_in_capitals_are_milli_and_a_note_says_so(heading):
     assert any("read as milli" in note for note in sweep.notes)
 
 
+def test_a_first_row_that_is_cut_short_does_not_shift_the_headings():
+    rows = [f"{n}\t{0.2 * n:.1f}\t{v:.4f}\t{c:.6f}" for n, (v, c) in enumerate(zip(VOLTAGE, DENSITY, strict=True), 1)]
+    rows[0] = "1\t0.2\t0.3"
+    rows[4] += "a a a a"
+    [sweep] = read("Point\tTime (s)\tVoltage (V)\tCurrent (mA)\n" + "\n".join(rows))
+    assert sweep.voltage[-1] == pytest.approx(VOLTAGE[-1])
+
+
 def test_one_wild_reading_does_not_lose_the_sweep():
     rows = table().split("\n")
     rows[5] = "0.15,2e9"
