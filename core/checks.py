@@ -16,6 +16,7 @@ from .curve_shape import (
 )
 from .finding import Finding
 from .hysteresis import check_pair
+from .reach import out_of_reach
 from .sweep import Sweep
 
 __all__ = ["Finding", "check", "check_pair"]
@@ -60,6 +61,7 @@ def _check(sweep: Sweep) -> tuple[Finding, ...]:
             ),
         )
     findings = [*_common(shape), *(_of_lit(shape) if sweep.lit else _of_dark(shape)), *_assumed(sweep)]
+    findings += out_of_reach(sweep)
     return tuple(sorted(findings, key=lambda f: ("stop", "caution", "note").index(f.severity)))
 
 

@@ -66,10 +66,12 @@ def _from_sheets(data: bytes, stem: str) -> list[Sweep]:
     first: Refusal | None = None
     sheets = read_sheets(data)
     for sheet in sheets:
-        if not sheet.blocks:
+        if not sheet.blocks and sheet.refusal is None:
             notes.append(sheet.skipped)
             continue
         try:
+            if sheet.refusal is not None:
+                raise sheet.refusal
             found = _from_blocks(sheet.blocks, stem, row_word="row", sheet=sheet.name)
         except Refusal as refusal:
             row = "" if refusal.line is None else f", row {refusal.line}"

@@ -12,9 +12,17 @@ from ..constants import ONE_SUN, STANDARD_TEMPERATURE
 from ..sweep import Conditions, Sweep
 from .columns import Pair
 from .header import Recorded
-from .limits import MAX_BROKEN_ROWS, MAX_BROKEN_SHARE, MIN_POINTS
+from .limits import (
+    MAX_AMPERES,
+    MAX_BROKEN_ROWS,
+    MAX_BROKEN_SHARE,
+    MAX_DENSITY,
+    MAX_VOLTS,
+    MIN_POINTS,
+)
 from .passes import Pass, split_passes
 from .refusal import Refusal
+from .shape import refuse_other_shapes
 from .signs import current_is_turned, looks_lit, voltage_is_turned
 from .table import Block
 from .words import device_of_sheet, direction_in, light_in
@@ -52,6 +60,8 @@ def sweeps_of(block: Block, pair: Pair, origin: Origin) -> list[Sweep]:
         passes, lost = split_passes(voltage)
     except Refusal as refusal:
         raise Refusal(refusal.problem, refusal.remedy, line=int(block.lines[0])) from refusal
+    if pair.bare:
+        refuse_other_shapes(passes, voltage, current, int(block.lines[0]))
     if lost:
         notes.append(f"{_points_word(lost)} at the turns of the voltage that make no sweep of their own left out.")
     stated_dark = False if _first(origin.recorded.irradiance, origin.irradiance) == 0 else None
@@ -113,7 +123,25 @@ def _points(block: Block, pair: Pair, row_word: str) -> tuple[np.ndarray, np.nda
             "A sweep needs at least three; check the export and the source-meter's range",
             line=int(block.lines[0]),
         )
-    return volts[good] * pair.voltage_factor, amps[good] * pair.current_factor, notes
+    voltage, current = volts[good] * pair.voltage_factor, amps[good] * pair.current_factor
+    _refuse_absurd(voltage, current, pair, int(block.lines[0]))
+    return voltage, current, notes
+
+
+def _refuse_absurd(voltage: np.ndarray, current: np.ndarray, pair: Pair, line: int) -> None:
+    # Half of the points: one wild reading among good ones is left to the checks.
+    volts, amps = float(np.median(np.abs(voltage))), float(np.median(np.abs(current)))
+    what, value, unit, most = "voltage", volts, "V", MAX_VOLTS
+    if volts <= MAX_VOLTS:
+        what, value, unit, most = ("density", amps, "A cm⁻²", MAX_DENSITY) if pair.density else ("current", amps, "A", MAX_AMPERES)
+        if pair.read_unit:  # the user can still say in which unit it is
+            return
+    if value > most:
+        raise Refusal(
+            f"half of the points have a {what} above {value:.3g} {unit}, which no solar cell or module reaches",
+            f"Check the unit of the {what} in the headings and the decimal marks, or whether this is a sweep at all",
+            line=line,
+        )
 
 
 def _signed(passes: list[Pass], voltage: np.ndarray, current: np.ndarray, said_lit: bool | None) -> np.ndarray:

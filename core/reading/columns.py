@@ -7,11 +7,12 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from .guesses import finite, level_at_zero, pairs_by_numbers, voltage_likeness
+from .guesses import finite, is_count, level_at_zero, pairs_by_numbers, voltage_likeness
 from .refusal import Refusal
 from .table import Block
+from .thousands import NAMES, Doubt
 from .units import Label, parse_label, parse_unit
-from .words import device_in
+from .words import device_in, is_german
 
 # A voltage without unit beyond this is read as millivolts [V]; module strings end far below.
 _VOLTS_AT_MOST = 150.0
@@ -21,6 +22,11 @@ _AMPERES_OF_CELL = 1.5
 _AMPERES_AT_MOST = 15.0
 # A density without unit above this at one sun cannot be in A cm⁻².
 _DENSITY_AT_MOST = 0.15
+# Where a point or comma may mark decimals or thousands, a reading beyond these is none:
+# a voltage [V] below the first or beyond _VOLTS_AT_MOST, a density [A cm⁻²], a current [A].
+_DOUBTED_VOLTS_AT_LEAST = 0.02
+_DOUBTED_DENSITY_AT_MOST = 1.0
+_DOUBTED_AMPERES_AT_MOST = 100.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,6 +44,7 @@ class Pair:
     area: float | None = None
     magnitude: bool = False  # the file gives |current|
     assumed_units: bool = False
+    bare: bool = False  # chosen by its numbers alone
     read_unit: str = ""  # of a current whose unit the file does not give
     notes: tuple[str, ...] = ()
 
@@ -106,7 +113,7 @@ def _labelled(block: Block) -> list[_Column]:
             unit = parse_unit(cell.strip("()[] ")) if cell else None
             if unit is not None and row > main:
                 if label.kind is None or unit.kind == label.kind or {unit.kind, label.kind} == {"current", "density"}:
-                    label = replace(label, kind=unit.kind, factor=unit.factor)
+                    label = replace(label, kind=unit.kind, factor=unit.factor, capital=unit.capital)
             elif cell and row < main and not scores[row]:
                 above = parse_label(cell)
                 label = replace(
@@ -156,12 +163,25 @@ def _by_label(block: Block, columns: list[_Column]) -> tuple[list[tuple[_Column,
         found = list(zip(voltages, currents, strict=True))
     else:
         found = [(_nearest(voltages, c), c) for c in currents]
+    _refuse_shifted(block, found)
     used = {c.index for pair in found for c in pair}
     left = [c.title or f"column {c.index + 1}" for c in columns if c.index not in used]
     if left:
         names = ", ".join(f"“{name[:40]}”" for name in left[:5]) + (" and more" if len(left) > 5 else "")
         notes.append(f"Not used: {names}.")
     return found, tuple(notes)
+
+
+def _refuse_shifted(block: Block, found: list[tuple[_Column, _Column]]) -> None:
+    """Headings that lost a cell stand above the wrong columns; a count of the rows then looks like the voltage."""
+    headings = max(map(len, block.labels), default=0)
+    if headings < block.values.shape[1] and any(is_count(block.values[:, voltage.index]) for voltage, _ in found):
+        raise Refusal(
+            f"the rows have {block.values.shape[1]} columns and the headings only {headings}, and what stands under the "
+            "voltage counts the rows",
+            "Give each column its heading",
+            line=int(block.lines[0]),
+        )
 
 
 def _nearest(voltages: list[_Column], current: _Column) -> _Column:
@@ -239,6 +259,13 @@ def _with_units(
         assumed = True
     elif assumed:
         said.append(f"No unit given for the voltage: read as {voltage_unit}; check that this is right.")
+    if block.doubt is not None:
+        larger, note = _resolved(block, block.doubt, voltage, current, voltage_factor, current_factor, density)
+        said += note
+        voltage_factor *= larger.get(voltage.index, 1.0)
+        current_factor *= larger.get(current.index, 1.0)
+    if block.note:
+        said.append(block.note)
     device = current.device or voltage.device or _device_in_label(current.label)
     area = None
     if density and current.label.factor is not None:
@@ -250,7 +277,9 @@ def _with_units(
                         f"The file gives current and density; their ratio, {area:.4g} cm², is taken as its area."
                     )
                     break
-    if voltage_factor == 1e-3 and voltage.label.factor is not None:
+    if voltage.label.capital or current.label.capital:
+        said.append("The M of the unit in the heading is read as milli: no solar cell is measured in megavolts or megaamperes.")
+    if voltage.label.factor == 1e-3:
         said.append("The voltage was read in mV.")
     return Pair(
         voltage.index,
@@ -264,9 +293,53 @@ def _with_units(
         area=area,
         magnitude=current.label.magnitude,
         assumed_units=assumed,
+        bare=voltage.label.kind is None and current.label.kind is None,
         read_unit=read_unit,
         notes=tuple(said),
     )
+
+
+def _resolved(
+    block: Block,
+    doubt: Doubt,
+    voltage: _Column,
+    current: _Column,
+    voltage_factor: float,
+    current_factor: float,
+    density: bool,
+) -> tuple[dict[int, float], list[str]]:
+    """Factors for columns in which a point or comma turns out to stand between thousands, and a note.
+
+    Raises
+    ------
+    Refusal
+        If decimals and thousands are equally possible.
+    """
+    doubted = [c.index for c in (voltage, current) if c.index in doubt.first]
+    if not doubted:
+        return {}, []
+    votes = set()
+    if voltage.index in doubted:
+        volts = voltage_factor * float(np.max(np.abs(finite(block.values[:, voltage.index])), initial=0.0))
+        if 1e3 * volts > _VOLTS_AT_MOST:
+            votes.add("decimal")
+        elif volts < _DOUBTED_VOLTS_AT_LEAST:
+            votes.add("thousands")
+    if current.index in doubted:
+        amps = current_factor * float(np.max(np.abs(finite(block.values[:, current.index])), initial=0.0))
+        if 1e3 * amps > (_DOUBTED_DENSITY_AT_MOST if density else _DOUBTED_AMPERES_AT_MOST):
+            votes.add("decimal")
+    expected = doubt.mark == ("," if is_german(" ".join(cell for row in block.labels for cell in row)) else ".")
+    if len(votes) > 1 or not (votes or expected):
+        raise doubt.refusal(doubted[-1])
+    _, cell = doubt.first[doubted[-1]]
+    if votes == {"thousands"}:
+        digits = cell.replace(doubt.mark, "")
+        return dict.fromkeys(doubted, 1e3), [f"A {NAMES[doubt.mark]} stands between thousands: “{cell}” is read as {digits}."]
+    if votes:
+        return {}, []
+    decimals = cell.replace(doubt.mark, ".")
+    return {}, [f"The {NAMES[doubt.mark]} is taken for a decimal mark: “{cell}” is read as {decimals}; check that this is right."]
 
 
 def _device_in_label(label: Label) -> str:

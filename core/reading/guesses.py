@@ -19,7 +19,7 @@ def pairs_by_numbers(values: np.ndarray, usable: list[int], line: int) -> tuple[
     Refusal
         If one of two columns never changes.
     """
-    candidates = [c for c in usable if not (len(usable) > 2 and _is_count(values[:, c]))]
+    candidates = [c for c in usable if not (len(usable) > 2 and is_count(values[:, c]))]
     if len(candidates) < 2:
         candidates = usable
     likeness = {c: voltage_likeness(values[:, c]) for c in candidates}
@@ -50,7 +50,7 @@ def pairs_by_numbers(values: np.ndarray, usable: list[int], line: int) -> tuple[
     return [(voltage, current)], (note,)
 
 
-def _is_count(values: np.ndarray) -> bool:
+def is_count(values: np.ndarray) -> bool:
     """1, 2, 3, …"""
     values = finite(values)
     return values.size >= 3 and values[0] in (0.0, 1.0) and bool(np.all(np.diff(values) == 1.0))

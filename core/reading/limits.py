@@ -25,3 +25,7 @@ MAX_BROKEN_ROWS = 3
 MAX_BROKEN_SHARE = 0.02
 # Seconds for opening one spreadsheet.
 MAX_SECONDS = 30
+# Voltage [V], density [A cm⁻²] and current [A] that no sweep has at most of its points. ``core.reach`` cautions far below.
+MAX_VOLTS = 10_000.0
+MAX_DENSITY = 1e6
+MAX_AMPERES = 1e6

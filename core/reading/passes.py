@@ -13,6 +13,8 @@ from .refusal import Refusal
 _JITTER_SHARE = 0.02
 # A single step of more than this many usual steps carries the source back to the start; it is no pass.
 _FLYBACK_STEPS = 4
+# Points by which nearly every sweep shows that it has more voltages than two; sorting all of them takes longer.
+_FEW_VALUES = 20
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,6 +44,11 @@ def split_passes(voltage: np.ndarray) -> tuple[list[Pass], int]:
         raise Refusal(
             f"the voltage never changes, it stays at {voltage[0] if voltage.size else 0:.6g}",
             "This may be a record over time; a sweep needs a voltage that runs from one value to another",
+        )
+    if len(set(voltage[:_FEW_VALUES].tolist())) < 3 and np.unique(voltage).size < 3:
+        raise Refusal(
+            "the voltage has only two different values",
+            "A sweep needs at least three; check the decimal marks and which character divides the cells",
         )
     turns = _turns(voltage, _JITTER_SHARE * span)
     steps = np.abs(np.diff(voltage))

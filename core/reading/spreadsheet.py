@@ -13,6 +13,7 @@ from .limits import MAX_CELLS, MAX_SECONDS
 from .refusal import Refusal
 from .table import Block, Cell, Gatherer
 from .text import number_in
+from .thousands import OTHER, Marks, looks_numeric, marks_of
 
 _SAVE_AGAIN = "Open it in a spreadsheet program, save it as XLSX or CSV and drop that file"
 _WORKER = Path(__file__).with_name("sheet_worker.py")
@@ -20,11 +21,12 @@ _WORKER = Path(__file__).with_name("sheet_worker.py")
 
 @dataclass(frozen=True, slots=True)
 class Sheet:
-    """One sheet: its name and either its blocks or why it has none."""
+    """One sheet: its name and either its blocks or why it has none, or why it cannot be read."""
 
     name: str
     blocks: tuple[Block, ...]
     skipped: str = ""
+    refusal: Refusal | None = None
 
 
 def read_sheets(data: bytes) -> list[Sheet]:
@@ -42,9 +44,16 @@ def read_sheets(data: bytes) -> list[Sheet]:
                 f"the spreadsheet has more than {MAX_CELLS:,} cells, counting empty ones between filled ones",
                 "Copy the columns with the sweep into a new sheet and save that",
             )
-        gatherer = Gatherer(split=_heading, number=_number)
+        try:
+            marks = _marks(sheet["rows"], sheet["first_row"])
+        except Refusal as refusal:
+            sheets.append(Sheet(sheet["name"], (), refusal=refusal))
+            continue
+        gatherer = Gatherer(split=_heading, number=lambda cell, marks=marks: _number(cell, marks))
         _feed(sheet["rows"], sheet["first_row"], gatherer)
         blocks = tuple(gatherer.finish())
+        for block in blocks:
+            block.doubt, block.note = marks.doubt, marks.note
         skipped = "" if blocks else f"Sheet “{sheet['name']}” has no table of numbers and was skipped."
         sheets.append(Sheet(sheet["name"], blocks, skipped))
     return sheets
@@ -84,10 +93,20 @@ def _feed(rows: list[list[Cell]], first_row: int, gatherer: Gatherer) -> None:
             gatherer.mixed(line, raw, cells, comment=raw.startswith(("#", "%")))
 
 
-def _number(cell: str) -> float | None:
-    """Numbers that a sheet keeps as text, with either decimal mark."""
-    number = number_in(cell, ".")
-    return number if number is not None else number_in(cell, ",")
+def _marks(rows: list[list[Cell]], first_row: int) -> Marks:
+    """How numbers that a sheet keeps as text are written."""
+    texts = (
+        (line, [cell if isinstance(cell, str) and looks_numeric(cell) else "" for cell in cells])
+        for line, cells in enumerate(rows, first_row)
+    )
+    return marks_of(((line, cells) for line, cells in texts if any(cells)), ".")
+
+
+def _number(cell: str, marks: Marks) -> float | None:
+    """Numbers that a sheet keeps as text."""
+    number = number_in(cell, marks.decimal, grouped=marks.grouped)
+    # Where nothing is grouped, some cells may have a decimal comma beside others with a point.
+    return number if number is not None or marks.grouped else number_in(cell, OTHER[marks.decimal])
 
 
 def _heading(line: str, width: int) -> list[str]:

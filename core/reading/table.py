@@ -19,6 +19,7 @@ from .limits import (
     MIN_POINTS,
 )
 from .refusal import EXPORT_TEXT, Refusal
+from .thousands import Doubt
 from .units import parse_label
 from .words import direction_in, light_in
 
@@ -43,7 +44,8 @@ class Block:
     """One run of rows with numbers, and the words that belong to it.
 
     ``values`` has NaN where a cell is empty and inf where the file marks a reading as void; ``broken`` maps
-    (row, column) to text that stands where a number should.
+    (row, column) to text that stands where a number should. ``doubt`` is what is open in how the file writes
+    its numbers, and ``note`` says what is peculiar in it.
     """
 
     values: np.ndarray
@@ -52,6 +54,8 @@ class Block:
     labels: tuple[tuple[str, ...], ...]
     header: dict[str, str]
     words: str
+    doubt: Doubt | None = None
+    note: str = ""
 
 
 @dataclass(slots=True)
@@ -77,6 +81,7 @@ class Gatherer:
     _broken: dict[tuple[int, int], str] = field(default_factory=dict)
     _pending: list[_TextRow] = field(default_factory=list)
     _header: dict[str, str] = field(default_factory=dict)
+    _headings: list[_TextRow] = field(default_factory=list)
     _labels: tuple[tuple[str, ...], ...] = ()
     _words: str = ""
     _width: int = 0
@@ -92,6 +97,8 @@ class Gatherer:
         if width != self._width:
             if width > self._width and self._rows and len(self._rows) < MIN_POINTS:
                 self._close()
+                # The headings were cut to the width of the rows that are dropped.
+                self._labels = tuple(self._cut(row, width) for row in self._headings)
             if width > MAX_COLUMNS:
                 raise Refusal(
                     f"the table has more than {MAX_COLUMNS} columns",
@@ -194,28 +201,32 @@ class Gatherer:
         if not self._pending:
             return
         labels: list[tuple[str, ...]] = []
+        headings: list[_TextRow] = []
         rows = list(self._pending)
         self._pending.clear()
         while rows and len(labels) < _LABEL_ROWS:
             row = rows[-1]
-            cells = tuple(self.split(row.raw, width)) if row.raw else row.cells
+            cells = self._cut(row, width)
             known = _sum_of_labels(cells)
             # Above a heading, "Comment: voltage, current" is an entry of the header and no second heading.
             if row.has_number or (key_value(row.raw) is not None and (known < 2 or labels)):
                 break
             if known >= 2 or (known and len(cells) == width) or (len(cells) >= 2 and not labels):
                 labels.insert(0, cells)
+                headings.insert(0, rows.pop())
             elif labels and len(cells) >= 3:
                 labels.insert(0, cells)  # names of devices above the headings
-                rows.pop()
+                headings.insert(0, rows.pop())
                 break
             else:
                 break
-            rows.pop()
         if labels:
-            self._labels = tuple(labels)
+            self._labels, self._headings = tuple(labels), headings
         loose = [row for row in rows if not self._take_entry(row)]
         self._words = " ".join(row.raw for row in loose[-3:] if _is_title(row))[:MAX_WORDS]
+
+    def _cut(self, row: _TextRow, width: int) -> tuple[str, ...]:
+        return tuple(self.split(row.raw, width)) if row.raw else row.cells
 
     def _take_entry(self, row: _TextRow) -> bool:
         """Keeps a row as a header entry if it is one."""

@@ -5,13 +5,24 @@ from __future__ import annotations
 import csv
 import math
 import re
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 
 from .header import is_entry
 from .limits import MAX_COLUMNS
 from .refusal import EXPORT_TEXT, Refusal
 from .table import Block, Gatherer
+from .thousands import (
+    OTHER,
+    WITHOUT,
+    Doubt,
+    lines_without_signs,
+    looks_numeric,
+    marks_of,
+    may_be_grouped,
+    plainly_decimal,
+    ungroup,
+)
 from .units import parse_label, parse_unit, plain
 
 # Lines looked at to find the delimiter; longer ones are cut.
@@ -23,8 +34,14 @@ _LONG_LINE = 40 * MAX_COLUMNS
 # More blank lines than this share of the others: the file is double spaced, blanks divide nothing.
 _DOUBLE_SPACED = 0.4
 _COMMENT = re.compile(r"^\s*\"?\s*(#+|%+|//+|!+)\s*")
-_NUMBER = re.compile(r"^[-+]?(\d+\.?\d*|\.\d+)([eEdD][-+]?\d{1,4})?$")
-_THOUSANDS = re.compile(r"^[-+]?\d{1,3}(,\d{3})+\.\d+$")
+_NUMBER = re.compile(r"^[-+]?(\d+\.?\d*|\.\d+)([eEdD][-+]?\d{1,4})?$", re.ASCII)
+_NUMBER_STARTS = tuple("+-−–.,0123456789")
+# Two neighbouring cells that may be one number; behind a decimal comma ("-100,22 050") only without decimals.
+_CUT_NUMBER = re.compile(r"[-+]?[1-9]\d{0,2} (\d{3})(?:[.,]\d*)?|\S*,[-+]?[1-9]\d{0,2} (\d{3})")
+_POINTS_BETWEEN_THOUSANDS = re.compile(r"[-+]?[1-9]\d{0,2}(?:\.\d{3})+")
+_PADDED = {",": re.compile(r",0\d\d(?!\d)"), None: re.compile(r"[ \t\u00a0]0\d\d(?!\d)")}
+# Share of rows in which a divider must stand where a thousands sign would.
+_MOST_ROWS = 0.9
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,6 +49,7 @@ class Dialect:
     delimiter: str | None  # None: runs of white space
     decimal: str  # "." or ","
     quoted: bool = False
+    grouped: bool = False  # the other of "." and "," stands between thousands
 
     def cells(self, line: str) -> list[str]:
         if self.quoted and '"' in line:
@@ -44,7 +62,8 @@ class Dialect:
 
     def number(self, cell: str) -> float | None:
         """The number that a cell is, or None; inf and nan are not numbers here."""
-        return number_in(cell, self.decimal)
+        # Between commas, "100 220" is as likely the end of one decimal number and the start of the next.
+        return number_in(cell, self.decimal, grouped=self.grouped, blanks=self.delimiter != ",")
 
     def split_heading(self, line: str, width: int) -> Sequence[str]:
         """A heading in as many cells as the table has columns, if any way of cutting gives that."""
@@ -66,14 +85,19 @@ class Dialect:
         return max(candidates, key=lambda cells: (_labels(cells), len(cells) == width))
 
 
-def number_in(cell: str, decimal: str) -> float | None:
+def number_in(cell: str, decimal: str, *, grouped: bool = False, blanks: bool = True) -> float | None:
+    """The number that a cell is, or None; ``grouped`` and ``blanks`` say which thousands signs it may have."""
     if len(cell) > 60:
         return None
     cell = cell.strip("\"' \u00a0").replace("−", "-").replace("–", "-")
+    other = OTHER[decimal]
+    if other in cell or " " in cell or "\u00a0" in cell:
+        bare = ungroup(cell, decimal, grouped=grouped, blanks=blanks)
+        if grouped and other in bare:
+            return None
+        cell = bare
     if decimal == ",":
         cell = cell.replace(",", ".") if cell.count(",") == 1 and "." not in cell else cell
-    elif "," in cell and _THOUSANDS.match(cell):
-        cell = cell.replace(",", "")
     if not _NUMBER.match(cell):
         return None
     return float(cell.replace("d", "e").replace("D", "e"))
@@ -112,11 +136,14 @@ def read_text(text: str) -> list[Block]:
     """
     if text.lstrip()[:1] == "{" or text.lstrip()[:2] in ("[[", "[{"):
         raise Refusal("this is a JSON file or the like, not a table of voltage and current", EXPORT_TEXT)
-    lines = text.split("\n")
+    lines = lines_without_signs(text)
     if not text.strip():
         raise Refusal("the file has nothing but blank lines", "Export the sweep again and drop that file")
     dialect = _dialect(lines)
     _refuse_commas_for_both(lines, dialect)
+    if dialect.delimiter in _PADDED and _PADDED[dialect.delimiter].search(text):
+        _refuse_divided_thousands(lines, dialect)
+    dialect, doubt, note = _settled(lines, dialect)
     blanks = sum(1 for line in lines if not line or line.isspace())
     gatherer = Gatherer(
         split=dialect.split_heading,
@@ -134,6 +161,8 @@ def read_text(text: str) -> list[Block]:
                 "A sweep needs at least three points; check that the export is complete",
             )
         raise Refusal("the text has no table of numbers", "A sweep needs a column of voltage and one of current")
+    for block in blocks:
+        block.doubt, block.note = doubt, note
     return blocks
 
 
@@ -147,8 +176,10 @@ def _feed(lines: list[str], dialect: Dialect, gatherer: Gatherer) -> None:
         if len(line) > _LONG_LINE:
             line = _bounded(line, number, dialect)
         quick = line.replace(",", ".") if comma else line
+        # Python's float takes digits of any script, mixed as well.
+        slow = not line.isascii() or (dialect.grouped and OTHER[dialect.decimal] in line)
         try:
-            values = list(map(float, quick.rstrip(strip).split(delimiter)))
+            values = [] if slow else list(map(float, quick.rstrip(strip).split(delimiter)))
         except ValueError:
             values = []  # as of a blank line between white space
         if values:
@@ -156,7 +187,7 @@ def _feed(lines: list[str], dialect: Dialect, gatherer: Gatherer) -> None:
                 values = [v if v == v else math.inf for v in values]
             gatherer.numbers(number, values)
             continue
-        if worded:
+        if worded and not slow:
             # The same for rows with a column of words, such as a time of day or "OK".
             cells = quick.split(delimiter)
             try:
@@ -203,12 +234,55 @@ def _refuse_commas_for_both(lines: list[str], dialect: Dialect) -> None:
     if any(_labels(cells) >= 2 for cells in headings):
         return  # as many headings as cells: no comma is a decimal mark
     fractions = [cell for row in rows for cell in row[1::2]]
-    if all(cell.isdigit() for cell in fractions) and not any("." in cell for row in rows for cell in row):
-        if len({len(cell) for cell in fractions}) <= 2 and max(map(len, fractions)) > 1:
+    pointed = [cell for row in rows for cell in row if "." in cell]
+    if all(cell.isdigit() for cell in fractions) and all(_POINTS_BETWEEN_THOUSANDS.fullmatch(cell) for cell in pointed):
+        if len({len(cell) for cell in fractions}) <= 2 and (pointed or max(map(len, fractions)) > 1):
             raise Refusal(
                 "commas seem to divide the cells and to mark decimals as well",
                 "Export again with semicolons between the cells, or with decimal points",
             )
+
+
+def _refuse_divided_thousands(lines: list[str], dialect: Dialect) -> None:
+    """'1,000,21,467' has commas between cells and between thousands; cut at each it would be other numbers."""
+    if dialect.quoted:
+        return
+    padded = told = rows = 0
+    widths, whole = set(), set()  # cells of the rows as they are cut, and with numbers put together
+    for number, line in enumerate(lines, 1):
+        if line.lstrip()[:1] not in _NUMBER_STARTS:
+            continue
+        cells = dialect.cells(line[:_SAMPLE_WIDTH])[:MAX_COLUMNS]
+        cut = [_CUT_NUMBER.fullmatch(" ".join(pair)) for pair in zip(cells, cells[1:], strict=False)]
+        groups = [found[1] or found[2] for found in cut if found]
+        rows += 1
+        told += bool(groups)
+        widths.add(len(cells))
+        whole.add(len(cells) - len(groups))
+        if not padded and any(group[0] == "0" for group in groups):
+            padded = number
+    if padded and (told > _MOST_ROWS * rows or len(whole) == 1 < len(widths)):
+        signs = "commas" if dialect.delimiter else "blanks"
+        raise Refusal(f"{signs} seem to divide the cells and to stand between thousands as well", WITHOUT, line=padded)
+
+
+def _settled(lines: list[str], dialect: Dialect) -> tuple[Dialect, Doubt | None, str]:
+    """The dialect with what its points and commas mean, what stays in doubt of it, and a note."""
+    decimal, other = dialect.decimal, OTHER[dialect.decimal]
+    both = (other != dialect.delimiter or dialect.quoted) and may_be_grouped(lines, other)
+    if not both and plainly_decimal(_rows(lines, dialect, decimal), decimal):
+        return dialect, None, ""
+    marks = marks_of(_rows(lines, dialect), decimal)
+    return replace(dialect, decimal=marks.decimal, grouped=marks.grouped), marks.doubt, marks.note
+
+
+def _rows(lines: list[str], dialect: Dialect, mark: str = "") -> Iterator[tuple[int, list[str]]]:
+    """Lines that have the mark and at least two numbers, as cells."""
+    for number, line in enumerate(lines, 1):
+        if mark in line:
+            cells = dialect.cells(line[:_SAMPLE_WIDTH])
+            if sum(map(looks_numeric, cells)) >= 2:
+                yield number, cells
 
 
 def _dialect(lines: list[str]) -> Dialect:

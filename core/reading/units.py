@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 import unicodedata
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import lru_cache
 from typing import Literal
 
@@ -13,7 +13,8 @@ from .words import direction_in, light_in
 
 Kind = Literal["voltage", "current", "density", "other"]
 
-_PREFIXES = {"": 1.0, "k": 1e3, "M": 1e6, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12, "f": 1e-15}
+# No M: nobody measures a solar cell in mega-anything, so that MV in capitals is mV.
+_PREFIXES = {"": 1.0, "k": 1e3, "m": 1e-3, "u": 1e-6, "n": 1e-9, "p": 1e-12, "f": 1e-15}
 _AREAS = {"cm": 1.0, "m": 1e-4, "mm": 1e2}  # per area → per cm²
 _UNIT = re.compile(r"^([kMmunpf]?)([VA])(?:(?:/|per)(cm|mm|m)2|(cm|mm|m)-2)?$")
 _OTHER_UNIT = re.compile(
@@ -48,6 +49,7 @@ class Unit:
 
     kind: Kind
     factor: float = 1.0
+    capital: bool = field(default=False, repr=False)  # written with M for milli
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,6 +63,7 @@ class Label:
     lit: bool | None = None
     magnitude: bool = False
     rest: str = ""
+    capital: bool = False  # its unit is written with M for milli
 
 
 def plain(text: str) -> str:
@@ -91,16 +94,16 @@ def parse_unit(text: str) -> Unit | None:
     if not found:
         return None
     prefix, base, over, power = found.groups()
-    area = over or power
+    area, factor, capital = over or power, _PREFIXES[prefix.replace("M", "m")], text[0] == "M"
     if base == "V":
-        return None if area else Unit("voltage", _PREFIXES[prefix])
+        return None if area else Unit("voltage", factor, capital)
     if area:
-        return Unit("density", _PREFIXES[prefix] * _AREAS[area])
-    return Unit("current", _PREFIXES[prefix])
+        return Unit("density", factor * _AREAS[area], capital)
+    return Unit("current", factor, capital)
 
 
 def _loose_case(text: str) -> str:
-    """'ma/CM2' → 'mA/cm2'; nobody measures a solar cell in megaamperes, and U is a voltage, not micro."""
+    """'ma/CM2' → 'mA/cm2'; U is a voltage, not micro."""
     if text.startswith("U"):
         return ""
     lower = text.lower()
@@ -113,7 +116,7 @@ def parse_label(text: str) -> Label:
     words = plain(text).strip().strip("\"'#% ")
     whole = parse_unit(words.strip("()[]"))
     if whole is not None and not re.search(r"[(\[]", words.strip("()[]")):
-        return Label(kind=whole.kind, factor=whole.factor)
+        return Label(kind=whole.kind, factor=whole.factor, capital=whole.capital)
     words, unit = _split_unit(words)
     tokens = [t for t in re.split(r"[^A-Za-zÀ-ÿ0-9]+", words) if t]
     kind, role, rest = None, None, []
@@ -153,8 +156,9 @@ def parse_label(text: str) -> Label:
         kind = unit.kind if kind != "other" else "other"
     elif unit is not None and (kind is None or unit.kind == "density"):
         kind = unit.kind
-    factor = unit.factor if unit is not None and unit.kind == kind else None
-    return Label(kind, factor, role, direction_in(words), light_in(words), magnitude, " ".join(rest))
+    own = unit if unit is not None and unit.kind == kind else None
+    factor, capital = (own.factor, own.capital) if own else (None, False)
+    return Label(kind, factor, role, direction_in(words), light_in(words), magnitude, " ".join(rest), capital)
 
 
 def _split_unit(words: str) -> tuple[str, Unit | None]:

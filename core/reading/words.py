@@ -20,11 +20,25 @@ _LIGHT = {
     "lightjv", "1sun", "onesun", "am15", "am15g",
 }  # fmt: skip
 _FILLER = {"iv", "jv", "ui", "scan", "sweep", "kennlinie", "curve", "messung", "measurement", "run", "data", "daten"}
+# Words that name no device, whatever they stand beside.
+_GENERIC = {
+    "abs", "all", "avg", "average", "averaged", "col", "cols", "column", "columns", "corrected", "copy", "export", "file", "final",
+    "log", "lin", "mean", "out", "output", "raw", "results", "result", "summary", "table", "tabelle",
+    "values", "werte", "ergebnis", "ergebnisse", "kopie", "and", "und", "both", "pair", "txt", "csv",
+}  # fmt: skip
+_DATE = re.compile(r"(19|20)\d\d([ _.-]?\d\d){0,2}|\d\d[ _.-]\d\d[ _.-](19|20)\d\d")
 _SUFFIXES = _FORWARD | _REVERSE | _LOOSE_FORWARD | _LOOSE_REVERSE | _DARK | _LIGHT | _FILLER
 _GLUED = re.compile(r"(?i)^(.*\d)(fwd|forward|rev|reverse|dark|light|dunkel|hell)$")
 _GENERIC_SHEET = re.compile(r"(?i)^(sheet|tabelle|table|blatt|feuille|hoja|data|daten|iv|jv|sweep|raw|messung)[\s_]*\d*$")
 _SUNS = re.compile(r"(?i)(?<![A-Za-z0-9])(\d{1,4}(?:[.,p]\d{1,4})?)[\s_-]?suns?(?![A-Za-z])")
 _NUMBERED_FILLER = re.compile(r"^(scan|sweep|run|iv|jv|messung)\d+$")
+
+_GERMAN = {"spannung", "strom", "stromdichte", "leistung", "zeit", "messpunkt", "fläche", "flaeche", "betrag"}
+
+
+def is_german(headings: str) -> bool:
+    """Whether headings are German, so that a comma is the decimal mark to expect."""
+    return not _GERMAN.isdisjoint(_tokens(headings))
 
 
 def _tokens(text: str) -> list[str]:
@@ -69,10 +83,13 @@ def suns_in(text: str) -> float | None:
 
 
 def device_in(name: str) -> str:
-    """A file's or sheet's name without words for direction, light and scan; '' if nothing else is left.
+    """A file's or sheet's name without words for direction, light and scan; '' if nothing is left that names a device.
 
-    >>> device_in("K07_fwd")
-    'K07'
+    Words before the rest go only if the rest looks like a device, for files that have no more in common than a word
+    would else share one.
+
+    >>> device_in("K07_fwd"), device_in("dark_K07"), device_in("control_fwd"), device_in("jv_control_fwd")
+    ('K07', 'K07', 'control', 'jv_control')
     """
     name = _SUNS.sub(" ", name).strip()
     pieces = re.findall(r"[A-Za-zÀ-ÿ0-9]+|[^A-Za-zÀ-ÿ0-9]+", name)
@@ -96,9 +113,19 @@ def device_in(name: str) -> str:
         elif last.isdigit() and len(last) <= 3 and _is_suffix(before):
             del pieces[words[-1] :]  # 'fwd 2' counts the scans; 'pixel 2' names the pixel
             changed = True
+    whole = "".join(pieces).strip(" _-.,;")
     while pieces and (not pieces[0][0].isalnum() or _is_suffix(pieces[0])) and pieces[0][0] not in "([":
         pieces.pop(0)
-    return "".join(pieces).strip(" _-.,;")
+    rest = "".join(pieces).strip(" _-.,;")
+    if all(token in _GENERIC or _is_suffix(token) for token in _tokens(rest)):
+        return ""
+    return rest if _looks_like_a_device(rest) else whole
+
+
+def _looks_like_a_device(name: str) -> bool:
+    """A number that is no date, or a word of capitals: 'K07', 'pixel 3', 'B'."""
+    without_dates = _DATE.sub("", name)
+    return any(c.isdigit() for c in without_dates) or any(word.isupper() for word in re.findall(r"[A-Za-zÀ-ÿ]+", without_dates))
 
 
 def device_of_sheet(sheet: str, stem_device: str) -> str:

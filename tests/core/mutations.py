@@ -11,6 +11,7 @@ import hashlib
 import io
 import json
 import random
+import re
 import tempfile
 import zipfile
 from contextlib import closing
@@ -27,6 +28,7 @@ from core.errors import StoreFailed, UnreadableFile
 from core.metrics import measure
 from core.reading import read_sweeps
 from core.store import Store
+from core.sweep import Sweep
 from tests.core.workspaces import MODEL, counted_ids, refinement
 
 SAMPLES = Path(__file__).parents[2] / "sample_sweeps"
@@ -51,6 +53,72 @@ class Input:
     reader: str
     data: bytes
     name: str
+
+
+@dataclass(frozen=True)
+class Damage:
+    """A file whose rows are damaged below a sound heading, and what it read before."""
+
+    data: bytes
+    name: str
+    sound: tuple[Sweep, ...]
+
+    def untrue(self, sweep: Sweep) -> int:
+        """How many points of a sweep are none of the sound file's, whatever their sign."""
+        kin = [one for one in self.sound if one.per_area == sweep.per_area]
+        if not kin:
+            return sweep.voltage.size
+        volts, amps = (np.abs(np.concatenate([getattr(one, axis) for one in kin])) for axis in ("voltage", "current"))
+        near = np.isclose(np.abs(sweep.voltage)[:, None], volts, rtol=1e-9, atol=1e-12)
+        return int(np.sum(~np.any(near & np.isclose(np.abs(sweep.current)[:, None], amps, rtol=1e-9, atol=1e-15), axis=1)))
+
+
+def damaged(number: int) -> Damage:
+    """The text of this number with its rows cut, doubled and overwritten, but not spliced: each row that is left was there."""
+    chance = random.Random(number)
+    name, data = chance.choice(_sound_texts())
+    lines = data.split(b"\n")
+    first = next(n for n, line in enumerate(lines) if re.match(rb"\s*[-+\d]", line))
+    head, rows = b"\n".join(lines[:first]) + b"\n", b"\n".join(lines[first : first + 60])
+    return Damage(head + _bytes(rows, chance, None), name, tuple(read_sweeps(data, name)))
+
+
+def rewritten(number: int) -> Damage:
+    """A sample sweep in the numbers and headings of some other bench, thousands signs included."""
+    chance = random.Random(number)
+    name, data = chance.choice(_sound_texts())
+    sweep = read_sweeps(data, name)[0]
+    delimiter, decimal = chance.choice((";", "\t", "|", ",", "  ")), chance.choice(".,")
+    signs = [sign for sign in (",", ".", "'", "’", " ", "\u2009", "\u202f", "\u00a0") if sign != decimal]
+    sign, digits = chance.choice(signs), chance.randint(0, 3)
+    volts, amps = (("mV", 1e3), ("µA", 1e6)) if chance.random() < 0.7 else (("V", 1.0), ("nA", 1e9))
+    if volts[0] == "V":
+        digits = max(2, digits)
+    unit = amps[0] + ("/cm²" if sweep.per_area else "")
+    heading = chance.choice(("V ({}){}J ({})", "Spannung ({}){}Strom ({})", "Voltage ({}){}Current ({})", "")).format(volts[0], delimiter, unit)
+
+    def text(sign: str, decimal: str, delimiter: str, heading: str) -> bytes:
+        def write(value: float) -> str:
+            return f"{value:,.{digits}f}".translate({ord(","): sign, ord("."): decimal})
+
+        rows = (write(volts[1] * v) + delimiter + write(amps[1] * i) for v, i in zip(sweep.voltage, sweep.current, strict=True))
+        return "\n".join([heading, *rows]).encode()
+
+    plain = text("", ".", "\t", heading.replace(delimiter, "\t"))
+    return Damage(text(sign, decimal, delimiter, heading), "a.txt", tuple(read_sweeps(plain, "a.txt")))
+
+
+@cache
+def _sound_texts() -> tuple[tuple[str, bytes], ...]:
+    """The sample sweeps under their names, and one each with semicolons and decimal commas, and with blanks."""
+    paths = [path for path in sorted(SAMPLES.iterdir()) if path.suffix in {".csv", ".txt", ".tsv"}]
+    found = [(path.name, path.read_bytes()) for path in paths]
+    # Single bytes of UTF-16 are no characters; the same text in UTF-8 loses rows and not its meaning.
+    found = [(name, data.decode("utf-16").encode() if data.startswith(b"\xff\xfe") else data) for name, data in found]
+    name, data = next(one for one in found if one[0] == "K07_fwd.csv")
+    found.append((name, data.replace(b",", b";").replace(b".", b",")))
+    found.append((name, data.replace(b",", b"   ").replace(b"\n", b"\r\n")))
+    return tuple(found)
 
 
 def spoilt(number: int, *, sheets: float = 0.03, archives: float = 0.17, short: bool = False) -> Input:
@@ -165,10 +233,10 @@ def _import(data: bytes, store: Store) -> str:
     return "read"
 
 
-def _bytes(data: bytes, chance: random.Random, originals: tuple[bytes, ...]) -> bytes:
+def _bytes(data: bytes, chance: random.Random, originals: tuple[bytes, ...] | None) -> bytes:
     for _ in range(chance.randint(1, 8)):
         place, end = sorted((chance.randint(0, len(data)), chance.randint(0, len(data))))
-        match chance.randrange(6):
+        match chance.randrange(5 if originals is None else 6):
             case 0:
                 data = data[:place] + chance.choice(FRAGMENTS) + data[place:]
             case 1:

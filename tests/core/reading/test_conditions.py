@@ -142,3 +142,21 @@ def test_prose_above_a_table_is_no_title():
 @pytest.mark.parametrize("line", ["Comment: voltage, current", "Series resistance: series resistance", "Scan: V, I"])
 def test_an_entry_that_speaks_of_columns_is_no_second_heading(line):
     assert read(f"Operator: somebody\n{line}").voltage.size == VOLTAGE.size
+
+
+@pytest.mark.parametrize(
+    "stem",
+    ["light_dark_cols", "jv_summary", "dark_abs", "iv_results", "summary_fwd", "dark_log", "jv_export", "light_perovskite", "dark_2026-05-01"],
+)
+def test_a_file_without_a_device_in_its_name_is_a_device_of_its_own(stem):
+    [sweep] = read_sweeps(b"V (V),J (mA/cm2)\n-0.1,22\n0,21.9\n0.5,21\n0.9,10\n1,-5\n", f"{stem}.csv")
+    assert sweep.device == stem
+
+
+@pytest.mark.parametrize(
+    ("stem", "device"),
+    [("dark_K07", "K07"), ("JV_A", "A"), ("control_fwd", "control"), ("control_rev", "control"), ("jv_control_fwd", "jv_control"),
+     ("scan_K07_fwd_2", "K07"), ("2026-05-01_K07_dark", "2026-05-01_K07")],
+)  # fmt: skip
+def test_words_around_a_device_are_left_out(stem, device):
+    assert device_in(stem) == device

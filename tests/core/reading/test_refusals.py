@@ -43,6 +43,12 @@ CURVE = "\n".join(f"{v:.3f},{2 - v:.3f}" for v in np.arange(0, 1, 0.02))
         (b"0.5,0.1\n0.5,0.2\n0.5,0.3\n", "the same number, 0.5, in every row"),
         (b"V,I\n" + b"".join(b"0,%02d,21,%02d\n" % (i, 90 - i) for i in range(9)), "mark decimals as well"),
         (b"Time (s),Power (W)\n0,1\n1,2\n2,3\n", "name no columns of voltage and current"),
+        (b"V (V);I (A)\n" + b"".join(b"0;%d;0;0%d\n" % (i, 90 - i) for i in range(9)) + b"1;0;-0;1\n", "only two different values"),
+        (b"V (V)\tI (A)\n" + b"".join(b"%d\t0.%d\t0.02\n" % (i, i) for i in range(1, 9)), "headings only 2"),
+        (b"V (mV);I (mA)\n" + "".join(f"{i};5\u06630000\n" for i in range(9)).encode(), "no table of numbers"),
+        (b"V (kV),I (mA)\n-100,22\n500,21\n900,-3\n", "voltage above 5e+05 V"),
+        (b"V (V),J (kA/cm2)\n-0.1,2200\n0.5,2100\n0.9,-30\n", "density above 2.1e+06 A cm"),
+        (b"V (V),I (kA)\n-0.1,2200\n0.5,2100\n0.9,-30\n", "current above 2.1e+06 A,"),
         (b"V (V),I (A)\n0.1,9.9e37\n0.2,9.9e37\n0.3,9.9e37\n0.4,1\n", "numbers"),
     ],
 )

@@ -172,6 +172,29 @@ def test_units_are_never_guessed_silently():
         assert any("No unit given" in note and units in note for note in sweep.notes)
 
 
+@pytest.mark.parametrize("heading", ["Voltage (MV)\tCurrent (MA)", "VOLTAGE\tCURRENT\nMV\tMA", "U [MV]\tJ [MA/CM2]"])
+def test_units_in_capitals_are_milli_and_a_note_says_so(heading):
+    [sweep] = read(heading + "\n" + table(1e3 * VOLTAGE, DENSITY, "\t"))
+    assert sweep.voltage == pytest.approx(VOLTAGE, abs=1e-6)
+    assert sweep.current == pytest.approx(1e-3 * DENSITY, abs=1e-8)
+    assert any("read as milli" in note for note in sweep.notes)
+
+
+def test_a_first_row_that_is_cut_short_does_not_shift_the_headings():
+    rows = [f"{n}\t{0.2 * n:.1f}\t{v:.4f}\t{c:.6f}" for n, (v, c) in enumerate(zip(VOLTAGE, DENSITY, strict=True), 1)]
+    rows[0] = "1\t0.2\t0.3"
+    rows[4] += "a a a a"
+    [sweep] = read("Point\tTime (s)\tVoltage (V)\tCurrent (mA)\n" + "\n".join(rows))
+    assert sweep.voltage[-1] == pytest.approx(VOLTAGE[-1])
+
+
+def test_one_wild_reading_does_not_lose_the_sweep():
+    rows = table().split("\n")
+    rows[5] = "0.15,2e9"
+    [sweep] = read("V (V),I (A)\n" + "\n".join(rows))
+    assert len(sweep.voltage) == 27
+
+
 def test_void_and_broken_rows_are_left_out_and_named():
     rows = table().split("\n")
     rows[3], rows[7], rows[9] = "0.05,9.9e37", "0.25,###x", "nan,nan"
