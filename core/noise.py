@@ -38,8 +38,9 @@ def merged_points(sweep: Sweep) -> Points:
     voltage, current = sweep.voltage[usable], sweep.current[usable]
     order = np.argsort(voltage, kind="stable")
     voltage, current = voltage[order], current[order]
-    # Closer than this, a difference of voltages is rounding.
-    steps = voltage[1:] - voltage[:-1] > 1e-9 * (voltage[-1] - voltage[0] if voltage.size else 0.0)
+    # Closer than this, a difference of voltages is rounding; one beyond all floats is none either.
+    with np.errstate(over="ignore"):
+        steps = voltage[1:] - voltage[:-1] > 1e-9 * (voltage[-1] - voltage[0] if voltage.size else 0.0)
     if steps.all():
         return Points(voltage, current, np.ones(voltage.size), np.empty(0))
     member = np.concatenate([[0], np.cumsum(steps)])

@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from core.checks import Finding, check, check_pair
@@ -182,6 +182,7 @@ def test_every_finding_is_three_sentences():
     st.booleans(),
     st.booleans(),
 )
+@example(points=[(1.7976931348623157e308, 0.0), (-9.9792015476736e291, 0.0)], lit=True, per_area=True)
 def test_no_sweep_makes_the_checks_fail(points, lit, per_area):
     wild = sweep(np.array([p[0] for p in points]), np.array([p[1] for p in points]), lit=lit, per_area=per_area)
     assert all(isinstance(f, Finding) for f in check(wild))
