@@ -20,6 +20,7 @@ from core.sweep import Sweep
 from core.workspace import Workspace
 
 from .fit_settings import change_setting, leave_out, noise_by_repeats, use_all_points
+from .fits import guess_step, refine_step
 from .mechanisms import BY_PARAMETER
 from .together import refine_sweeps_together
 from .units import Units, celsius, kelvin
@@ -89,6 +90,8 @@ def _remark(workspace: Workspace, event: Event, step: Step | None) -> str:
 
 
 def sweep_of(workspace: Workspace, event: Event) -> Sweep:
+    if event.get("entry") is None:
+        raise StepRefused("There is no sweep on the bench yet. Drop a file first.")
     if event.get("entry") not in workspace.entries:
         raise StepRefused("That sweep is no longer in the tray.")
     return workspace.sweep(event["entry"])
@@ -117,6 +120,16 @@ def _typed(text: str, parameter: str, units: Units) -> float:
 
 def _dial(sweep: Sweep, model: Model, parameter: str) -> Any:
     return dial_ranges(sweep, model.parameters)[parameter].containing(getattr(model, parameter))
+
+
+def _guess(workspace: Workspace, event: Event) -> Step:
+    sweep_of(workspace, event)
+    return guess_step(workspace, event["entry"])
+
+
+def _refine(workspace: Workspace, event: Event) -> Step:
+    sweep_of(workspace, event)
+    return refine_step(workspace, event["entry"])
 
 
 def _hold(workspace: Workspace, event: Event) -> Step:
@@ -187,6 +200,8 @@ _CONDITIONS: dict[str, Callable[[str], Any]] = {
 }
 
 _STEPS: dict[str, Callable[[Workspace, Event], Step | None]] = {
+    "first-guess": _guess,
+    "refine": _refine,
     "hold": _hold,
     "setting": change_setting,
     "leave-out": leave_out,

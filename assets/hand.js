@@ -11,12 +11,12 @@
   function show(answer, status) {
     if (status === 409) {
       giveUp();
-      bench.say(answer.sentence);
+      bench.say(answer.sentence, { answer: true });
       bench.setProps("revision", { data: { ...bench.stamp(), revision: answer.revision } });
       return;
     }
     if (status !== 200) {
-      bench.say(answer.sentence ?? "The server could not follow the hand.");
+      bench.say(answer.sentence ?? "The server could not follow the hand.", { answer: true });
       return;
     }
     bench.paintLive(answer);
@@ -127,6 +127,7 @@
   });
   document.addEventListener("focusout", (leave) => leave.target.closest?.(".grip") && finishKeys());
 
+  /** What keys have moved becomes a step now, because something else is to be done on it. */
   function finishKeys() {
     if (!drag?.timer) return;
     clearTimeout(drag.timer);
@@ -134,6 +135,7 @@
     drag = null;
     commit(event);
   }
+  bench.finishKeys = finishKeys;
 
   /* Dials */
   let shift = false;

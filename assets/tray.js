@@ -18,6 +18,7 @@
     const present = chosen && devices.some((device) => device.sweeps.some((sweep) => sweep.entry === chosen));
     return present ? chosen : (bench.scene?.entry ?? null);
   };
+  bench.activeEntry = active;
   const overlay = () => bench.view?.overlay ?? [];
 
   /** Only what differs is built anew: a tray may hold thousands of lines. */
