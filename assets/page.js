@@ -68,14 +68,19 @@
     samples: (clicks) => clicks && bench.openSamples(),
   };
 
+  function afterPlot() {
+    bench.afterPlot();
+    bench.placeMarker();
+  }
+
   /* The plot's events; the element is made by the framework some time after the page. */
   function hookPlot() {
     const graph = bench.graph();
     if (!graph?.on || graph.dataset.hooked) return;
     graph.dataset.hooked = "yes";
-    for (const event of ["plotly_afterplot", "plotly_relayouting", "plotly_autosize"]) graph.on(event, bench.afterPlot);
-    graph.on("plotly_doubleclick", () => window.Plotly.relayout(graph, graph.layout.meta?.whole ?? {}));
-    new ResizeObserver(() => bench.afterPlot()).observe(graph);
+    for (const event of ["plotly_afterplot", "plotly_relayouting", "plotly_autosize"]) graph.on(event, afterPlot);
+    graph.on("plotly_doubleclick", bench.wholeView);
+    new ResizeObserver(afterPlot).observe(graph);
     bench.afterPlot();
   }
   new MutationObserver(hookPlot).observe(document.documentElement, { childList: true, subtree: true });
@@ -188,7 +193,7 @@
 
   const strips = { 1: "residuals", 2: "log", 3: "ideality" };
   document.addEventListener("keydown", (key) => {
-    const typing = key.target.matches?.("input[type=text], input:not([type]), textarea, select");
+    const typing = key.target.matches?.("input:not([type=range]), textarea, select");
     const letter = key.key.toLowerCase();
     if ((key.ctrlKey || key.metaKey) && !key.altKey && letter === "z" && !typing) {
       key.preventDefault();

@@ -19,7 +19,6 @@ from .errors import StepRefused
 from .records import canonical
 from .tables import reading_texts
 
-
 _TRAVELS = ("taken_back_by", "made_again_by")  # notes beside a kept step: the events that last undid and redid it
 
 
