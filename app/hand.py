@@ -139,7 +139,7 @@ def _hold(workspace: Workspace, event: Event) -> Step:
 def _band_gap(workspace: Workspace, event: Event) -> Step:
     sweep_of(workspace, event)
     text = str(event["text"]).strip()
-    gap = None if text in ("", "–") else parse_number(text, "Band gap", "eV", limits=(0.3, 5.0))
+    gap = None if text in ("", "–") else parse_number(text, "Band gap", "eV")
     return steps.set_band_gap(workspace, event["entry"], gap)
 
 

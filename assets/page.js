@@ -30,6 +30,7 @@
     if (!data.event) return data.sentence && bench.say(data.sentence);
     const givenUp = bench.acknowledge(data);
     if (givenUp === null) return;
+    if (!bench.unsent()) for (const button of document.querySelectorAll("button[aria-busy]")) button.removeAttribute("aria-busy");
     const those = givenUp > 1 ? `${givenUp} changes that built on it were` : "One change that built on it was";
     const sentence = givenUp ? `${data.sentence} ${those} not made either.` : data.sentence;
     if (sentence) bench.say(sentence, { answer: true });
@@ -140,7 +141,9 @@
   /** A change of the sweep that was chosen last, on what the hand has left. */
   function fit(kind) {
     bench.finishKeys();
-    if (!bench.lastUnsent(kind)) bench.send({ kind, entry: bench.activeEntry() });
+    if (bench.lastUnsent(kind)) return;
+    bench.send({ kind, entry: bench.activeEntry() });
+    document.getElementById(kind).setAttribute("aria-busy", "true");
   }
   function travel(kind) {
     const button = document.getElementById(kind);
