@@ -38,10 +38,11 @@ def change_setting(workspace: Workspace, event: Event) -> Step:
     elif name == "confidence":
         changed = replace(settings, confidence=_level(text))
     elif name == "current_noise":
-        factor = Units.of(workspace.sweep(entry).per_area).current_factor
-        changed = replace(settings, current_noise=parse_number(text, "Noise of the current") / factor if text else None)
+        units = Units.of(workspace.sweep(entry).per_area)
+        noise = parse_number(text, "Noise of the current", units.current) / units.current_factor if text else None
+        changed = replace(settings, current_noise=noise)
     elif name == "voltage_noise":
-        changed = replace(settings, voltage_noise=parse_number(text, "Noise of the voltage") / 1e3 if text else None)
+        changed = replace(settings, voltage_noise=parse_number(text, "Noise of the voltage", "mV") / 1e3 if text else None)
     else:
         changed = replace(settings, **{name: _choice(name, text)})
     return steps.set_fit_settings(workspace, entry, changed, label=f"change {name.replace('_', ' ')}")
@@ -83,7 +84,7 @@ def _window(workspace: Workspace, entry: str, settings: FitSettings, name: str, 
     voltage = workspace.sweep(entry).voltage
     whole = float(voltage.min()), float(voltage.max())
     low, high = settings.window or whole
-    typed = parse_number(text, "Voltage window") if text else math.inf
+    typed = parse_number(text, "Voltage window", "V", other_units={"mV": lambda value: value / 1e3}) if text else math.inf
     if name == "window_low":
         low = typed if math.isfinite(typed) else whole[0]
     else:
@@ -94,7 +95,7 @@ def _window(workspace: Workspace, entry: str, settings: FitSettings, name: str, 
 
 
 def _level(text: str) -> float:
-    value = parse_number(text.rstrip(" %"), "Level of the intervals")
+    value = parse_number(text, "Level of the intervals", "%")
     if not 50 <= value < 100:
         raise ConditionRefused("The level of the intervals must be a percentage from 50 to below 100, for instance 95.")
     return value / 100

@@ -8,6 +8,7 @@ that was killed. Notice and secret are readable by their owner alone.
 from __future__ import annotations
 
 import contextlib
+import errno
 import json
 import os
 import platform
@@ -121,11 +122,22 @@ def _told(folder: Path) -> Iterator[None]:
     try:
         yield
     except OSError as error:
-        reason = error.strerror or str(error)
-        raise StoreFailed(
-            f"Sweepbench cannot keep its work in {folder} ({reason}). "
-            "Free some space or mend the rights of that folder, or choose another one with --keep."
-        ) from error
+        raise StoreFailed(f"Sweepbench cannot keep its work in {folder}: {_obstacle(folder, error)}") from error
+
+
+def _obstacle(folder: Path, error: OSError) -> str:
+    """What is wrong, and what to do about it."""
+    # Asked through os.path, which answers where a path itself is refused.
+    there = next((part for part in (folder, *folder.parents) if os.path.exists(part)), folder)
+    if os.path.exists(there) and not os.path.isdir(there):
+        return f"{there} is a file and not a folder. Choose another folder with --keep."
+    if error.errno in (errno.ENOSPC, errno.EDQUOT):
+        return "the disk is full. Free some space, or choose a folder on another disk with --keep."
+    if error.errno in (errno.EACCES, errno.EPERM, errno.EROFS):
+        return f"you may not write in {there}. Mend its rights, or choose another folder with --keep."
+    if error.errno in (errno.ENAMETOOLONG, errno.EINVAL):
+        return "the system allows no folder of that name. Choose another one with --keep."
+    return f"the system says “{error.strerror or error}”. Choose another folder with --keep."
 
 
 def _lock(handle: int) -> bool:

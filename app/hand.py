@@ -12,15 +12,18 @@ from typing import Any
 from core import steps
 from core.dials import dial_ranges
 from core.errors import ConditionRefused, StepRefused
-from core.handles import Move, drag, set_parameter
+from core.handles import Move, drag, set_parameter, type_parameter
+from core.models import Model
+from core.moves import TYPED_LIMITS
 from core.statements import SWITCHES, UNCERTAINTIES
 from core.sweep import Sweep
 from core.workspace import Workspace
 
 from .fit_settings import change_setting, leave_out, noise_by_repeats, use_all_points
+from .fits import guess_step, refine_step
 from .mechanisms import BY_PARAMETER
 from .together import refine_sweeps_together
-from .units import Units, kelvin
+from .units import Units, celsius, kelvin
 from .wording import parse_number
 
 Event = Mapping[str, Any]
@@ -38,7 +41,7 @@ def moved(workspace: Workspace, event: Event) -> Move:
     StepRefused
         If the sweep is gone, has no model, or the event names no parameter.
     ConditionRefused
-        If a typed text is no number.
+        If a typed text is no number, or one beyond what the parameter can be.
     """
     sweep, fit = sweep_of(workspace, event), workspace.fit(event["entry"])
     parameter = _parameter(event)
@@ -51,12 +54,12 @@ def moved(workspace: Workspace, event: Event) -> Move:
         span = (float(sweep.voltage.min()), float(sweep.voltage.max()))
         x, y = _position(event, "x"), _position(event, "y") / units.current_factor
         return drag(fit.model, parameter, x, y, lit=sweep.lit, hold=hold, span=span)
+    keep = bool(event.get("keep"))
     if event["kind"] == "dial":
         value = _dial(sweep, fit.model, parameter).value(_position(event, "fraction"))
-    else:
-        mechanism = BY_PARAMETER[parameter]
-        value = parse_number(str(event.get("text", "")), mechanism.title) / units.parameter_factor(parameter)
-    return set_parameter(fit.model, parameter, value, hold=hold, keep_jsc_voc=bool(event.get("keep")))
+        return set_parameter(fit.model, parameter, value, hold=hold, keep_jsc_voc=keep)
+    value = _typed(str(event.get("text", "")), parameter, units)
+    return type_parameter(fit.model, parameter, value, hold=hold, keep_jsc_voc=keep)
 
 
 def step_for(workspace: Workspace, event: Event) -> tuple[Step | None, str]:
@@ -70,10 +73,25 @@ def step_for(workspace: Workspace, event: Event) -> tuple[Step | None, str]:
         return steps.set_model(workspace, event["entry"], move.model, label=label), move.message
     if kind not in _STEPS:
         raise StepRefused(f"The page asked for “{kind}”, which this version does not know. Reload the page.")
-    return _STEPS[kind](workspace, event), ""
+    step = _STEPS[kind](workspace, event)
+    return step, _remark(workspace, event, step)
+
+
+def _remark(workspace: Workspace, event: Event, step: Step | None) -> str:
+    """What a step does beyond what its event says."""
+    if event["kind"] != "condition" or event["name"] != "irradiance" or step is None:
+        return ""
+    if not workspace.sweep(event["entry"]).lit or steps.apply(workspace, step).sweep(event["entry"]).lit:
+        return ""
+    return (
+        "Without irradiance this is now a dark sweep: its bench is the dark one, and Jsc, Voc and PCE are gone. "
+        "If it was measured in light, undo, or choose “light” under “measured in” and type its irradiance."
+    )
 
 
 def sweep_of(workspace: Workspace, event: Event) -> Sweep:
+    if event.get("entry") is None:
+        raise StepRefused("There is no sweep on the bench yet. Drop a file first.")
     if event.get("entry") not in workspace.entries:
         raise StepRefused("That sweep is no longer in the tray.")
     return workspace.sweep(event["entry"])
@@ -92,8 +110,26 @@ def _parameter(event: Event) -> str:
     return event["parameter"]
 
 
-def _dial(sweep: Sweep, model: Any, parameter: str) -> Any:
+def _typed(text: str, parameter: str, units: Units) -> float:
+    """A parameter's value in core's unit, from a text in the unit of the screen."""
+    factor, (low, high) = units.parameter_factor(parameter), TYPED_LIMITS[parameter]
+    title, unit = BY_PARAMETER[parameter].title.capitalize(), units.parameter_unit(parameter)
+    remedy = "For a module, give its cells in series first: n is that of one cell." if parameter.startswith("ideality") else ""
+    return parse_number(text, title, unit, limits=(low * factor, high * factor), remedy=remedy) / factor
+
+
+def _dial(sweep: Sweep, model: Model, parameter: str) -> Any:
     return dial_ranges(sweep, model.parameters)[parameter].containing(getattr(model, parameter))
+
+
+def _guess(workspace: Workspace, event: Event) -> Step:
+    sweep_of(workspace, event)
+    return guess_step(workspace, event["entry"])
+
+
+def _refine(workspace: Workspace, event: Event) -> Step:
+    sweep_of(workspace, event)
+    return refine_step(workspace, event["entry"])
 
 
 def _hold(workspace: Workspace, event: Event) -> Step:
@@ -103,7 +139,7 @@ def _hold(workspace: Workspace, event: Event) -> Step:
 def _band_gap(workspace: Workspace, event: Event) -> Step:
     sweep_of(workspace, event)
     text = str(event["text"]).strip()
-    gap = None if text in ("", "–") else parse_number(text, "Band gap")
+    gap = None if text in ("", "–") else parse_number(text, "Band gap", "eV")
     return steps.set_band_gap(workspace, event["entry"], gap)
 
 
@@ -122,18 +158,33 @@ def _condition(workspace: Workspace, event: Event) -> Step:
 def _statement(workspace: Workspace, event: Event) -> Step | None:
     name, text = str(event["name"]), str(event["text"]).strip()
     if name in UNCERTAINTIES:
-        value = parse_number(text, "Uncertainty") / 100 if text else None  # per cent on the screen
+        value = parse_number(text, "Uncertainty", "%") / 100 if text else None  # per cent on the screen
     else:
         value = text == "yes" if name in SWITCHES else text
     return steps.state(workspace, name, value)
 
 
 def _area(text: str) -> float | None:
-    return None if text in ("", "–") else parse_number(text, "Area")
+    """[cm²], from a micrometre-sized pixel to a field of modules."""
+    if text in ("", "–"):
+        return None
+    return parse_number(
+        text, "Area", "cm²", limits=(1e-8, 1e6), other_units={"mm²": lambda value: value / 100, "m²": lambda value: value * 1e4}
+    )
+
+
+def _temperature(text: str) -> float:
+    return kelvin(parse_number(text, "Temperature", "°C", limits=(-223.0, 726.0), other_units={"K": celsius}))
+
+
+def _irradiance(text: str) -> float:
+    """[W cm⁻²], from mW cm⁻² on the screen; zero in the dark, at most a hundred thousand suns."""
+    per_square_metre = {"W m⁻²": lambda value: value / 10}
+    return parse_number(text, "Irradiance", "mW cm⁻²", limits=(0.0, 1e7), other_units=per_square_metre) / 1e3
 
 
 def _whole(text: str) -> int:
-    value = parse_number(text, "Cells in series")
+    value = parse_number(text, "Cells in series", limits=(1, 10_000), other_units={"cells": lambda value: value})
     if not value.is_integer():
         raise ConditionRefused("The number of cells in series must be a whole number from 1 to 10000.")
     return int(value)
@@ -142,13 +193,15 @@ def _whole(text: str) -> int:
 _CONDITIONS: dict[str, Callable[[str], Any]] = {
     "area": _area,
     "file_area": _area,
-    "temperature": lambda text: kelvin(parse_number(text, "Temperature")),
-    "irradiance": lambda text: parse_number(text, "Irradiance") / 1e3,  # mW cm⁻² on the screen
+    "temperature": _temperature,
+    "irradiance": _irradiance,
     "series_cells": _whole,
     "lit": lambda text: text == "light",
 }
 
 _STEPS: dict[str, Callable[[Workspace, Event], Step | None]] = {
+    "first-guess": _guess,
+    "refine": _refine,
     "hold": _hold,
     "setting": change_setting,
     "leave-out": leave_out,

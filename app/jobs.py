@@ -106,7 +106,9 @@ class Jobs:
         self._closed = False
         self._wake_reader, self._wake_writer = connection.Pipe(duplex=False)
 
-    def submit(self, function: Callable[..., Any], arguments: Sequence[Sequence[Any]], *, label: str) -> str:
+    def submit(
+        self, function: Callable[..., Any], arguments: Sequence[Sequence[Any]], *, label: str, name: str | None = None
+    ) -> str:
         """Start ``function(*items)`` for every tuple of items.
 
         Parameters
@@ -116,6 +118,8 @@ class Jobs:
         arguments : sequence of tuples
         label : str
             What the user reads beside the progress.
+        name : str, optional
+            The job's id; one that is known already is not started again, so that a page may ask twice.
 
         Returns
         -------
@@ -123,10 +127,12 @@ class Jobs:
             The job's id.
         """
         job = _Job(label, pickle.dumps(function), deque(enumerate(arguments)), len(arguments))
-        name = secrets.token_urlsafe(9)
+        name = name or secrets.token_urlsafe(9)
         with self._changed:
             if self._closed:
                 raise RuntimeError("jobs are closed")
+            if name in self._jobs:
+                return name
             self._forget_old_jobs()
             self._jobs[name] = job
             self._turns.append(job)

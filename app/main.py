@@ -27,6 +27,8 @@ from .serving import serve
 
 PORT = 8417  # of our own choosing; registered to nobody that we know of
 
+LARGEST_PORT = 65535
+
 PATIENCE = 5.0  # [s] for another start on the same folder to say where it is reached
 
 
@@ -169,14 +171,18 @@ def _parser() -> argparse.ArgumentParser:
 
 
 def _folder(text: str) -> Path:
+    """The folder of ``--keep``; an unset variable of the shell arrives as an empty text and would mean the current folder."""
+    if not text.strip():
+        raise argparse.ArgumentTypeError("no folder is named. Give its path, or leave --keep out to use the usual one.")
     return Path(text).expanduser().absolute()
 
 
 def _port(text: str) -> int:
-    port = int(text)
-    if not 0 <= port < 65536:
-        raise ValueError(text)
-    return port
+    if not (text.isascii() and text.isdigit() and int(text) <= LARGEST_PORT):
+        raise argparse.ArgumentTypeError(
+            f"“{text}” is not a port. Give a whole number from 1 to {LARGEST_PORT}, or 0 for any free one."
+        )
+    return int(text)
 
 
 def _version() -> str:

@@ -4,13 +4,20 @@ from __future__ import annotations
 
 import math
 import re
+from collections.abc import Callable, Mapping
 
 from core.errors import ConditionRefused
 
 _SUPERSCRIPT = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
 _PLAIN = str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻⁺", "0123456789-+")
-_POWER_OF_TEN = re.compile(r"[·×*]10(?:\^([+-]?\d+)|([⁺⁻]?[⁰¹²³⁴⁵⁶⁷⁸⁹]+))$")
+_POWER_OF_TEN = re.compile(r"[·×*]10(?:\^([+-]?\d+)|([⁺⁻]?[⁰¹²³⁴⁵⁶⁷⁸⁹]+))")
 _LONE_POWER = re.compile(r"^([+-]?)(?=10[\^⁺⁻⁰¹²³⁴⁵⁶⁷⁸⁹])")
+# A space between digits is only a separator of thousands.
+_SPACE_IN_NUMBER = re.compile(r"(?<=\d)\s(?=\d{3}(?!\d))|(?<!\d)\s+|\s+(?!\d)")
+_LEADING_NUMBER = re.compile(r"([+-]?(?:\d+(?:[.,]\d+)*[.,]?|[.,]\d+)(?:e[+-]?\d+)?|[+-]?(?:∞|inf(?:inity)?))(.*)", re.I | re.S)
+_THOUSANDS_OR_DECIMALS = re.compile(r"[+-]?([1-9]\d{0,2}),(\d{3})")
+_EXAMPLE = "22.5, 1.2e-9 or 1,2"
+_QUOTED = 40  # characters of a typed text that a sentence repeats
 _MOST_DIGITS = 7  # of a value whose uncertainty would allow still more
 
 
@@ -56,30 +63,96 @@ def field(value: float | None) -> str:
     return "∞" if math.isinf(value) else f"{value:.5g}"
 
 
-def parse_number(text: str, what: str) -> float:
-    """The number that a person typed: ``1.2e-9``, ``1,2``, ``1.2·10⁻⁹``, ``inf``, ``∞``.
+def parse_number(
+    text: str,
+    what: str,
+    unit: str = "",
+    *,
+    limits: tuple[float, float] = (-math.inf, math.inf),
+    remedy: str = "",
+    other_units: Mapping[str, Callable[[float], float]] | None = None,
+) -> float:
+    """The number that a person typed: ``1.2e-9``, ``1,2``, ``1.2·10⁻⁹``, ``inf``, ``∞``, ``22 mA/cm2``.
+
+    Parameters
+    ----------
+    text : str
+    what : str
+        Name of the field; begins every sentence.
+    unit : str, optional
+        The field's unit, which may stand after the number.
+    limits : (float, float)
+        What the field takes, ends included, in its unit.
+    remedy : str, optional
+        A sentence that follows where a number is beyond them.
+    other_units : mapping, optional
+        Units that may stand after the number as well, each with what turns its numbers into the field's unit.
 
     Raises
     ------
     ConditionRefused
-        With a sentence that quotes the text.
+        With a sentence that quotes the text and says what to type.
     """
-    plain = "".join(text.split()).replace("−", "-")
+    quoted = f"“{text.strip()[:_QUOTED]}”"
+    example = f"Type it like {_EXAMPLE}."
+    if not text.strip():
+        raise ConditionRefused(f"{what}: the field was left empty, so nothing was changed. {example}")
+    plain = _SPACE_IN_NUMBER.sub("", text.strip()).replace("−", "-")
     plain = _LONE_POWER.sub(r"\g<1>1·", plain)
     plain = _POWER_OF_TEN.sub(lambda found: "e" + (found[1] or found[2].translate(_PLAIN)), plain)
-    if plain.count(",") == 1 and "." not in plain:
-        plain = plain.replace(",", ".")
-    if plain.lower() in ("∞", "inf", "infinity"):
-        return math.inf
-    try:
-        value = float(plain)
-    except ValueError:
+    found = _LEADING_NUMBER.fullmatch(plain)
+    if found is None:
+        raise ConditionRefused(f"{what}: {quoted} is not a number. {example}")
+    digits, named = found.groups()
+    ambiguous = _THOUSANDS_OR_DECIMALS.fullmatch(digits)
+    if ambiguous:
+        whole, rest = ambiguous.groups()
         raise ConditionRefused(
-            f"{what}: “{text.strip()[:40]}” is not a number. Type it like 22.5, 1.2e-9 or 1,2."
-        ) from None
-    if math.isnan(value):
-        raise ConditionRefused(f"{what}: a number is needed. Type it like 22.5, 1.2e-9 or 1,2.")
-    return value
+            f"{what}: {quoted} can mean {whole}.{rest} or {whole}{rest}. Type it like {whole}.{rest} or like {whole}{rest}."
+        )
+    if digits.count(",") == 1 and "." not in digits:
+        digits = digits.replace(",", ".")
+    try:
+        value = float(digits.replace("∞", "inf"))
+    except ValueError:
+        raise ConditionRefused(f"{what}: {quoted} is not a number. {example}") from None
+    if any(digit in "123456789" for digit in digits.lower().partition("e")[0]) and (value == 0 or math.isinf(value)):
+        size = "small" if value == 0 else "large"
+        raise ConditionRefused(f"{what}: {quoted} is too {size} for any number that the program can carry. {example}")
+    if named:
+        value = _converted(value, named, unit, other_units or {}, what, quoted)
+    low, high = limits
+    if not low <= value <= high:
+        allowed = f"from {low:.4g} to {high:.4g}" if math.isfinite(high) else f"at least {low:.4g}"
+        sentence = f"{what} has to be {f'{allowed} {unit}'.strip()}, not {quoted}; it stays as it was."
+        raise ConditionRefused(f"{sentence} {remedy}".strip())
+    return value + 0.0  # no minus before a zero
+
+
+def _converted(
+    value: float, named: str, unit: str, other_units: Mapping[str, Callable[[float], float]], what: str, quoted: str
+) -> float:
+    """The value in the field's unit, where a known unit stands after it."""
+    if _unit_key(named) == _unit_key(unit):
+        return value
+    for other, conversion in other_units.items():
+        if _unit_key(named) == _unit_key(other):
+            return conversion(value)
+    if not (named[0].isalpha() or named[0] in "°º%") or named[0] in "xX":
+        raise ConditionRefused(f"{what}: {quoted} is not a number. Type it like {_EXAMPLE}.")
+    takes = f"a number in {unit}" if unit else "a plain number without a unit"
+    example = f"22.5 {unit}".strip()
+    raise ConditionRefused(f"{what}: {quoted} has another unit; this field takes {takes}. Type it like {example}.")
+
+
+def _unit_key(unit: str) -> str:
+    """A unit without its spelling: ``mA/cm²``, ``mA cm^-2`` and ``mA·cm⁻²`` are one."""
+    key = "".join(unit.split()).translate(_PLAIN).casefold()
+    for spelt, plain in (("\u2126", "ω"), ("ohms", "ω"), ("ohm", "ω"), ("μ", "µ"), ("º", "°"), ("deg", "°"), ("percent", "%")):
+        key = key.replace(spelt, plain)
+    key = re.sub(r"[·*^]", "", key).replace("−", "-")
+    key = re.sub(r"/(c?m)2", r"\1-2", key)
+    return "°c" if key == "c" else key
 
 
 def with_uncertainty(value: float | None, uncertainty: float | None) -> str:

@@ -18,6 +18,12 @@
     };
   };
 
+  /** The points of one trace, as numbers: what the server sent packed is unpacked here only. */
+  bench.shownPoints = (uid) => {
+    const trace = bench.graph()?._fullData?.find((one) => one.uid === uid);
+    return { x: [...(trace?.x ?? [])], y: [...(trace?.y ?? [])] };
+  };
+
   /** The frame of the axis pair (x, name) in pixels. */
   bench.frame = (name) => {
     const x = bench.axis("x");

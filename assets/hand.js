@@ -11,12 +11,12 @@
   function show(answer, status) {
     if (status === 409) {
       giveUp();
-      bench.say(answer.sentence);
+      bench.say(answer.sentence, { answer: true });
       bench.setProps("revision", { data: { ...bench.stamp(), revision: answer.revision } });
       return;
     }
     if (status !== 200) {
-      bench.say(answer.sentence ?? "The server could not follow the hand.");
+      bench.say(answer.sentence ?? "The server could not follow the hand.", { answer: true });
       return;
     }
     bench.paintLive(answer);
@@ -127,6 +127,7 @@
   });
   document.addEventListener("focusout", (leave) => leave.target.closest?.(".grip") && finishKeys());
 
+  /** What keys have moved becomes a step now, because something else is to be done on it. */
   function finishKeys() {
     if (!drag?.timer) return;
     clearTimeout(drag.timer);
@@ -134,9 +135,11 @@
     drag = null;
     commit(event);
   }
+  bench.finishKeys = finishKeys;
 
   /* Dials */
-  let shift = false;
+  let shift = false; // with it, a slider keeps Jsc and Voc
+  let shiftEnter = false; // with both, so does a number; Shift with Tab only leaves the field
   for (const type of ["keydown", "keyup", "pointerdown", "pointermove"]) {
     document.addEventListener(type, (event) => (shift = event.shiftKey), { capture: true });
   }
@@ -160,17 +163,18 @@
       commit(last);
     } else if (input.matches?.(".dial input[type=text]")) {
       const parameter = input.closest("[data-parameter]").dataset.parameter;
-      commit({ kind: "field", entry: bench.scene.entry, parameter, text: input.value, keep: shift });
+      commit({ kind: "field", entry: bench.scene.entry, parameter, text: input.value, keep: shiftEnter });
     } else if (input.matches?.(".condition input, .condition select")) {
       const name = input.closest("[data-condition]")?.dataset.condition;
       if (name === "band_gap") commit({ kind: "band-gap", entry: bench.losses.entry, text: input.value });
       else if (name) commit({ kind: "condition", entry: bench.scene.entry, name, text: input.value });
     }
   });
-  // Shift with an arrow key asks a slider for a longer stride in the browser's own way; the hold of Jsc and Voc is for the pointer.
   document.addEventListener("keydown", (event) => {
-    if (event.target.matches?.(".dial input[type=range]")) shift = false;
-    if (event.key === "Enter" && event.target.matches?.(".dial input, .condition input")) event.target.blur();
+    if (event.key !== "Enter" || !event.target.matches?.(".dial input, .condition input")) return;
+    shiftEnter = event.shiftKey;
+    event.target.blur(); // which commits it
+    shiftEnter = false;
   });
 
   document.addEventListener("click", (click) => {

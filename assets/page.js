@@ -25,17 +25,31 @@
     bench.setProps("errand", { data: { kind: "open", workspace: bench.view.workspace, at: Date.now() } });
   }
 
+  /** What an answer says of the event that it answers; a change that was made ends what was said of one that was not. */
+  function hear(data) {
+    if (!data.event) return data.sentence && bench.say(data.sentence);
+    const givenUp = bench.acknowledge(data);
+    if (givenUp === null) return;
+    if (!bench.unsent()) for (const button of document.querySelectorAll("button[aria-busy]")) button.removeAttribute("aria-busy");
+    const those = givenUp > 1 ? `${givenUp} changes that built on it were` : "One change that built on it was";
+    const sentence = givenUp ? `${data.sentence} ${those} not made either.` : data.sentence;
+    if (sentence) bench.say(sentence, { answer: true });
+    else bench.sayNoMore();
+  }
+
   window.dash_clientside = window.dash_clientside ?? {};
   window.dash_clientside.sweepbench = {
     revision(data) {
       if (!data) return;
-      if (data.workspace !== seen.workspace || data.revision !== seen.revision) bench.live.drop();
-      seen = { workspace: data.workspace, revision: data.revision };
-      goBack();
-      if (bench.view.workspace !== seen.workspace && data.revision !== null && arrived) bench.changeView({ workspace: seen.workspace });
-      arrived = true;
-      if (data.event) bench.acknowledge(data.event);
-      if (data.sentence) bench.say(data.sentence);
+      const overtaken = data.workspace === seen.workspace && data.revision < seen.revision;
+      if (!overtaken) {
+        if (data.workspace !== seen.workspace || data.revision !== seen.revision) bench.live.drop();
+        seen = { workspace: data.workspace, revision: data.revision };
+        goBack();
+        if (bench.view.workspace !== seen.workspace && data.revision !== null && arrived) bench.changeView({ workspace: seen.workspace });
+        arrived = true;
+      }
+      hear(data);
       bench.live.kick();
     },
     view(data) {
@@ -55,14 +69,19 @@
     samples: (clicks) => clicks && bench.openSamples(),
   };
 
+  function afterPlot() {
+    bench.afterPlot();
+    bench.placeMarker();
+  }
+
   /* The plot's events; the element is made by the framework some time after the page. */
   function hookPlot() {
     const graph = bench.graph();
     if (!graph?.on || graph.dataset.hooked) return;
     graph.dataset.hooked = "yes";
-    for (const event of ["plotly_afterplot", "plotly_relayouting", "plotly_autosize"]) graph.on(event, bench.afterPlot);
-    graph.on("plotly_doubleclick", () => window.Plotly.relayout(graph, graph.layout.meta?.whole ?? {}));
-    new ResizeObserver(() => bench.afterPlot()).observe(graph);
+    for (const event of ["plotly_afterplot", "plotly_relayouting", "plotly_autosize"]) graph.on(event, afterPlot);
+    graph.on("plotly_doubleclick", bench.wholeView);
+    new ResizeObserver(afterPlot).observe(graph);
     bench.afterPlot();
   }
   new MutationObserver(hookPlot).observe(document.documentElement, { childList: true, subtree: true });
@@ -119,7 +138,30 @@
     download(`report/${here()}`, { entries: [bench.scene.entry, ...laid].join(",") });
   }
 
+  /** A change of the sweep that was chosen last, on what the hand has left. */
+  function fit(kind) {
+    bench.finishKeys();
+    if (bench.lastUnsent(kind)) return;
+    bench.send({ kind, entry: bench.activeEntry() });
+    document.getElementById(kind).setAttribute("aria-busy", "true");
+  }
+  function travel(kind) {
+    const button = document.getElementById(kind);
+    bench.finishKeys();
+    if (button.disabled && !bench.unsent()) bench.say(`${button.title}.`);
+    else bench.send({ kind });
+  }
+  function refineAll() {
+    bench.finishKeys();
+    if (!bench.lastUnsent("refine-all")) bench.send({ kind: "refine-all" });
+  }
+
   const acts = {
+    undo: () => travel("undo"),
+    redo: () => travel("redo"),
+    "first-guess": () => fit("first-guess"),
+    refine: () => fit("refine"),
+    "refine-all": refineAll,
     theme() {
       localStorage.setItem("sweepbench-theme", root.dataset.theme === "dark" ? "light" : "dark");
       applyTheme();
@@ -152,22 +194,18 @@
     if (click.target.id === "notice-line") bench.say("");
   });
 
-  const press = (id) => {
-    const button = document.getElementById(id);
-    if (button && !button.disabled) button.click();
-  };
   const strips = { 1: "residuals", 2: "log", 3: "ideality" };
   document.addEventListener("keydown", (key) => {
-    const typing = key.target.matches?.("input[type=text], input:not([type]), textarea, select");
+    const typing = key.target.matches?.("input:not([type=range]), textarea, select");
     const letter = key.key.toLowerCase();
     if ((key.ctrlKey || key.metaKey) && !key.altKey && letter === "z" && !typing) {
       key.preventDefault();
-      press(key.shiftKey ? "redo" : "undo");
+      travel(key.shiftKey ? "redo" : "undo");
     }
     if (typing || key.ctrlKey || key.metaKey || key.altKey) return;
     if (letter === "e") bench.armLeaveOut();
-    if (letter === "g") press("first-guess");
-    if (letter === "r") press("refine");
+    if (letter === "g") fit("first-guess");
+    if (letter === "r") fit("refine");
     if (letter === "h") {
       const parameter = key.target.closest?.("[data-parameter]")?.dataset.parameter;
       if (parameter) bench.toggleHold(parameter);

@@ -219,13 +219,16 @@
   };
 
   let noticeTimer = null;
-  /** One sentence for the user; it goes when it has been read or on a click. */
-  bench.say = (sentence) => {
+  let ofAnAnswer = false;
+  /** One sentence for the user; it goes when it has been read, on a click, or if it answers a change, when the next one is made. */
+  bench.say = (sentence, { answer = false } = {}) => {
     const line = byId("notice-line");
     if (!line) return;
     clearTimeout(noticeTimer);
+    ofAnAnswer = answer;
     line.textContent = sentence ?? "";
     line.classList.toggle("shown", Boolean(sentence));
     if (sentence) noticeTimer = setTimeout(() => line.classList.remove("shown"), 4000 + 60 * sentence.length);
   };
+  bench.sayNoMore = () => ofAnAnswer && bench.say("");
 })();

@@ -159,7 +159,7 @@
     if (panel) bench.changeView({ panel: panel.dataset.panelChoice });
   });
 
-  /* A box over points leaves them out; a box over points that are all out takes them back. */
+  /* A box over points leaves them out; a box over points that are all out takes them back. Keys go from point to point. */
   let armed = false;
   let box = null;
   bench.armLeaveOut = (on = !armed) => {
@@ -167,6 +167,7 @@
     byId("overlay").classList.toggle("armed", armed);
     document.querySelector("[data-act=leave-out]").setAttribute("aria-checked", String(armed));
     if (!armed) endBox();
+    bench.showMarker(armed);
   };
   bench.useAll = () => bench.scene?.entry && bench.send({ kind: "use-all", entry: bench.scene.entry });
 

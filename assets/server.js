@@ -2,7 +2,9 @@
 (() => {
   const bench = (window.sweepbench ??= {});
   const PATIENCE = 5000; // ms for one live answer
-  const RESEND = 3000; // ms until an event that was not acknowledged is sent again
+  const RESEND = 3000; // ms until an event that was not acknowledged is sent again; longer with each try
+  const LOOK = 400; // ms between questions whether the server is there, while an event waits for its answer
+  const SHORT_PATIENCE = 500; // ms for the answer to that question
 
   function cookie(name) {
     const found = document.cookie.split("; ").find((part) => part.startsWith(`${name}=`));
@@ -59,39 +61,106 @@
 
   /* The outbox: events go one after another, each on the revision that the one before it left. */
   const outbox = [];
-  let waiting = null;
+  let waiting = null; // {tries, timer}: the first of the outbox was sent and its answer is not here yet
+  let away = false; // whether the server did not answer since that was sent
+  let looking = null;
 
   bench.send = (event) => {
-    outbox.push({ ...event, event: crypto.randomUUID(), workspace: bench.stamp().workspace });
+    const travel = event.kind === "undo" || event.kind === "redo";
+    const about = travel ? { about: onItsWay(event.kind) } : {};
+    outbox.push({ ...event, ...about, event: crypto.randomUUID(), workspace: bench.stamp().workspace });
+    // What is on its way can be taken back, whatever the history said so far.
+    if (event.kind !== "refine-all") bench.setProps(event.kind === "undo" ? "redo" : "undo", { disabled: false });
     pump();
+    looking ??= setTimeout(look, LOOK);
   };
   bench.unsent = () => outbox.length;
+  /** Whether the last of what is not yet acknowledged is of this kind: to ask twice for one fit makes no second one. */
+  bench.lastUnsent = (kind) => outbox.at(-1)?.kind === kind;
+
+  /** The event in the outbox that an undo or redo would take back or make again; null where that is long made. */
+  function onItsWay(kind) {
+    const made = [];
+    const takenBack = [];
+    for (const one of outbox) {
+      if (one.kind === "undo") takenBack.push(made.pop() ?? null);
+      else if (one.kind === "redo") made.push(takenBack.pop() ?? null);
+      else if (one.kind !== "refine-all") {
+        made.push(one.event);
+        takenBack.length = 0;
+      }
+    }
+    return (kind === "undo" ? made : takenBack).at(-1) ?? null;
+  }
 
   function pump() {
     // The live request under way speaks of the revision before this step, so its answer comes first.
     if (waiting || !outbox.length || gate.busy) return;
-    const post = () => {
-      // The revision of the first try: what was built on one state must not be made on another.
-      outbox[0].revision ??= bench.stamp().revision;
-      bench.setProps("hand", { data: { ...outbox[0], tries: (waiting?.tries ?? 0) + 1 } });
-      waiting = { tries: (waiting?.tries ?? 0) + 1, timer: setTimeout(again, RESEND) };
-    };
-    const again = () => {
-      bench.reachable(false);
-      post();
-    };
     post();
   }
 
-  /** The server has answered an event. */
-  bench.acknowledge = (event) => {
-    if (!outbox.length || outbox[0].event !== event) return;
+  function post() {
+    clearTimeout(waiting?.timer);
+    const tries = (waiting?.tries ?? 0) + 1;
+    away = false;
+    // The revision of the first try: what was built on one state must not be made on another.
+    outbox[0].revision ??= bench.stamp().revision;
+    bench.setProps("hand", { data: { ...outbox[0], tries } });
+    waiting = { tries, timer: setTimeout(post, tries * RESEND) };
+  }
+
+  /** While something is unsaved: a server that does not answer is told of soon, and one that is back hears of it at once. */
+  async function look() {
+    const there = outbox.length > 0 && (await bench.answers());
+    if (outbox.length && !there) {
+      away = true;
+      bench.reachable(false);
+    } else if (waiting && away) {
+      post();
+    }
+    looking = outbox.length ? setTimeout(look, LOOK) : null;
+  }
+
+  bench.answers = async () => {
+    try {
+      const signal = AbortSignal.timeout(SHORT_PATIENCE);
+      await bench.fetch(`/live/${encodeURIComponent(bench.stamp().workspace)}`, { signal });
+      return true;
+    } catch {
+      return false;
+    }
+  };
+
+  /** For what cannot wait in the outbox: resolves when all before it is saved, to false and a sentence if the server is away. */
+  bench.ready = async () => {
+    for (;;) {
+      if (!(await bench.answers())) {
+        bench.reachable(false);
+        bench.say("The server does not answer, so this was not done. Is Sweepbench still running? Try again when it is back.");
+        return false;
+      }
+      if (!outbox.length) return true;
+      await new Promise((next) => setTimeout(next, LOOK / 4));
+    }
+  };
+
+  /** The server has answered an event. Returns how many that built on it are given up; null if nobody waits for the answer. */
+  bench.acknowledge = ({ event, outcome, workspace, revision }) => {
+    if (!outbox.length || outbox[0].event !== event) return null;
     clearTimeout(waiting?.timer);
     waiting = null;
-    outbox.shift();
-    bench.reachable(true);
+    const sent = outbox.shift();
+    // What was done on a state that is not the one that stands was meant for another.
+    const givenUp = outcome === "stale" || workspace !== sent.workspace ? outbox.splice(0).length : 0;
+    if (revision === sent.revision) {
+      // It made nothing, so there is nothing of it to take back, and what was there before must not go in its place.
+      const kept = outbox.filter((one) => one.about !== sent.event);
+      outbox.splice(0, outbox.length, ...kept);
+    }
+    if (!outbox.length) bench.reachable(true);
     pump();
     run();
+    return givenUp;
   };
 
   bench.reachable = (yes) => {

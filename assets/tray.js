@@ -18,6 +18,7 @@
     const present = chosen && devices.some((device) => device.sweeps.some((sweep) => sweep.entry === chosen));
     return present ? chosen : (bench.scene?.entry ?? null);
   };
+  bench.activeEntry = active;
   const overlay = () => bench.view?.overlay ?? [];
 
   /** Only what differs is built anew: a tray may hold thousands of lines. */
@@ -202,6 +203,8 @@
   }
   const renameSweep = (entry) =>
     rename(document.querySelector(`#sweep-${CSS.escape(entry)} .sweep-name`), { kind: "rename-sweep", entry });
+  const renameDevice = (host) => rename(host, { kind: "rename-device", device: host.dataset.device });
+  const deviceOf = (entry) => devices.find((device) => device.sweeps.some((sweep) => sweep.entry === entry))?.device;
 
   document.addEventListener("click", (click) => {
     const row = click.target.closest?.("#tray-list .sweep");
@@ -216,7 +219,7 @@
     const name = click.target.closest?.("#tray-list .sweep-name");
     if (name && !name.querySelector("input")) renameSweep(name.closest(".sweep").dataset.entry);
     const device = click.target.closest?.("#tray-list .device-name");
-    if (device && !device.querySelector("input")) rename(device, { kind: "rename-device", device: device.dataset.device });
+    if (device && !device.querySelector("input")) renameDevice(device);
   });
   document.addEventListener("keydown", (key) => {
     if (key.target !== list()) return;
@@ -228,7 +231,7 @@
       Home: () => choose(order[0]),
       End: () => choose(order.at(-1)),
       Delete: () => remove(active()),
-      F2: () => renameSweep(active()),
+      F2: () => (key.shiftKey ? renameDevice(list().querySelector(`.device-name[data-device="${deviceOf(active())}"]`)) : renameSweep(active())),
       " ": () => layBeside(active()),
     };
     if (!acts[key.key] || !order.length) return;

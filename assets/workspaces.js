@@ -4,7 +4,9 @@
   let known = { here: null, there: [], deleted: [] };
 
   const sheet = () => document.querySelector(".workspaces");
-  const errand = (kind, more = {}) => bench.setProps("errand", { data: { kind, ...more, at: Date.now() } });
+  const errand = async (kind, more = {}) => {
+    if (await bench.ready()) bench.setProps("errand", { data: { kind, ...more, at: Date.now() } });
+  };
   const here = () => known.there.find((workspace) => workspace.id === known.here);
 
   bench.receiveWorkspaces = (data) => {

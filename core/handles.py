@@ -33,10 +33,10 @@ from . import (
     two_diode_handles,
 )
 from .models import Model
-from .moves import Move, why_locked
+from .moves import Move, not_taken, why_locked
 from .two_diode import TwoDiode
 
-__all__ = ["Handle", "Move", "drag", "handles", "set_parameter"]
+__all__ = ["Handle", "Move", "drag", "handles", "set_parameter", "type_parameter"]
 
 Motion = Literal["vertical", "horizontal", "ray"]
 
@@ -161,6 +161,24 @@ def set_parameter(
     """
     chosen = two_diode_handles if isinstance(model, TwoDiode) else moves
     return chosen.set_parameter(model, parameter, value, hold=hold, keep_jsc_voc=keep_jsc_voc)
+
+
+def type_parameter(
+    model: Model,
+    parameter: str,
+    value: float,
+    *,
+    hold: frozenset[str] = frozenset(),
+    keep_jsc_voc: bool = False,
+) -> Move:
+    """Set one parameter to exactly the value that was typed, or leave all as it is and say why.
+
+    Whoever drags sees where the hand is stopped; whoever types means the number, so nothing stops on the way to it.
+    """
+    move = set_parameter(model, parameter, value, hold=hold, keep_jsc_voc=keep_jsc_voc)
+    if getattr(move.model, parameter) == value:
+        return move
+    return Move(model, not_taken(parameter, move.message))
 
 
 def _grips(model: Model) -> tuple[ModuleType, ModuleType]:

@@ -19,6 +19,8 @@ from .errors import StepRefused
 from .records import canonical
 from .tables import reading_texts
 
+_TRAVELS = ("taken_back_by", "made_again_by")  # notes beside a kept step: the events that last undid and redid it
+
 
 class Limits(NamedTuple):
     """How much history one workspace keeps."""
@@ -47,12 +49,21 @@ def labels(database: sqlite3.Connection, workspace_id: str) -> History:
 
 
 def made(database: sqlite3.Connection, workspace_id: str, event: str) -> bool:
-    """Whether a step that the history still holds came from this event, taken back or not."""
+    """Whether this event made, took back or made again a step that the history still holds."""
     return bool(
         database.execute(
-            "SELECT EXISTS (SELECT 1 FROM history WHERE workspace = ? AND json_extract(step, '$.event') = ?)",
-            (workspace_id, event),
+            "SELECT EXISTS (SELECT 1 FROM history WHERE workspace = ? AND ? IN "
+            "(json_extract(step, '$.event'), json_extract(step, ?), json_extract(step, ?)))",
+            (workspace_id, event, *(f"$.{travel}" for travel in _TRAVELS)),
         ).fetchone()[0]
+    )
+
+
+def note(database: sqlite3.Connection, workspace_id: str, position: int, travel: str, event: str) -> None:
+    """Note beside a step which event took it back or made it again: "taken_back_by" or "made_again_by"."""
+    database.execute(
+        "UPDATE history SET step = json_set(step, ?, ?) WHERE workspace = ? AND position = ?",
+        (f"$.{travel}", event, workspace_id, position),
     )
 
 
@@ -85,7 +96,7 @@ def _fetch(database: sqlite3.Connection, column: str, workspace_id: str, positio
     ).fetchone()
     if found is None:
         raise StepRefused(nothing)
-    step = json.loads(found[0])
+    step = {name: value for name, value in json.loads(found[0]).items() if name not in _TRAVELS}
     texts = reading_texts(database, step["put"].get("readings", {}))
     step["put"]["readings"] = {name: json.loads(text) for name, text in texts}
     return step

@@ -31,6 +31,18 @@ LIMITS = {
     "ideality_1": (0.1, 1000.0),
     "ideality_2": (0.1, 1000.0),
 }
+# What a person may type: a narrower choice, because a slip of the hand in a number field has no edge to stop at.
+TYPED_LIMITS = LIMITS | {
+    "photocurrent": (0.0, 1e4),
+    "saturation_current": (1e-200, 1e4),
+    "saturation_current_1": (1e-200, 1e4),
+    "saturation_current_2": (0.0, 1e4),
+    "ideality": (0.1, 20.0),
+    "ideality_1": (0.1, 20.0),
+    "ideality_2": (0.1, 20.0),
+    "series_resistance": (0.0, 1e9),
+    "shunt_resistance": (1e-6, math.inf),
+}
 LARGEST_EXPONENT = 400.0  # Voc/m beyond which no float is left for J0
 # Share of Jsc that the diode has to carry, so that J0 is more than rounding error of a shunt-limited curve.
 SMALLEST_DIODE_SHARE = 1e-9
@@ -57,6 +69,14 @@ class Move:
 
 def no_further(parameter: str, because: str) -> str:
     return f"{SYMBOLS[parameter]} can go no further: {because}."
+
+
+def not_taken(parameter: str, message: str) -> str:
+    """What is said of a typed value in place of the sentence of a move that stopped on the way to it."""
+    stopped = no_further(parameter, "").removesuffix(".")
+    if not message.startswith(stopped):
+        return message
+    return f"{SYMBOLS[parameter]} cannot have this value and stays as it was: {message.removeprefix(stopped)}"
 
 
 def why_locked(parameter: str, followers: Collection[str], hold: Collection[str]) -> str:

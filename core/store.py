@@ -116,7 +116,7 @@ class Store:
             return history.labels(database, workspace_id)
 
     def made(self, workspace_id: str, event: str) -> bool:
-        """Whether a step carried this name under "event": a page that never heard the answer asks again."""
+        """Whether this event made, took back or made again a step: a page that never heard the answer asks again."""
         with self._reading() as database:
             return history.made(database, workspace_id, event)
 
@@ -145,13 +145,16 @@ class Store:
         self._remember(after)
         return after
 
-    def undo(self, workspace_id: str, seen: int) -> Workspace:
-        """Take the last step back. Raises as ``commit``; StepRefused if there is none."""
-        return self._travel(workspace_id, seen, history.taken_back, at=0, move=-1)
+    def undo(self, workspace_id: str, seen: int, *, event: str | None = None) -> Workspace:
+        """Take the last step back. Raises as ``commit``; StepRefused if there is none.
 
-    def redo(self, workspace_id: str, seen: int) -> Workspace:
-        """Make the step that was taken back again. Raises as ``commit``; StepRefused if there is none."""
-        return self._travel(workspace_id, seen, history.made_again, at=1, move=1)
+        The event that asked for it is noted for ``made``.
+        """
+        return self._travel(workspace_id, seen, history.taken_back, "taken_back_by", event, at=0, move=-1)
+
+    def redo(self, workspace_id: str, seen: int, *, event: str | None = None) -> Workspace:
+        """Make the step that was taken back again. Raises and notes as ``undo``."""
+        return self._travel(workspace_id, seen, history.made_again, "made_again_by", event, at=1, move=1)
 
     # Original files
 
@@ -291,6 +294,8 @@ class Store:
         workspace_id: str,
         seen: int,
         fetch: Callable[[sqlite3.Connection, str, int], Step],
+        travel: str,
+        event: str | None,
         *,
         at: int,
         move: int,
@@ -301,6 +306,8 @@ class Store:
             after = apply(before, step)
             tables.write(database, before, after, step["put"])
             tables.advance(database, after, row.cursor + move)
+            if event is not None:
+                history.note(database, workspace_id, row.cursor + at, travel, event)
         self._remember(after)
         return after
 

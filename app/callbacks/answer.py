@@ -6,7 +6,7 @@ from collections.abc import Callable
 from typing import Any
 
 from app.answers import sentence_for
-from core.errors import StoreFailed
+from core.errors import StaleRevision, StoreFailed
 from core.store import Store
 from core.workspace import Workspace
 
@@ -24,12 +24,21 @@ def answered(store: Store, workspace_id: str, change: Change, *, event: str | No
         Returns the workspace after the change and a sentence, or "".
     event : str, optional
         Name of the page's event, given back so that the page knows it was heard.
+
+    Returns
+    -------
+    dict
+        Workspace and revision that now stand, the event, the sentence, and the outcome: ``done``, ``refused``, or
+        ``stale`` where the workspace had moved on, so that what waits in the page behind this event must not be made.
     """
+    outcome = "done"
     try:
         workspace, sentence = change()
     except Exception as error:
         workspace, sentence = _standing(store, workspace_id), sentence_for(error)
-    return {"workspace": workspace.id, "revision": workspace.revision, "event": event, "sentence": sentence}
+        outcome = "stale" if isinstance(error, StaleRevision) else "refused"
+    where = {"workspace": workspace.id, "revision": workspace.revision}
+    return {**where, "event": event, "outcome": outcome, "sentence": sentence}
 
 
 def _standing(store: Store, workspace_id: str) -> Workspace:

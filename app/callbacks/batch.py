@@ -12,7 +12,7 @@ from dash import Dash, Input, Output, State, no_update
 from app.ids import Id
 from app.jobs import Jobs, Status
 from core import steps
-from core.errors import StaleRevision
+from core.errors import StaleRevision, StepRefused
 from core.refine import refine
 from core.refinement import Refinement
 from core.store import Store
@@ -24,20 +24,6 @@ TRIES = 20  # at recording while other steps come in between
 
 
 def register(app: Dash, store: Store, jobs: Jobs) -> None:
-    @app.callback(
-        Output(Id.JOB, "data"),
-        Input(Id.REFINE_ALL, "n_clicks"),
-        State(Id.REVISION, "data"),
-        prevent_initial_call=True,
-    )
-    def start(clicks: int, revision: dict[str, Any]) -> dict[str, Any]:
-        workspace = store.current(revision["workspace"])
-        entries = [entry.id for entry in workspace.in_tray_order()]
-        fits = [workspace.fit(entry) for entry in entries]
-        arguments = [(workspace.sweep(e), fit.model, fit.settings) for e, fit in zip(entries, fits, strict=True)]
-        name = jobs.submit(refine, arguments, label="refining")
-        return {"job": name, "workspace": workspace.id, "entries": entries, "stamps": [stamp(workspace, e) for e in entries]}
-
     @app.callback(
         Output(Id.JOB_CLOCK, "disabled"),
         Output(Id.CANCEL_JOB, "hidden"),
@@ -73,6 +59,21 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
     def cancel(clicks: int, job: dict[str, Any] | None) -> None:
         if job:
             jobs.cancel(job["job"])
+
+
+def begin(store: Store, jobs: Jobs, event: dict[str, Any]) -> dict[str, Any]:
+    """Start refining every sweep of the tray, once, however often the page sends the event; what follows the job.
+
+    A server that was started anew knows nothing of the job, and nothing of it was kept, so it starts once more.
+    """
+    workspace = store.current(event["workspace"])
+    entries = [entry.id for entry in workspace.in_tray_order()]
+    if not entries:
+        raise StepRefused("There is no sweep in the tray yet. Drop a file first.")
+    fits = [workspace.fit(entry) for entry in entries]
+    arguments = [(workspace.sweep(e), fit.model, fit.settings) for e, fit in zip(entries, fits, strict=True)]
+    name = jobs.submit(refine, arguments, label="refining", name=event["event"])
+    return {"job": name, "workspace": workspace.id, "entries": entries, "stamps": [stamp(workspace, e) for e in entries]}
 
 
 def stamp(workspace: Workspace, entry: str) -> str:

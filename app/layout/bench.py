@@ -45,6 +45,9 @@ def bench() -> html.Section:
             ),
             html.Div(
                 className="plot-room",
+                tabIndex="0",
+                role="group",
+                **{"aria-label": "Plot: + and − zoom, Shift with arrow keys pans, 0 shows all, E leaves points out"},
                 children=[
                     dcc.Graph(id=Id.PLOT, config=PLOT_CONFIG, className="plot", responsive=True, figure=empty_figure()),
                     html.Div(id="overlay", className="overlay"),

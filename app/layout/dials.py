@@ -45,8 +45,16 @@ def side() -> html.Aside:
             html.Div(
                 className="fit-row",
                 children=[
-                    html.Button("first guess", id=Id.FIRST_GUESS, className="plain", title="Read parameters off the sweep (G)"),
-                    html.Button("refine", id=Id.REFINE, className="strong", title="Least squares from here (R)"),
+                    html.Button(
+                        "first guess",
+                        id=Id.FIRST_GUESS,
+                        className="plain",
+                        title="Read parameters off the sweep (G)",
+                        **{"data-act": "first-guess"},
+                    ),
+                    html.Button(
+                        "refine", id=Id.REFINE, className="strong", title="Least squares from here (R)", **{"data-act": "refine"}
+                    ),
                 ],
             ),
             html.Div(id="fit-line", className="fit-line"),

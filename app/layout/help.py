@@ -3,19 +3,28 @@
 from dash import html
 
 KEYS = (
-    ("Tab", "from grip to grip, dial to dial"),
-    ("arrow keys", "move the focused handle or slider; with Shift ten times as far"),
+    ("Tab", "from the plot to its grips, from grip to grip, dial to dial"),
+    ("arrow keys", "move the focused handle, with Shift ten times as far; or the focused slider, with Shift keeping Jsc and Voc"),
+    ("PageUp, PageDown", "move the focused handle or slider far"),
+    ("Enter in a number field", "takes the number; with Shift it keeps Jsc and Voc"),
     ("Esc", "give up the drag, or close this sheet"),
     ("G", "first guess"),
     ("R", "refine"),
     ("H", "hold or free the parameter of the focused handle or dial"),
-    ("E", "draw a box over points to leave them out, or to take them back"),
+    ("+ −", "zoom, about the focused handle or the middle of the plot"),
+    ("Shift and arrow keys on the plot", "pan"),
+    ("0", "the whole view"),
+    (
+        "E",
+        "leave points out: ← → (Home, End, PageUp, PageDown) go from point to point, Space leaves one out or takes it back, "
+        "Shift+Space does so with all from the last one to here; or draw a box over points; Esc ends it",
+    ),
     ("X", "on the pair screen: exchange A and B"),
     ("P", "on the losses screen: projector; arrow keys go from device to device"),
     ("1, 2, 3", "strip: residuals, semi-log, local ideality"),
-    ("↑ ↓ in the tray", "next sweep; Space lays it beside the active one; F2 renames; Delete removes"),
+    ("↑ ↓ in the tray", "next sweep; Space lays it beside the active one; F2 renames it, Shift+F2 its device; Delete removes"),
     ("Ctrl+Z, Ctrl+Shift+Z", "undo, redo"),
-    ("wheel, drag, double click", "zoom, pan, whole view"),
+    ("wheel, drag, double click", "zoom, pan, whole view by the pointer"),
 )
 
 CAUTIONS = (

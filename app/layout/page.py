@@ -75,8 +75,8 @@ def _header() -> html.Header:
             html.Button(
                 "workspace", id="workspace-name", className="quiet", **{"data-act": "workspaces", "aria-haspopup": "menu"}
             ),
-            html.Button("undo", id=Id.UNDO, disabled=True, title="Ctrl+Z", className="quiet"),
-            html.Button("redo", id=Id.REDO, disabled=True, title="Ctrl+Shift+Z", className="quiet"),
+            html.Button("undo", id=Id.UNDO, disabled=True, title="Ctrl+Z", className="quiet", **{"data-act": "undo"}),
+            html.Button("redo", id=Id.REDO, disabled=True, title="Ctrl+Shift+Z", className="quiet", **{"data-act": "redo"}),
             html.Button("theme", className="quiet", **{"data-act": "theme"}, title="Light or dark"),
             html.Button("?", className="quiet", **{"data-act": "help", "aria-label": "Help and keys"}),
         ],

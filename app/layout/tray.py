@@ -23,7 +23,13 @@ def tray() -> html.Aside:
             html.Div(
                 className="tray-foot",
                 children=[
-                    html.Button("refine all", id=Id.REFINE_ALL, className="quiet", title="Refine every sweep of the tray"),
+                    html.Button(
+                        "refine all",
+                        id=Id.REFINE_ALL,
+                        className="quiet",
+                        title="Refine every sweep of the tray",
+                        **{"data-act": "refine-all"},
+                    ),
                     html.Button("stop", id=Id.CANCEL_JOB, className="quiet", hidden=True),
                     html.Span(className="progress", id=Id.JOB_LINE, role="status"),
                     html.Span(

@@ -22,7 +22,7 @@ class PatientJobs:
     def __init__(self):
         self.items, self.results, self.failures, self.cancelled = {}, {}, [], []
 
-    def submit(self, function, arguments, *, label):
+    def submit(self, function, arguments, *, label, name):
         self.label, self.function, self.items = label, function, dict(enumerate(arguments))
         self.total = len(arguments)
         return "job"
@@ -65,15 +65,19 @@ def desk(store, jobs):
     return Desk(batch, store, jobs)
 
 
-def started(desk, store, *sweeps):
+def begun(store, jobs, workspace):
+    return batch.begin(store, jobs, {"kind": "refine-all", "workspace": workspace, "event": "e"})
+
+
+def started(jobs, store, *sweeps):
     name = store.first()
     workspace = store.commit(name, steps.add_sweeps(store.current(name), sweeps), 0)
     ids = [next(e.id for e in workspace.entries.values() if e.name == sweep.name) for sweep in sweeps]
-    return desk.start(1, {"workspace": name, "revision": 1}), ids
+    return begun(store, jobs, name), ids
 
 
 def test_progress_is_shown_until_the_results_enter_as_one_step(desk, store, jobs):
-    job, ids = started(desk, store, LIT, REVERSE, OTHER)
+    job, ids = started(jobs, store, LIT, REVERSE, OTHER)
     name = job["workspace"]
     assert set(job["entries"]) == set(ids)
     assert desk.watch(job) == (False, False, True) and desk.watch(None) == (True, True, False)
@@ -84,7 +88,7 @@ def test_progress_is_shown_until_the_results_enter_as_one_step(desk, store, jobs
     jobs.compute()
     line, after, answer = desk.follow(3, job)
     assert (line, after) == ("", None)
-    assert answer == {"workspace": name, "revision": 2, "event": None, "sentence": "3 of 3 sweeps refined."}
+    assert answer == {"workspace": name, "revision": 2, "event": None, "outcome": "done", "sentence": "3 of 3 sweeps refined."}
     workspace = store.current(name)
     assert all(workspace.refined(entry) is not None for entry in ids)
     assert store.history(name).undo == "refine 3 sweeps"
@@ -102,7 +106,7 @@ def test_each_sweep_is_refined_from_its_own_model_and_settings(desk, store, jobs
     held = FitSettings(hold=frozenset({"ideality"}))
     workspace = store.commit(name, steps.set_model(workspace, first, replace(CELL, ideality=1.3)), 1)
     workspace = store.commit(name, steps.set_fit_settings(workspace, first, held), 2)
-    job = desk.start(1, {"workspace": name, "revision": 3})
+    job = begun(store, jobs, name)
     jobs.compute()
     desk.follow(1, job)
     fits = store.current(name).fits
@@ -111,7 +115,7 @@ def test_each_sweep_is_refined_from_its_own_model_and_settings(desk, store, jobs
 
 
 def test_what_could_not_be_refined_is_counted_with_the_first_reason(desk, store, jobs):
-    job, (good, few) = started(desk, store, LIT, sweep_of(CELL, "few", device="F", points=3))
+    job, (good, few) = started(jobs, store, LIT, sweep_of(CELL, "few", device="F", points=3))
     jobs.compute()
     sentence = desk.follow(1, job)[2]["sentence"]
     assert sentence.startswith("1 of 2 sweeps refined. 1 could not be; the first said: ") and sentence.endswith(".")
@@ -120,7 +124,7 @@ def test_what_could_not_be_refined_is_counted_with_the_first_reason(desk, store,
 
 
 def test_stopping_keeps_what_was_done(desk, store, jobs):
-    job, _ = started(desk, store, LIT, REVERSE, OTHER)
+    job, _ = started(jobs, store, LIT, REVERSE, OTHER)
     jobs.compute(1)
     desk.cancel(1, job)
     assert jobs.cancelled == ["job"]
@@ -131,7 +135,7 @@ def test_stopping_keeps_what_was_done(desk, store, jobs):
 
 
 def test_a_sweep_that_left_the_tray_meanwhile_is_left_out(desk, store, jobs):
-    job, (lit, other) = started(desk, store, LIT, OTHER)
+    job, (lit, other) = started(jobs, store, LIT, OTHER)
     name = job["workspace"]
     store.commit(name, steps.remove_entries(store.current(name), [lit]), 1)
     jobs.compute()
@@ -141,7 +145,7 @@ def test_a_sweep_that_left_the_tray_meanwhile_is_left_out(desk, store, jobs):
 
 @pytest.mark.parametrize("change", [{"area": 0.2}, {"temperature": 310.0}, {"series_cells": 2}], ids=str)
 def test_a_result_under_conditions_that_no_longer_hold_is_not_laid_over_the_sweep(desk, store, jobs, change):
-    job, (lit, other) = started(desk, store, LIT, OTHER)
+    job, (lit, other) = started(jobs, store, LIT, OTHER)
     name = job["workspace"]
     jobs.compute()
     workspace = store.commit(name, steps.set_conditions(store.current(name), lit, **change), 1)
@@ -152,7 +156,7 @@ def test_a_result_under_conditions_that_no_longer_hold_is_not_laid_over_the_swee
 
 
 def test_settings_changed_meanwhile_are_not_overwritten(desk, store, jobs):
-    job, (lit, _) = started(desk, store, LIT, OTHER)
+    job, (lit, _) = started(jobs, store, LIT, OTHER)
     name, robust = job["workspace"], FitSettings(loss="robust")
     jobs.compute()
     store.commit(name, steps.set_fit_settings(store.current(name), lit, robust), 1)
@@ -161,7 +165,7 @@ def test_settings_changed_meanwhile_are_not_overwritten(desk, store, jobs):
 
 
 def test_steps_that_come_in_between_are_waited_out(desk, store, jobs, monkeypatch):
-    job, (lit, other) = started(desk, store, LIT, OTHER)
+    job, (lit, other) = started(jobs, store, LIT, OTHER)
     name, commit, refusals = job["workspace"], store.commit, iter([True, True, False])
 
     def busy(workspace_id, step, seen):
@@ -175,8 +179,8 @@ def test_steps_that_come_in_between_are_waited_out(desk, store, jobs, monkeypatc
     assert set(store.current(name).fits) == {lit, other}
 
 
-def test_a_job_that_the_server_no_longer_knows_ends_with_a_sentence(desk, store):
-    job, _ = started(desk, store, LIT)
+def test_a_job_that_the_server_no_longer_knows_ends_with_a_sentence(desk, store, jobs):
+    job, _ = started(jobs, store, LIT)
     line, after, answer = desk.follow(1, {**job, "job": "gone"})
     assert (line, after) == ("", None) and answer["revision"] == 1
     assert answer["sentence"].endswith("Refine again.")

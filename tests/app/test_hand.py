@@ -87,12 +87,105 @@ def test_what_changes_nothing_is_no_step_but_says_why(lit):
     assert step_for(workspace, same) == (None, "")
 
 
-def test_a_move_stopped_at_an_edge_is_a_step_and_a_sentence(lit):
+def test_a_slider_stopped_at_an_edge_is_a_step_and_a_sentence(lit):
     workspace, entry = lit
-    event = {"kind": "field", "entry": entry, "parameter": "series_resistance", "text": "-1"}
+    event = {"kind": "dial", "entry": entry, "parameter": "shunt_resistance", "fraction": 0.0, "keep": True}
     changed, sentence = after(workspace, event)
-    assert changed.fit(entry).model.series_resistance == 0.0
-    assert sentence.startswith("Rs ") and sentence.endswith(".")
+    assert changed.fit(entry).model.shunt_resistance > dial_ranges(LIT)["shunt_resistance"].value(0.0)
+    assert sentence.startswith("Rsh can go no further: ") and sentence.endswith(".")
+
+
+@pytest.mark.parametrize(
+    ("parameter", "text", "says"),
+    [
+        ("photocurrent", "-3", "from 0 to 1e+07 mA cm⁻²"),
+        ("photocurrent", "∞", "from 0 to 1e+07 mA cm⁻²"),
+        ("photocurrent", "1,000", "can mean 1.000 or 1000"),
+        ("photocurrent", "22 mA", "takes a number in mA cm⁻²"),
+        ("series_resistance", "-3", "from 0 to 1e+09 Ω cm²"),
+        ("series_resistance", "1e999", "too large"),
+        ("saturation_current", "-3", "from 1e-197 to 1e+07 mA cm⁻²"),
+        ("saturation_current", "1e-400", "too small"),
+        ("shunt_resistance", "0", "at least 1e-06 Ω cm²"),
+        ("shunt_resistance", "1e999", "too large"),
+        ("shunt_resistance", "1,234", "can mean 1.234 or 1234"),
+        ("ideality", "-3", "from 0.1 to 20"),
+        ("ideality", "21", "cells in series"),
+        ("ideality", "", "left empty"),
+    ],
+)
+@pytest.mark.parametrize("keep", [False, True])
+def test_a_typed_value_beyond_what_can_be_is_refused_with_the_limits_and_changes_nothing(lit, parameter, text, says, keep):
+    workspace, entry = lit
+    with pytest.raises(ConditionRefused) as refused:
+        step_for(workspace, {"kind": "field", "entry": entry, "parameter": parameter, "text": text, "keep": keep})
+    assert says in str(refused.value) and "can go no further" not in str(refused.value)
+
+
+def test_a_typed_value_that_jsc_and_voc_do_not_allow_is_not_moved_to_one_that_they_do(lit):
+    workspace, entry = lit
+    event = {"kind": "field", "entry": entry, "parameter": "series_resistance", "text": "500", "keep": True}
+    step, sentence = step_for(workspace, event)
+    assert step is None
+    assert sentence == "Rs cannot have this value and stays as it was: the drop Jsc·Rs has to stay below Voc."
+
+
+def test_a_typed_value_may_name_its_unit(lit):
+    workspace, entry = lit
+    for parameter, text, value in (("photocurrent", "21 mA/cm²", 0.021), ("shunt_resistance", "900 ohm cm2", 900.0)):
+        changed, _ = after(workspace, {"kind": "field", "entry": entry, "parameter": parameter, "text": text})
+        assert getattr(changed.fit(entry).model, parameter) == pytest.approx(value)
+
+
+@pytest.mark.parametrize(
+    ("name", "text", "field", "value"),
+    [
+        ("temperature", "298 K", "temperature", 298.0),
+        ("temperature", "30 °C", "temperature", 303.15),
+        ("area", "9 mm2", "area", 0.09),
+        ("area", "0,250 cm²", "area", 0.25),
+        ("irradiance", "500 W/m2", "irradiance", 0.05),
+        ("series_cells", "4 cells", "series_cells", 4),
+    ],
+)
+def test_a_condition_may_name_its_unit_or_one_that_it_is_read_from(lit, name, text, field, value):
+    workspace, entry = lit
+    changed, _ = after(workspace, {"kind": "condition", "entry": entry, "name": name, "text": text})
+    assert getattr(changed.conditions(entry), field) == pytest.approx(value)
+
+
+@pytest.mark.parametrize(
+    ("name", "text", "says"),
+    [
+        ("area", "1e9", "from 1e-08 to 1e+06 cm²"),
+        ("area", "-1", "from 1e-08 to 1e+06 cm²"),
+        ("area", "1,000", "can mean"),
+        ("area", "3 mA", "takes a number in cm²"),
+        ("temperature", "-300", "from -223 to 726 °C"),
+        ("temperature", "25 F", "takes a number in °C"),
+        ("temperature", "", "left empty"),
+        ("irradiance", "1e999", "too large"),
+        ("irradiance", "-5", "from 0 to 1e+07 mW cm⁻²"),
+        ("series_cells", "0", "from 1 to 1e+04"),
+        ("series_cells", "1.5", "whole number"),
+    ],
+)
+def test_a_condition_beyond_what_can_be_is_refused_with_its_limits(lit, name, text, says):
+    workspace, entry = lit
+    with pytest.raises(ConditionRefused) as refused:
+        step_for(workspace, {"kind": "condition", "entry": entry, "name": name, "text": text})
+    assert says in str(refused.value)
+
+
+def test_zero_irradiance_turns_a_sweep_dark_and_says_so_with_the_way_back(lit):
+    workspace, entry = lit
+    dark, sentence = after(workspace, {"kind": "condition", "entry": entry, "name": "irradiance", "text": "0"})
+    assert not dark.sweep(entry).lit
+    assert "dark sweep" in sentence and "undo" in sentence and "measured in" in sentence
+    light, _ = after(dark, {"kind": "condition", "entry": entry, "name": "lit", "text": "light"})
+    again, sentence = after(light, {"kind": "condition", "entry": entry, "name": "irradiance", "text": "100"})
+    assert again.sweep(entry).lit and again.conditions(entry).irradiance == pytest.approx(0.1) and sentence == ""
+    assert after(dark, {"kind": "rename-sweep", "entry": entry, "text": "dark"})[1] == ""
 
 
 def test_a_step_is_called_what_the_user_did(lit):

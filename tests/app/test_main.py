@@ -292,6 +292,38 @@ def test_a_folder_that_cannot_be_used_is_told_and_ends_with_2(tmp_path, capsys):
     assert main(["--keep", str(tmp_path / "file" / "work"), "--no-browser"]) == 2
     told = capsys.readouterr()
     assert told.out == "" and "--keep" in told.err and "Traceback" not in told.err
+    assert f"{tmp_path / 'file'} is a file and not a folder." in told.err and "space" not in told.err
+
+
+@pytest.mark.parametrize(
+    ("code", "says"),
+    [
+        (errno.EACCES, "you may not write in {top}. Mend its rights"),
+        (errno.EROFS, "you may not write in {top}. Mend its rights"),
+        (errno.ENOSPC, "the disk is full. Free some space"),
+        (errno.ENAMETOOLONG, "no folder of that name"),
+        (errno.EIO, "the system says “"),
+    ],
+)
+def test_a_folder_that_cannot_be_made_is_told_with_the_reason_and_its_remedy(tmp_path, capsys, monkeypatch, code, says):
+    def refused(*_args, **_options):
+        raise OSError(code, os.strerror(code))
+
+    with monkeypatch.context() as patch:
+        patch.setattr(Path, "mkdir", refused)
+        assert main(["--keep", str(tmp_path / "new" / "work"), "--no-browser"]) == 2
+    told = capsys.readouterr().err
+    assert says.format(top=tmp_path) in told and told.rstrip().endswith("--keep.")
+
+
+@pytest.mark.parametrize("folder", ["", "  "])
+def test_a_folder_without_a_name_is_refused_and_never_the_current_one(folder, tmp_path, capsys, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    with pytest.raises(SystemExit) as end:
+        main(["--keep", folder, "--no-browser"])
+    assert end.value.code == 2
+    assert "no folder is named" in capsys.readouterr().err
+    assert list(tmp_path.iterdir()) == []
 
 
 def test_an_unusable_network_address_is_told_and_ends_with_2(tmp_path, capsys):
@@ -326,12 +358,13 @@ def test_the_version_is_told(capsys):
     assert re.match(r"Sweepbench \d", capsys.readouterr().out)
 
 
-@pytest.mark.parametrize("port", ["-1", "65536", "door"])
+@pytest.mark.parametrize("port", ["-1", "65536", "door", "", "8417.5", "²"])
 def test_a_port_that_is_none_is_refused(port, capsys):
     with pytest.raises(SystemExit) as end:
         main(["--port", port])
     assert end.value.code == 2
-    assert "--port" in capsys.readouterr().err
+    told = capsys.readouterr().err
+    assert f"argument --port: “{port}” is not a port. Give a whole number from 1 to 65535" in told
 
 
 LOGGED = """

@@ -66,7 +66,7 @@ def hold(bench, revision, event, tries=1):
 def test_an_answer_that_got_lost_is_given_again_and_nothing_is_made_twice(store, visitor, bench):
     first = visitor.hand(rename(bench, "one", 1, "e1"))
     again = visitor.hand(rename(bench, "one", 1, "e1", tries=2))
-    assert first == again == {"workspace": bench[0], "revision": 2, "event": "e1", "sentence": ""}
+    assert first == again == {"workspace": bench[0], "revision": 2, "event": "e1", "outcome": "done", "sentence": ""}
     assert store.undo(bench[0], 2).entries[bench[1]].name != "one"
     assert store.history(bench[0]).undo == "add sweep"
 
@@ -101,10 +101,47 @@ def test_a_repeated_step_that_was_undone_meanwhile_stays_undone(store, visitor, 
     assert store.history(bench[0]).redo is not None
 
 
+def test_an_undo_sent_twice_takes_one_step_back_and_a_redo_makes_one_again(store, visitor, bench):
+    workspace, entry = bench
+    visitor.hand(rename(bench, "one", 1, "r1"))
+    visitor.hand(rename(bench, "two", 2, "r2"))
+    for kind, revision, name in (("undo", 3, "one"), ("redo", 4, "two")):
+        event = {"kind": kind, "workspace": workspace, "revision": revision, "event": f"travel {kind}"}
+        first, again = visitor.hand(event), visitor.hand({**event, "tries": 2})
+        assert first == again and (first["revision"], first["outcome"]) == (revision + 1, "done")
+        assert store.current(workspace).entries[entry].name == name
+        assert visitor.hand({**event, "event": "late"})["outcome"] == "stale"
+
+
+def test_a_fit_sent_twice_is_one_step(store, visitor, bench):
+    workspace, entry = bench
+    for revision, kind in ((1, "refine"), (2, "first-guess")):
+        event = {"kind": kind, "entry": entry, "workspace": workspace, "revision": revision, "event": f"fit {kind}"}
+        first, again = visitor.hand(event), visitor.hand({**event, "tries": 2})
+        assert first == again and first["revision"] == revision + 1
+    assert store.current(workspace).refined(entry) is None
+    assert store.undo(workspace, 3).refined(entry) is not None
+    assert store.undo(workspace, 4).refined(entry) is None
+
+
+def test_a_fit_without_a_sweep_is_refused_with_a_sentence(visitor):
+    empty = visitor.new_workspace(visitor.first(), "empty")
+    for kind in ("first-guess", "refine", "refine-all"):
+        answer = visitor.hand({"kind": kind, "entry": None, "workspace": empty, "revision": 0})
+        assert answer["outcome"] == "refused" and "Drop a file first" in answer["sentence"]
+
+
+def test_refining_the_tray_asked_for_twice_is_one_job(visitor, bench):
+    event = {"kind": "refine-all", "workspace": bench[0], "revision": 1, "event": "all of it"}
+    answers = [visitor.call("hand.data", {"hand.data": {**event, "tries": tries}})["response"] for tries in (1, 2)]
+    assert answers[0] == answers[1] and answers[0]["job"]["data"]["job"] == "all of it"
+
+
 def test_a_stale_step_is_refused_and_acknowledged(store, visitor, bench):
     visitor.hand(hold(bench, 1, "other"))
     answer = visitor.hand(rename(bench, "late", 1, "e6", tries=2))
     assert "changed elsewhere" in answer["sentence"] and (answer["revision"], answer["event"]) == (2, "e6")
+    assert answer["outcome"] == "stale", "what waits in the page behind it must not be made"
     assert store.current(bench[0]).entries[bench[1]].name != "late"
 
 
@@ -142,7 +179,7 @@ def test_a_step_on_a_workspace_that_was_deleted_is_answered_with_the_one_to_go_o
     """Without an answer the page would send it for ever, and every later step would wait behind it."""
     store.delete(bench[0])
     answer = visitor.hand(rename(bench, "gone", 1, "e9"))
-    assert answer["event"] == "e9" and "deleted" in answer["sentence"]
+    assert (answer["event"], answer["outcome"]) == ("e9", "refused") and "deleted" in answer["sentence"]
     assert answer["workspace"] == store.first() != bench[0]
     store.restore(bench[0])
 
@@ -193,17 +230,21 @@ def test_a_bug_in_a_screen_is_told_and_logged_and_the_screen_comes_back(visitor,
     assert ask()["response"][output]["data"]
 
 
-@pytest.mark.parametrize("place", ["core.store.Store.undo", "app.callbacks.fits.guess_step", "app.callbacks.workspaces.ERRANDS"])
-def test_a_bug_behind_a_button_is_told_and_the_page_hears_where_it_stands(visitor, bench, monkeypatch, caplog, place):
+@pytest.mark.parametrize(
+    ("place", "trigger", "event"),
+    [
+        ("core.store.Store.undo", "hand.data", {"kind": "undo"}),
+        ("app.hand.guess_step", "hand.data", {"kind": "first-guess"}),
+        ("app.callbacks.hand.begin", "hand.data", {"kind": "refine-all"}),
+        ("app.callbacks.workspaces.ERRANDS", "errand.data", {"kind": "new", "name": "x"}),
+    ],
+)
+def test_a_bug_behind_a_button_is_told_and_the_page_hears_where_it_stands(visitor, bench, monkeypatch, caplog, place, trigger, event):
     seen = {"workspace": bench[0], "revision": 1}
+    event = {**event, **seen, "entry": bench[1], "event": "e"}
     with monkeypatch.context() as patch:
         patch.setattr(place, {"new": broken} if place.endswith("ERRANDS") else broken)
-        trigger, value = {
-            "core.store.Store.undo": ("undo.n_clicks", 1),
-            "app.callbacks.fits.guess_step": ("first-guess.n_clicks", 1),
-            "app.callbacks.workspaces.ERRANDS": ("errand.data", {"kind": "new", "name": "x"}),
-        }[place]
-        answer = visitor.call(trigger, {trigger: value, "revision.data": seen, "view.data": {}})["response"]["revision"]["data"]
+        answer = visitor.call(trigger, {trigger: event, "revision.data": seen, "view.data": {}})["response"]["revision"]["data"]
     assert (answer["workspace"], answer["revision"]) == (bench[0], 1) and "went wrong" in answer["sentence"]
     assert "ZeroDivisionError" in caplog.text
 

@@ -127,13 +127,61 @@ def test_with_uncertainty_shows_two_digits_of_it():
         ("1\u00a0000", 1000.0),
         ("∞", math.inf),
         ("inf", math.inf),
+        ("0,250", 0.25),
+        ("1,0000", 1.0),
+        ("1,25", 1.25),
+        ("1,234e-9", 1.234e-9),
+        ("9 cm²", 9.0),
+        ("9cm^2", 9.0),
+        ("1,5·10⁻² cm2", 0.015),
     ],
 )
 def test_a_typed_number_is_understood_in_every_usual_spelling(typed, value):
-    assert parse_number(typed, "Area") == value
+    assert parse_number(typed, "Area", "cm²") == value
 
 
-@pytest.mark.parametrize("typed", ["", "n/a", "nan", "1,2,3", "1,000.5", "1.000,5", "0x10", "5²", "12 mV", "--3", "·10⁻³"])
+@pytest.mark.parametrize("typed", ["1,000", "-1,234", "12,345", "999,000", "1,000 cm²"])
+def test_what_may_separate_thousands_or_decimals_is_asked_about(typed):
+    with pytest.raises(ConditionRefused, match=r"^Area: “.*” can mean \d+\.\d{3} or \d{4,6}\. Type it like"):
+        parse_number(typed, "Area", "cm²")
+
+
+@pytest.mark.parametrize("typed", ["1e999", "-1e999", "1e-400", "3,5e-999"])
+def test_a_number_that_the_program_cannot_carry_is_neither_infinity_nor_zero(typed):
+    with pytest.raises(ConditionRefused, match="too (large|small)"):
+        parse_number(typed, "Area")
+
+
+@pytest.mark.parametrize(
+    ("unit", "spellings"),
+    [
+        ("mA cm⁻²", ["mA/cm2", "mA/cm²", "mA cm^-2", "mA·cm⁻²", "mAcm-2"]),
+        ("mW cm⁻²", ["mW/cm²", "mW cm-2"]),
+        ("Ω cm²", ["ohm cm2", "Ohm·cm²", "\u2126 cm^2"]),
+        ("°C", ["C", "°C", "degC"]),
+        ("%", ["%", "percent"]),
+    ],
+)
+def test_the_unit_of_a_field_may_be_spelt_in_every_usual_way(unit, spellings):
+    for spelt in spellings:
+        assert parse_number(f"2.5 {spelt}", "x", unit) == 2.5
+
+
+@pytest.mark.parametrize("unit", ["", "mA cm⁻²", "°C"])
+def test_another_unit_is_refused_with_the_one_that_the_field_takes(unit):
+    with pytest.raises(ConditionRefused, match=f"takes a.* {unit or 'plain number'}"):
+        parse_number("22 mV", "x", unit)
+
+
+def test_limits_are_named_in_the_unit_of_the_field():
+    assert parse_number("20", "n", limits=(0.1, 20)) == 20
+    with pytest.raises(ConditionRefused, match=r"^n has to be from 0.1 to 20, not “20.1”; it stays as it was\. Mind it\.$"):
+        parse_number("20.1", "n", limits=(0.1, 20), remedy="Mind it.")
+    with pytest.raises(ConditionRefused, match="from 0 to 5 eV"):
+        parse_number("inf", "gap", "eV", limits=(0, 5))
+
+
+@pytest.mark.parametrize("typed", ["", "n/a", "1 2", "nan", "1,2,3", "1,000.5", "1.000,5", "0x10", "5²", "12 mV", "--3", "·10⁻³"])
 def test_what_is_no_number_is_told_with_what_it_is_for(typed):
     with pytest.raises(ConditionRefused, match=r"^Area: .*Type it like .*\.$"):
         parse_number(typed, "Area")

@@ -53,7 +53,7 @@ def test_a_new_workspace_is_empty_and_opens_the_next_time_too(desk, store, here)
 
 def test_opening_goes_there_with_the_revision_that_stands(desk, store, here):
     other = store.create("Tuesday")
-    assert errand(desk, other, "open", workspace=here) == {"workspace": here, "revision": 1, "event": None, "sentence": ""}
+    assert errand(desk, other, "open", workspace=here) == {"workspace": here, "revision": 1, "event": None, "outcome": "done", "sentence": ""}
     assert store.first() == here
 
 

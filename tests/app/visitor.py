@@ -103,11 +103,9 @@ class Visitor:
         """Send an event of the hand as the outbox does; the revision that answers it."""
         return self.call("hand.data", {"hand.data": {"event": uuid.uuid4().hex, "tries": 1, **event}})["response"]["revision"]["data"]
 
-    def travel(self, button: str, workspace: str, revision: int) -> dict[str, Any]:
-        """Press undo or redo."""
-        seen = {"workspace": workspace, "revision": revision}
-        answer = self.call(f"{button}.n_clicks", {f"{button}.n_clicks": 1, "revision.data": seen})
-        return answer["response"]["revision"]["data"]
+    def travel(self, kind: str, workspace: str, revision: int) -> dict[str, Any]:
+        """Undo or redo, as the outbox asks for it."""
+        return self.hand({"kind": kind, "workspace": workspace, "revision": revision})
 
     def new_workspace(self, here: str, name: str) -> str:
         values = {"errand.data": {"kind": "new", "name": name}, "revision.data": {"workspace": here, "revision": 0}}

@@ -64,7 +64,7 @@ def test_an_area_rescales_the_model_with_the_points_and_confirming_takes_the_mar
 
     area.fill("-3")
     area.press("Enter")
-    tab.until("says", "area")
+    tab.until("says", "Area has to be from")
     expect(area).to_have_value("0.25")
     assert tab.sweep.area == 0.25
 

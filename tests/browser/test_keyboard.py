@@ -1,11 +1,22 @@
-"""Everything that the mouse can do, by keys; and the fields and switches of the dials."""
+"""Everything that the mouse can do on the bench and in the tray, by keys; and the fields and switches of the dials."""
 
+import json
+import math
+
+import numpy as np
 import pytest
 from playwright.sync_api import expect
 
 from core.dials import dial_ranges
 from core.diode import PARAMETERS
-from tests.browser.loading import FEW, LIT, LIT_MODEL, add_sample
+from tests.browser.loading import (
+    DARK,
+    DARK_MODEL,
+    FEW,
+    LIT,
+    LIT_MODEL,
+    add_sample,
+)
 from tests.browser.tab import Tab
 
 
@@ -90,6 +101,155 @@ def test_a_slider_moves_by_keys_and_a_field_takes_a_number(lit):
     lit.assert_agreement()
 
 
+def test_shift_with_the_keys_of_a_slider_keeps_jsc_and_voc_and_without_it_they_go(lit):
+    slider = lit.dial("series_resistance").locator("input[type=range]")
+    slider.focus()
+    before = lit.model.landmarks()
+    with lit.one_change():
+        slider.press("Shift+ArrowRight")
+    kept = lit.model.landmarks()
+    assert lit.model.series_resistance > LIT_MODEL.series_resistance
+    assert (kept.jsc, kept.voc) == (pytest.approx(before.jsc, rel=1e-6), pytest.approx(before.voc, rel=1e-6))
+    assert lit.model.saturation_current != LIT_MODEL.saturation_current, "it followed"
+    lit.assert_agreement()
+    follower = lit.model.saturation_current
+    with lit.one_change():
+        slider.press("ArrowRight")
+    assert lit.model.saturation_current == follower
+    lit.assert_agreement()
+
+
+def test_shift_with_enter_keeps_jsc_and_voc_for_a_number_and_leaving_the_field_does_not(lit):
+    field = lit.dial("ideality").locator("input[type=text]")
+    before = lit.model.landmarks()
+    field.fill("1.8")
+    with lit.one_change():
+        field.press("Shift+Enter")
+    kept = lit.model.landmarks()
+    assert lit.model.ideality == 1.8
+    assert (kept.jsc, kept.voc) == (pytest.approx(before.jsc, rel=1e-6), pytest.approx(before.voc, rel=1e-6))
+    follower = lit.model.saturation_current
+    field.fill("1.7")
+    with lit.one_change():
+        field.press("Shift+Tab")
+    assert (lit.model.ideality, lit.model.saturation_current) == (1.7, follower)
+    lit.assert_agreement()
+
+
+RANGES = "() => JSON.stringify([sweepbench.graph().layout.xaxis.range, sweepbench.graph().layout.yaxis.range])"
+
+
+def ranges(tab: Tab) -> tuple[list[float], list[float]]:
+    return tuple(json.loads(tab.page.evaluate(RANGES)))
+
+
+def press_and_see(tab: Tab, key: str) -> tuple[list[float], list[float]]:
+    """Press a key that changes the view, wait until it has, and return the new ranges."""
+    before = tab.page.evaluate(RANGES)
+    tab.page.keyboard.press(key)
+    tab.until("ranged", before)
+    tab.settle()
+    return ranges(tab)
+
+
+def width(span: list[float]) -> float:
+    return span[1] - span[0]
+
+
+@pytest.mark.parametrize(("name", "model"), [(LIT, LIT_MODEL), (DARK, DARK_MODEL)], ids=["lit", "dark, logarithmic"])
+def test_zoom_pan_and_whole_view_by_keys(running, workspace, open_tab, name, model):
+    add_sample(running.store, workspace, name, model)
+    tab = open_tab()
+    start = ranges(tab)
+    closer = press_and_see(tab, "+")
+    for now, before in zip(closer, start, strict=True):
+        assert width(now) == pytest.approx(0.8 * width(before)) and sum(now) == pytest.approx(sum(before))
+    tab.assert_agreement()
+
+    tab_to(tab, ".plot-room")
+    for key, moved in (("Shift+ArrowRight", (0.1, 0)), ("Shift+ArrowUp", (0, 0.1)), ("Shift+ArrowLeft", (-0.1, 0)), ("Shift+ArrowDown", (0, -0.1))):
+        before = ranges(tab)
+        after = press_and_see(tab, key)
+        for now, then, share in zip(after, before, moved, strict=True):
+            assert np.subtract(now, then) == pytest.approx([share * width(then)] * 2, abs=1e-9)
+        tab.assert_agreement()
+    assert press_and_see(tab, "-") == tuple(pytest.approx(span) for span in start)
+
+    # Zoomed at a grip, the grip stays where it is.
+    grip = next(parameter for parameter in ("series_resistance", "saturation_current") if parameter in tab.grips_in_sight())
+    tab_to(tab, f".grip[data-parameter={grip}]")
+    place = tab.grip(grip)
+    press_and_see(tab, "+")
+    assert tab.grip(grip).distance(place) < 1
+    tab.assert_agreement()
+    tab.page.keyboard.press("0")
+    tab.until("ranges", json.dumps(start, separators=(",", ":")))
+    tab.settle()
+    tab.assert_agreement()
+
+
+def test_points_are_left_out_and_taken_back_by_keys(lit):
+    keyboard, sweep = lit.page.keyboard, lit.sweep
+    order = np.argsort(sweep.voltage)
+    marker = lit.find(".point-marker")
+    told = marker.locator("span")
+
+    def excluded() -> set[int]:
+        return set(lit.stored.fit(lit.entry).settings.excluded)
+
+    keyboard.press("e")
+    expect(told).to_have_text(f"1 of {len(order)}: {sweep.voltage[order[0]]:.4f} V, {1e3 * sweep.current[order[0]]:#.4g} mA cm⁻², used".replace("-", "−"))
+    for _ in range(3):
+        keyboard.press("ArrowRight")
+    keyboard.press("PageUp")
+    keyboard.press("ArrowLeft")
+    expect(told).to_contain_text(f"13 of {len(order)}")
+    with lit.one_change():
+        keyboard.press("Space")
+    assert excluded() == {int(order[12])}
+    expect(told).to_contain_text("left out")
+    box = marker.bounding_box()
+    place = lit.pixel(sweep.voltage[order[12]], sweep.current[order[12]] * lit.factor())
+    assert math.hypot(box["x"] - place.x, box["y"] - place.y) < 1, "the marker stands on its point"
+
+    for _ in range(4):
+        keyboard.press("ArrowRight")
+    with lit.one_change():
+        keyboard.press("Shift+Space")
+    assert excluded() == {int(one) for one in order[12:17]}
+    with lit.one_change():
+        keyboard.press("Space")
+    assert excluded() == {int(one) for one in order[12:16]}, "a point that is out is taken back"
+
+    keyboard.press("End")
+    expect(told).to_contain_text(f"{len(order)} of {len(order)}")
+    press_and_see(lit, "+")
+    box, place = marker.bounding_box(), lit.pixel(sweep.voltage[order[-1]], sweep.current[order[-1]] * lit.factor())
+    assert math.hypot(box["x"] - place.x, box["y"] - place.y) < 1, "it follows the zoom"
+    keyboard.press("Escape")
+    expect(marker).to_have_count(0)
+    revision = lit.stored.revision
+    keyboard.press("Space")
+    keyboard.press("ArrowLeft")
+    lit.settle()
+    assert lit.stored.revision == revision
+    with lit.one_change():
+        keyboard.press("Control+z")
+    assert excluded() == {int(one) for one in order[12:17]}
+
+
+def test_every_key_of_the_help_sheet_is_listed_and_the_sheet_opens_and_closes_by_keys(lit):
+    sheet = lit.find(".help")
+    button = lit.find("[data-act=help]").first
+    button.focus()
+    button.press("Enter")
+    expect(sheet).to_be_visible()
+    listed = sheet.locator("dt").all_inner_texts()
+    assert {"+ −", "0", "E", "Shift and arrow keys on the plot", "Ctrl+Z, Ctrl+Shift+Z"} <= set(listed)
+    lit.page.keyboard.press("Escape")
+    expect(sheet).to_be_hidden()
+
+
 def test_a_held_parameter_locks_its_grip_and_those_that_it_would_have_to_follow(lit):
     switch = lit.dial("saturation_current").locator(".hold")
     with lit.one_change():
@@ -168,6 +328,12 @@ def test_the_tray_by_keys(three):
         keyboard.press("Enter")
     assert three.stored.entries[order[-2]].name == "brine side"
     three.until("row_named", "brine side")
+
+    keyboard.press("Shift+F2")
+    keyboard.type("Brine")
+    with three.one_change():
+        keyboard.press("Enter")
+    assert three.stored.devices[three.stored.entries[order[-2]].device].name == "Brine"
 
     keyboard.press("Home")
     three.until("active", order[0])

@@ -1,6 +1,6 @@
 """Reload, a second tab, and a server that goes away and comes back."""
 
-from contextlib import closing
+from contextlib import closing, contextmanager
 
 import pytest
 
@@ -120,6 +120,143 @@ def test_a_server_lost_in_a_drag_is_told_and_survived_and_the_step_arrives(progr
     finally:
         tab.close()
     assert tab.troubles == []
+
+
+def typed(tab: Tab, parameter: str, text: str) -> None:
+    field = tab.dial(parameter).locator("input[type=text]")
+    field.fill(text)
+    field.press("Enter")
+
+
+@pytest.fixture
+def away(program, context, tmp_path):
+    """A tab whose server is gone, and what starts it again at the same place."""
+    with serve(tmp_path) as running:
+        workspace = running.store.create("A piece of work")
+        add_sample(running.store, workspace, LIT, LIT_MODEL)
+        tab = Tab(context.new_page(), running.store, workspace)
+        tab.forgiven.extend(GONE)
+        tab.open(running.entry_url)
+        port = running.door.port
+
+    @contextmanager
+    def back():
+        with serve(tmp_path, port) as again:
+            assert again.door.port == port
+            tab.store = again.store
+            yield again
+
+    yield tab, back
+    tab.close()
+    assert tab.troubles == []
+
+
+def test_all_that_is_done_while_the_server_is_away_is_made_in_order_and_once(away):
+    tab, back = away
+    seen = tab.page.evaluate("sweepbench.stamp().revision")
+    typed(tab, "series_resistance", "4.5")
+    tab.until("saved_line", "not saved")
+    typed(tab, "ideality", "1.7")
+    tab.button("refine").click()
+    tab.page.keyboard.press("Control+z")
+    tab.page.keyboard.press("h")  # nothing is focused that could be held
+    assert tab.page.evaluate("sweepbench.unsent()") == 4
+    with back():
+        tab.until("moved", seen + 3)
+        tab.settle()
+        assert tab.stored.revision == seen + 4, "two fields, a refinement, and that taken back; each once"
+        assert (tab.model.series_resistance, tab.model.ideality) == (4.5, 1.7)
+        assert tab.stored.refined(tab.entry) is None
+        assert tab.text("#saved-line") == ""
+        tab.assert_agreement()
+        with tab.one_change():
+            tab.page.keyboard.press("Control+Shift+Z")
+        assert tab.stored.refined(tab.entry) is not None, "the refinement was made and taken back, not left out"
+
+
+def test_undo_of_a_change_that_was_refused_takes_back_nothing_else(away):
+    tab, back = away
+    with back():
+        with tab.one_change():
+            typed(tab, "ideality", "1.7")
+    seen = tab.page.evaluate("sweepbench.stamp().revision")
+    typed(tab, "series_resistance", "-3")
+    tab.page.keyboard.press("Control+z")
+    assert tab.page.evaluate("sweepbench.unsent()") == 2
+    tab.until("saved_line", "not saved")
+    with back():
+        tab.until("says", "has to be from 0 to")
+        tab.settle()
+        assert (tab.stored.revision, tab.model.ideality) == (seen, 1.7)
+
+
+def test_what_waits_behind_a_change_that_came_too_late_is_given_up_and_told(away):
+    tab, back = away
+    typed(tab, "series_resistance", "4.5")
+    tab.page.keyboard.press("Control+z")
+    tab.until("saved_line", "not saved")
+    tab.page.route("**/_dash-update-component", lambda route: route.abort())
+    with back() as again:
+        workspace = again.store.current(tab.workspace_id)
+        another = steps.set_model(workspace, next(iter(workspace.entries)), LIT_MODEL.scaled(0.9))
+        again.store.commit(workspace.id, another, seen=workspace.revision)
+        tab.page.unroute("**/_dash-update-component")
+        tab.until("says", "One change that built on it was not made either.")
+        tab.settle()
+        assert tab.model == LIT_MODEL.scaled(0.9), "the undo was not meant for the other change"
+        tab.assert_agreement()
+
+
+def test_refining_the_tray_while_the_server_is_away_starts_when_it_is_back(away):
+    tab, back = away
+    tab.button("refine all").click()
+    tab.button("refine all").click()
+    tab.until("saved_line", "not saved")
+    assert tab.page.evaluate("sweepbench.unsent()") == 1
+    with back():
+        tab.until("says", "1 of 1 sweeps refined.", patience=60_000)
+        tab.settle()
+        assert tab.stored.refined(tab.entry) is not None
+
+
+def test_what_cannot_wait_is_refused_at_once_while_the_server_is_away(away):
+    tab, back = away
+    tab.find("#workspace-name").click()
+    tab.find("[data-act=duplicate-workspace]").click()
+    tab.until("says", "was not done")
+    with back() as again:
+        tab.settle()
+        with tab.one_change():
+            typed(tab, "ideality", "1.7")
+        assert not [there.name for there in again.store.workspaces() if "copy" in there.name]
+
+
+def test_a_change_that_is_not_saved_is_told_long_before_it_is_sent_again(away):
+    tab, back = away
+    tab.page.evaluate(
+        """() => {
+          window.tries = [];
+          const before = sweepbench.setProps;
+          sweepbench.setProps = (id, props) => {
+            if (id === "hand") window.tries.push(props.data.tries);
+            before(id, props);
+          };
+        }"""
+    )
+    typed(tab, "series_resistance", "4.5")
+    tab.until("saved_line", "not saved")
+    assert tab.page.evaluate("window.tries") == [1], "told after the first try and before the second"
+    with back():
+        tab.settle()
+        assert tab.model.series_resistance == 4.5
+
+
+def test_a_change_that_is_made_ends_what_was_said_of_one_that_was_refused(first: Tab):
+    typed(first, "ideality", "much")
+    first.until("says", "“much” is not a number")
+    with first.one_change():
+        typed(first, "ideality", "1.7")
+    assert first.find("#notice-line.shown").count() == 0
 
 
 def test_a_step_made_by_another_program_on_the_same_folder_reaches_the_tab(first: Tab):

@@ -9,7 +9,7 @@ from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from core.diode import PARAMETERS, OneDiode
-from core.handles import drag, handles, set_parameter
+from core.handles import drag, handles, set_parameter, type_parameter
 from core.moves import LIMITS
 
 CELL = OneDiode(0.022, 1e-12, 1.6, 3.0, 2000.0)
@@ -380,3 +380,18 @@ def test_without_voc_a_dial_moves_alone():
     unlit = replace(CELL, photocurrent=0.0)
     move = set_parameter(unlit, "ideality", 2.0, keep_jsc_voc=True)
     assert move.model == replace(unlit, ideality=2.0) and "no Voc to keep" in move.message
+
+
+def test_a_typed_value_is_taken_exactly_or_not_at_all():
+    assert type_parameter(CELL, "ideality", 1.7).model.ideality == 1.7
+    assert type_parameter(CELL, "shunt_resistance", math.inf).model.shunt_resistance == math.inf
+    kept = type_parameter(CELL, "ideality", 1.7, keep_jsc_voc=True)
+    assert kept.model.ideality == 1.7 and kept.message == ""
+    alone = type_parameter(CELL, "photocurrent", 0.02, keep_jsc_voc=True)
+    assert alone.model.photocurrent == 0.02 and "moves alone" in alone.message
+    for value, keep in ((-1.0, False), (1e4, True)):
+        stopped = type_parameter(CELL, "series_resistance", value, keep_jsc_voc=keep)
+        assert stopped.model == CELL
+        assert stopped.message.startswith("Rs cannot have this value and stays as it was: ")
+    held = type_parameter(CELL, "ideality", 2.0, hold=frozenset({"ideality"}))
+    assert held.model == CELL and held.message == "n is held."
