@@ -3,6 +3,7 @@
   const bench = (window.sweepbench ??= {});
   bench.pair = null;
   bench.losses = null;
+  let asked = null; // the two last chosen, until the answer is there
   let touched = {}; // targets that the hand has moved
 
   const byId = (id) => document.getElementById(id);
@@ -52,6 +53,7 @@
   bench.receivePair = (data) => {
     if (!data) return;
     bench.pair = data;
+    asked = null;
     slot("a", data.a);
     slot("b", data.b);
     check("data-pair-scale", data.normalised ? "normalised" : "absolute");
@@ -213,10 +215,14 @@
   });
   document.addEventListener("change", (event) => {
     const name = event.target.closest?.("[data-slot]")?.dataset.slot;
-    if (name) bench.changeView({ pair: { ...bench.pairChoice(), [name]: event.target.value } });
+    if (name) bench.choosePair({ ...bench.pairChoice(), [name]: event.target.value });
     if (event.target.closest?.("#emission-choice")) bench.changeView({ emission: event.target.value });
   });
-  bench.pairChoice = () => ({ a: bench.pair?.a ?? null, b: bench.pair?.b ?? null });
+  bench.pairChoice = () => asked ?? { a: bench.pair?.a ?? null, b: bench.pair?.b ?? null };
+  bench.choosePair = (pair) => {
+    asked = pair;
+    bench.changeView({ pair });
+  };
   /** What a picture of these screens is called: what it shows, of whom. */
   bench.pictureName = (graph) => {
     const [a, b] = ["a", "b"].map((name) => document.querySelector(`[data-slot=${name}] select`)?.selectedOptions[0]?.text ?? "");
@@ -224,7 +230,7 @@
   };
   bench.swap = () => {
     const { a, b } = bench.pairChoice();
-    bench.changeView({ pair: { a: b, b: a } });
+    bench.choosePair({ a: b, b: a });
   };
 
   document.addEventListener("click", (click) => {

@@ -152,7 +152,7 @@
   function fillSlot(entry, first) {
     const { a, b } = bench.pairChoice();
     if (entry === a || entry === b) return bench.swap();
-    bench.changeView({ pair: first ? { a: entry, b } : { a, b: entry } });
+    bench.choosePair(first ? { a: entry, b } : { a, b: entry });
   }
 
   /** The next device of the tray that has a lit sweep. */

@@ -173,6 +173,14 @@ def test_what_is_known_of_area_and_lamp_weighs_and_nonsense_is_told(three):
     expect(row).to_have_attribute("title", re.compile("area"))
 
 
+def test_two_choices_in_quick_succession_both_count(three):
+    tab, (a, b, c) = three
+    with tab.answers_held():
+        tab.find("[data-slot=a] select").select_option(b)
+        tab.find("[data-slot=b] select").select_option(c)
+    compared(tab, b, c)
+
+
 def test_an_answer_leaves_alone_what_is_being_typed(three):
     tab, _ = three
     area, lamp = (tab.find(f".budget [data-stated={name}_uncertainty] input") for name in ("area", "lamp"))
