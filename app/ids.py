@@ -45,4 +45,5 @@ class Id(StrEnum):
     CANCEL_JOB = "cancel-job"
     JOB_LINE = "job-line"
     INTERVALS = "intervals"
+    INTERVALS_CLOCK = "intervals-clock"
     INTERVALS_TABLE = "intervals-table"

@@ -13,7 +13,7 @@ from core.estimates import Estimate, estimates, plateau_reading, shunt_confirmed
 from core.fit_problem import used
 from core.model_choice import compare_models
 from core.models import Model
-from core.profile import Interval, profile_intervals
+from core.profile import Beside, Interval, profile_intervals
 from core.refinement import Refinement
 from core.sweep import Sweep
 from core.workspace import Workspace
@@ -64,16 +64,35 @@ def _symbol(parameter: str, model: Model) -> str:
     return f"{mechanism.symbol}{mechanism.index}"
 
 
-def interval_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
-    """Intervals of the refined parameters, one-sided where the data only bound one."""
-    refined, sweep = workspace.refined(entry), workspace.sweep(entry)
+Question = tuple[Sweep, Refinement, float, Beside]
+
+UNREFINED = {"rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": ""}
+# Up to so many free parameters, sweeps and points, intervals are there well within 300 ms; beyond, they are a job.
+_QUICK_FREE, _QUICK_SWEEPS, _QUICK_POINTS = 5, 5, 3000
+
+
+def interval_question(workspace: Workspace, entry: str) -> Question | None:
+    """What ``interval_rows`` needs to know of a sweep, fit to travel to another process; None before refining."""
+    refined = workspace.refined(entry)
     if refined is None:
-        return {"rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": ""}
-    level = workspace.fit(entry).settings.confidence  # the one that stands now needs no new fit
+        return None
+    # The level that stands now needs no new fit.
+    return workspace.sweep(entry), refined, workspace.fit(entry).settings.confidence, workspace.beside(entry)
+
+
+def is_quick(question: Question) -> bool:
+    """Whether the intervals can be had while the page waits."""
+    sweep, refined, _, beside = question
+    points = sweep.voltage.size + sum(other.voltage.size for other, _ in beside)
+    return len(refined.free) <= _QUICK_FREE and 1 + len(beside) <= _QUICK_SWEEPS and points <= _QUICK_POINTS
+
+
+def interval_rows(sweep: Sweep, refined: Refinement, level: float, beside: Beside) -> dict[str, Any]:
+    """Intervals of the refined parameters, one-sided where the data only bound one."""
     try:
-        found = _profiles(sweep, refined, level, beside=workspace.beside(entry))
+        found = _profiles(sweep, refined, level, beside=beside)
     except FitFailed as failure:
-        return {"rows": [], "sentence": str(failure), "choice": ""}
+        return not_told(failure)
     units = Units.of(sweep.per_area)
     rows = [
         {"name": BY_PARAMETER[name].title, "words": interval_words(interval, units, name)} for name, interval in found.items()
@@ -81,6 +100,11 @@ def interval_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     of_all = " of all sweeps refined together" if refined.others else ""
     sentence = f"{100 * level:.4g} % intervals by profile likelihood{of_all}, fit noise only."
     return {"rows": rows, "sentence": sentence, "choice": _choice(sweep, refined)}
+
+
+def not_told(reason: object) -> dict[str, Any]:
+    """The panel without intervals, and why."""
+    return {"rows": [], "sentence": str(reason), "choice": ""}
 
 
 def _choice(sweep: Sweep, refined: Refinement) -> str:

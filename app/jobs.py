@@ -119,7 +119,7 @@ class Jobs:
         label : str
             What the user reads beside the progress.
         name : str, optional
-            The job's id; one that is known already is not started again, so that a page may ask twice.
+            The job's id; one that is known already is not started again unless it was cancelled, so that a page may ask twice.
 
         Returns
         -------
@@ -131,7 +131,8 @@ class Jobs:
         with self._changed:
             if self._closed:
                 raise RuntimeError("jobs are closed")
-            if name in self._jobs:
+            known = self._jobs.get(name)
+            if known is not None and not known.cancelled:
                 return name
             self._forget_old_jobs()
             self._jobs[name] = job
@@ -155,6 +156,12 @@ class Jobs:
             if job:
                 job.results = []
             return taken
+
+    def results(self, name: str) -> list[tuple[int, Any]]:
+        """The results that have not been taken, as ``take`` gives them; asking changes nothing."""
+        with self._changed:
+            job = self._jobs.get(name)
+            return list(job.results) if job else []
 
     def cancel(self, name: str) -> None:
         """Leave out the items that have not begun; what is under way gets a moment to finish."""

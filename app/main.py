@@ -19,6 +19,10 @@ from pathlib import Path
 
 import platformdirs
 
+# Fits solve many small systems: threads of the linear algebra would only fight over the processors, with each other and
+# with the workers. It is read when numpy is first imported, by this process and by its workers.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
 from core.errors import SweepbenchError
 
 from .folder import FolderInUse, Notice, read_notice

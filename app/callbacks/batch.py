@@ -1,4 +1,4 @@
-"""Refining the whole tray: a job with progress, whose results enter as one step."""
+"""Refining as a job with progress, whose results enter as one step: the whole tray, or one sweep whose fit takes long."""
 
 from __future__ import annotations
 
@@ -61,19 +61,34 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
             jobs.cancel(job["job"])
 
 
-def begin(store: Store, jobs: Jobs, event: dict[str, Any]) -> dict[str, Any]:
-    """Start refining every sweep of the tray, once, however often the page sends the event; what follows the job.
+def begin(store: Store, jobs: Jobs, event: dict[str, Any], running: dict[str, Any] | None = None) -> dict[str, Any]:
+    """Start refining what an event asks for, once, however often the page sends it; what follows the job.
 
     A server that was started anew knows nothing of the job, and nothing of it was kept, so it starts once more.
+
+    Raises
+    ------
+    StepRefused
+        If the tray is empty, or the page still follows another job.
     """
+    if running and running["job"] != event["event"] and not jobs.status(running["job"]).finished:
+        raise StepRefused("Sweeps are being refined already. Wait until that is done, or cancel it at the foot of the tray.")
     workspace = store.current(event["workspace"])
-    entries = [entry.id for entry in workspace.in_tray_order()]
+    entries = [workspace.entry(event["entry"]).id] if event["kind"] == "refine" else [e.id for e in workspace.in_tray_order()]
     if not entries:
         raise StepRefused("There is no sweep in the tray yet. Drop a file first.")
     fits = [workspace.fit(entry) for entry in entries]
     arguments = [(workspace.sweep(e), fit.model, fit.settings) for e, fit in zip(entries, fits, strict=True)]
     name = jobs.submit(refine, arguments, label="refining", name=event["event"])
     return {"job": name, "workspace": workspace.id, "entries": entries, "stamps": [stamp(workspace, e) for e in entries]}
+
+
+def is_job(workspace: Workspace, event: dict[str, Any]) -> bool:
+    """Whether an event is one for the workers: the whole tray, or two diodes with an ideality factor free, which takes long."""
+    if event["kind"] != "refine" or event.get("entry") not in workspace.entries:
+        return event["kind"] == "refine-all"
+    settings = workspace.fit(event["entry"]).settings
+    return settings.model == "two diodes" and not {"ideality_1", "ideality_2"} <= set(settings.hold)
 
 
 def stamp(workspace: Workspace, entry: str) -> str:
@@ -110,7 +125,9 @@ def outcome(status: Status, found: int, kept: int) -> str:
     """What the user hears at the end."""
     if status.state == "lost":
         return "The server was started anew while it was refining, so nothing was kept. Refine again."
-    sentences = [f"{kept} of {status.total} sweeps refined."]
+    if status.total == 1 and status.failures:
+        return status.failures[0].sentence
+    sentences = [f"{kept} of {status.total} sweeps refined."] if status.total > 1 else []
     if found > kept:
         were = "was" if found - kept == 1 else "were"
         sentences.append(f"{found - kept} {were} changed or removed meanwhile and left alone.")

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from dash import Dash, Input, Output, no_update
+from dash import Dash, Input, Output, State, no_update
 
 from app.hand import step_for
 from app.ids import Id
@@ -14,7 +14,7 @@ from core.store import Store
 from core.workspace import Workspace
 
 from .answer import answered
-from .batch import begin
+from .batch import begin, is_job
 
 
 def register(app: Dash, store: Store, jobs: Jobs) -> None:
@@ -22,17 +22,19 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
         Output(Id.REVISION, "data", allow_duplicate=True),
         Output(Id.JOB, "data", allow_duplicate=True),
         Input(Id.HAND, "data"),
+        State(Id.JOB, "data"),
         prevent_initial_call=True,
     )
-    def take_event(event: dict[str, Any]) -> tuple:
+    def take_event(event: dict[str, Any], running: dict[str, Any] | None) -> tuple:
         job = no_update
 
         def change() -> tuple[Workspace, str]:
             nonlocal job
-            if event["kind"] != "refine-all":
+            workspace = store.current(event["workspace"])
+            if not is_job(workspace, event):
                 return take(store, event)
-            job = begin(store, jobs, event)
-            return store.current(event["workspace"]), ""
+            job = begin(store, jobs, event, running)
+            return workspace, ""
 
         answer = answered(store, event["workspace"], change, event=event["event"])
         return answer, job

@@ -59,6 +59,7 @@ def _stores(workspace_id: str, revision: int) -> list:
         dcc.Store(id=Id.WORKSPACES),
         dcc.Store(id=Id.JOB, storage_type="session"),
         dcc.Interval(id=Id.JOB_CLOCK, interval=250, disabled=True),
+        dcc.Interval(id=Id.INTERVALS_CLOCK, interval=250, disabled=True),
     ]
 
 

@@ -4,6 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from app import insight
 from core import steps
 from core.diode import OneDiode
 from core.sweep import Conditions, Sweep
@@ -46,3 +47,9 @@ def bench(*sweeps, models=()):
         if model is not None:
             workspace = steps.apply(workspace, steps.set_model(workspace, entry, model))
     return workspace, entries
+
+
+def intervals(workspace, entry):
+    """What the fit panel says of the intervals of a sweep."""
+    question = insight.interval_question(workspace, entry)
+    return insight.UNREFINED if question is None else insight.interval_rows(*question)

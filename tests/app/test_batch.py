@@ -9,7 +9,7 @@ from dash import no_update
 from app.callbacks import batch
 from app.jobs import Failure, Status
 from core import steps
-from core.errors import StaleRevision
+from core.errors import StaleRevision, StepRefused
 from core.fit_settings import FitSettings
 from core.store import Store
 from tests.app.benches import CELL, LIT, OTHER, REVERSE, sweep_of
@@ -93,6 +93,26 @@ def test_progress_is_shown_until_the_results_enter_as_one_step(desk, store, jobs
     assert all(workspace.refined(entry) is not None for entry in ids)
     assert store.history(name).undo == "refine 3 sweeps"
     assert store.undo(name, 2).fits == {}
+
+
+def test_one_sweep_whose_fit_takes_long_is_a_job_too_and_says_nothing_but_its_failure(desk, store, jobs):
+    name = store.first()
+    workspace = store.commit(name, steps.add_sweeps(store.current(name), [LIT, OTHER]), 0)
+    first, second = (e.id for e in workspace.in_tray_order())
+    event = {"kind": "refine", "entry": first, "workspace": name, "event": "e"}
+    assert not batch.is_job(workspace, event) and batch.is_job(workspace, {"kind": "refine-all"})
+    free = FitSettings(model="two diodes", hold=frozenset({"ideality_1"}))
+    workspace = store.commit(name, steps.set_fit_settings(workspace, first, free), 1)
+    assert batch.is_job(workspace, event) and not batch.is_job(workspace, {**event, "entry": second})
+    job = batch.begin(store, jobs, event)
+    assert job["entries"] == [first]
+    with pytest.raises(StepRefused, match="already"):
+        batch.begin(store, jobs, {**event, "event": "another"}, job)
+    jobs.compute()
+    assert desk.follow(1, job)[2]["sentence"] == ""
+    assert store.current(name).refined(first).settings == free
+    failed = Status("refining", 1, 1, "done", (Failure(0, "Too few points."),))
+    assert batch.outcome(failed, 0, 0) == "Too few points."
 
 
 def test_without_a_job_the_clock_changes_nothing(desk):

@@ -1,6 +1,7 @@
 """What stands beside the fit: settings, correlation, intervals, estimates and derived figures, as text."""
 
 import math
+import pickle
 from dataclasses import replace
 
 import numpy as np
@@ -16,7 +17,16 @@ from core.profile import Interval, profile_intervals
 from core.refine import refine
 from core.store import History
 from core.sweep import Conditions
-from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, REVERSE, bench, sweep_of
+from tests.app.benches import (
+    AMPERES,
+    CELL,
+    IN_THE_DARK,
+    LIT,
+    REVERSE,
+    bench,
+    intervals,
+    sweep_of,
+)
 
 
 def settled(sweep, settings=FitSettings()):
@@ -83,7 +93,7 @@ def test_what_is_not_determined_is_null_and_not_a_number(refined):
 
 def test_intervals_hold_the_fitted_value_and_are_core_s(refined):
     workspace, entry = refined
-    shown = insight.interval_rows(workspace, entry)
+    shown = intervals(workspace, entry)
     assert [row["name"] for row in shown["rows"]] == [
         "photocurrent", "saturation current", "ideality factor", "series resistance", "shunt resistance",
     ]  # fmt: skip
@@ -99,7 +109,7 @@ def test_a_higher_level_gives_wider_intervals_without_a_new_fit(refined):
     workspace, entry = refined
     for level in (0.68, 0.95, 0.99):
         workspace = steps.apply(workspace, steps.set_fit_settings(workspace, entry, FitSettings(confidence=level)))
-        rows = insight.interval_rows(workspace, entry)
+        rows = intervals(workspace, entry)
         assert rows["sentence"].startswith(f"{100 * level:.0f} %")
         low, high = (float(word) for word in rows["rows"][2]["words"].split(" to "))
         widths.append(high - low)
@@ -108,9 +118,23 @@ def test_a_higher_level_gives_wider_intervals_without_a_new_fit(refined):
     assert widths[2] / widths[1] == pytest.approx(1.31, rel=0.1)
 
 
+def test_what_takes_long_is_told_before_it_is_done_and_travels_to_another_process(refined):
+    workspace, entry = refined
+    question = insight.interval_question(workspace, entry)
+    assert insight.is_quick(question)
+    there = pickle.loads(pickle.dumps(question))
+    assert insight.interval_rows(*there)["rows"] == intervals(workspace, entry)["rows"]
+    free = FitSettings(model="two diodes", hold=frozenset())
+    workspace, entry = settled(LIT, free)
+    assert not insight.is_quick(insight.interval_question(workspace, entry))
+    many = sweep_of(CELL, "many", points=4000)
+    workspace, entry = settled(many)
+    assert not insight.is_quick(insight.interval_question(workspace, entry))
+
+
 def test_before_refining_the_panel_says_what_to_do():
     workspace, (entry,) = bench(LIT, models=(CELL,))
-    assert insight.interval_rows(workspace, entry) | {"choice": ""} == {
+    assert intervals(workspace, entry) | {"choice": ""} == {
         "rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": "",
     }  # fmt: skip
 

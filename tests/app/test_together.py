@@ -16,6 +16,7 @@ from core.profile import profile_intervals
 from core.reading import read_sweeps
 from core.refine import refine
 from core.workspace import Workspace
+from tests.app.benches import intervals
 
 
 @pytest.fixture(scope="module")
@@ -72,7 +73,7 @@ def joined(levels):
 def test_intervals_after_refining_together_are_those_of_the_joint_fit(joined):
     workspace, entries = joined
     for entry in entries:
-        shown = insight.interval_rows(workspace, entry)
+        shown = intervals(workspace, entry)
         assert "profile likelihood of all sweeps refined together" in shown["sentence"]
         assert [row["name"] for row in shown["rows"]] == [
             "photocurrent", "saturation current", "ideality factor", "series resistance", "shunt resistance",
@@ -87,17 +88,17 @@ def test_intervals_after_refining_together_are_those_of_the_joint_fit(joined):
 
 def test_a_parameter_that_sweeps_share_has_the_same_words_for_each(joined):
     workspace, entries = joined
-    words = [[row["words"] for row in insight.interval_rows(workspace, entry)["rows"]] for entry in entries]
+    words = [[row["words"] for row in intervals(workspace, entry)["rows"]] for entry in entries]
     assert words[0][1:4] == words[1][1:4] == words[2][1:4]
     assert len({row[0] for row in words}) == 3
 
 
 def test_intervals_stay_while_another_sweep_s_dial_moves(joined):
     workspace, entries = joined
-    before = insight.interval_rows(workspace, entries[0])
+    before = intervals(workspace, entries[0])
     moved = replace(workspace.fit(entries[1]).model, ideality=1.9)
     workspace = steps.apply(workspace, steps.set_model(workspace, entries[1], moved))
-    assert insight.interval_rows(workspace, entries[0]) == before
+    assert intervals(workspace, entries[0]) == before
 
 
 def test_intervals_are_refused_with_a_sentence_once_another_sweep_is_gone_or_refined_anew(joined):
@@ -107,10 +108,10 @@ def test_intervals_are_refused_with_a_sentence_once_another_sweep_is_gone_or_ref
     pair = step_for(workspace, event(entries[1:]))[0]
     for step in (anew, hotter, pair, steps.remove_entries(workspace, [entries[1]])):
         after = steps.apply(workspace, step)
-        shown = insight.interval_rows(after, entries[0])
+        shown = intervals(after, entries[0])
         assert shown["rows"] == [] and "refine them together again" in shown["sentence"]
         back = steps.apply(after, steps.inverse(workspace, step))
-        assert insight.interval_rows(back, entries[0])["rows"]
+        assert intervals(back, entries[0])["rows"]
 
 
 def test_a_joint_refinement_of_before_still_loads_and_asks_to_be_made_again(joined):
@@ -118,5 +119,5 @@ def test_a_joint_refinement_of_before_still_loads_and_asks_to_be_made_again(join
     record = workspace.record("fits", entries[0])
     del record["refinement"]["bond"]
     old = steps.apply(workspace, {"label": "old", "put": {"fits": {entries[0]: record}}})
-    shown = insight.interval_rows(old, entries[0])
+    shown = intervals(old, entries[0])
     assert shown["rows"] == [] and "refine them together again" in shown["sentence"]

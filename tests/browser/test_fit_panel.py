@@ -165,3 +165,18 @@ def test_two_diodes_are_switched_to_refined_dragged_and_left_again(fitted):
         setting(fitted, "model").select_option("one diode")
     assert fitted.find("#dials .dial").evaluate_all(dials) == list(PARAMETERS)
     fitted.assert_agreement()
+
+
+def test_two_diodes_with_their_ideality_free_are_refined_by_a_worker_and_so_are_their_intervals(fitted):
+    with fitted.one_change():
+        setting(fitted, "model").select_option("two diodes")
+    for parameter in ("ideality_1", "ideality_2"):
+        with fitted.one_change():
+            fitted.dial(parameter).locator(".hold").click()
+    with fitted.one_change():
+        fitted.button("refine").click()
+    found = fitted.stored.refined(fitted.entry)
+    assert {"ideality_1", "ideality_2"} <= set(found.free)
+    rows = fitted.find("#intervals-table p")
+    expect(rows).to_have_count(len(found.free) + 1, timeout=60_000)  # and the sentence below them
+    expect(rows.last).to_contain_text("profile likelihood")
