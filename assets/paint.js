@@ -81,6 +81,7 @@
       symbol.replaceChildren(dial.symbol, Object.assign(document.createElement("sub"), { textContent: dial.index }));
       text(row.querySelector(".unit"), dial.unit);
       text(row.querySelector(".error"), dial.error);
+      row.querySelector(".error").classList.toggle("words", !/\d/.test(dial.error)); // they may take two lines
       row.classList.toggle("held", dial.held);
       row.querySelector(".hold").setAttribute("aria-checked", String(dial.held));
       text(row.querySelector(".hold"), dial.held ? "held" : "hold");

@@ -8,7 +8,7 @@ from core.diode import PARAMETERS
 from core.fit_problem import used
 from core.fit_settings import FitSettings
 from core.two_diode import TWO_DIODE_PARAMETERS, TwoDiode
-from tests.browser.loading import LIT
+from tests.browser.loading import LIT, LIT_MODEL, add_sample
 from tests.browser.screens import assert_nothing_hangs_over, load, until
 from tests.browser.tab import Tab
 
@@ -180,3 +180,15 @@ def test_two_diodes_with_their_ideality_free_are_refined_by_a_worker_and_so_are_
     rows = fitted.find("#intervals-table p")
     expect(rows).to_have_count(len(found.free) + 1, timeout=60_000)  # and the sentence below them
     expect(rows.last).to_contain_text("profile likelihood")
+
+
+def test_what_is_not_determined_is_said_beside_the_hold_and_not_over_it(running, workspace, open_tab):
+    add_sample(running.store, workspace, "K21.csv", LIT_MODEL)  # S-shaped: no curve of the model follows it
+    tab = open_tab()
+    with tab.one_change():
+        tab.button("refine").click()
+    expect(tab.dial("shunt_resistance").locator(".error")).to_have_text("not determined")
+    for dial in tab.find("#dials .dial").all():
+        error, hold = (dial.locator(part).bounding_box() for part in (".error", ".hold"))
+        assert error["x"] + error["width"] <= hold["x"] + 1
+        assert dial.locator(".error").evaluate("(one) => one.scrollWidth <= one.clientWidth + 1")
