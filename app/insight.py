@@ -22,9 +22,9 @@ from .mechanisms import BY_PARAMETER
 from .units import Units
 from .wording import number, with_uncertainty
 
-_estimates = lru_cache(maxsize=64)(estimates)
+estimated = lru_cache(maxsize=64)(estimates)
 _models = lru_cache(maxsize=64)(compare_models)
-_profiles = lru_cache(maxsize=64)(profile_intervals)
+profiles = lru_cache(maxsize=64)(profile_intervals)
 
 
 def settings_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
@@ -71,7 +71,7 @@ def interval_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
         return {"rows": [], "sentence": "Refine to see how well each parameter is known.", "choice": ""}
     level = workspace.fit(entry).settings.confidence  # the one that stands now needs no new fit
     try:
-        found = _profiles(sweep, refined, level, beside=workspace.beside(entry))
+        found = profiles(sweep, refined, level, beside=workspace.beside(entry))
     except FitFailed as failure:
         return {"rows": [], "sentence": str(failure), "choice": ""}
     units = Units.of(sweep.per_area)
@@ -110,7 +110,7 @@ def estimate_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     sweep, model = workspace.sweep(entry), workspace.fit(entry).model
     dark, levels = dark_of(workspace, entry), levels_of(workspace, entry)
     plateau = plateau_reading(sweep, dark) if sweep.lit else ""
-    rows = [_estimate(e, sweep, model) for e in _estimates(sweep, dark=dark, levels=levels, model=model)]
+    rows = [_estimate(e, sweep, model) for e in estimated(sweep, dark=dark, levels=levels, model=model)]
     gap = workspace.devices[workspace.entries[entry].device].band_gap
     return {
         "rows": [row | {"note": ""} if row["note"] == plateau else row for row in rows],  # it stands above them already
