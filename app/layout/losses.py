@@ -6,7 +6,7 @@ from app.ids import Id
 from app.mechanisms import MECHANISMS
 
 from .bench import PLOT_CONFIG
-from .pair import _choice
+from .pair import _choice, _table
 
 
 def losses() -> list:
@@ -20,6 +20,7 @@ def losses() -> list:
                     children=[
                         html.H2(id="losses-title"),
                         html.Span(id="losses-subtitle", className="subtitle"),
+                        html.Button("report", className="quiet", title="This device as one HTML file", **{"data-act": "save-report"}),
                         html.Div(
                             className="picture",
                             children=[
@@ -29,6 +30,8 @@ def losses() -> list:
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.LADDER}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.LADDER}),
+                                _table("CSV", "save-losses", "Share and rung of each mechanism"),
+                                _table("XLSX", "save-shown", "All tables of this device"),
                             ],
                         ),
                     ],
