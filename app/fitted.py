@@ -6,7 +6,7 @@ They are those of losses and pair: what the user refined or laid by hand, and on
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
 from core.errors import FitFailed
@@ -92,6 +92,11 @@ def fits_of(workspace: Workspace, entry: str) -> tuple[Fitted, ...]:
     if state.mechanisms is known or state.untold or not isinstance(state.mechanisms, Refinement):
         return (first,)
     return first, _refined(workspace, entry, state.mechanisms, "fitted on the spot", beside=True)
+
+
+def drawn(fits: Sequence[Fitted]) -> Model | None:
+    """The model whose curve is laid over the points: the first, unless it is a guess that no fit bears out."""
+    return next((fit.model for fit in fits if fit.origin != "first guess"), None)
 
 
 def _refined(workspace: Workspace, entry: str, refinement: Refinement, origin: Origin, *, beside: bool = False) -> Fitted:

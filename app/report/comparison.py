@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from app import tables
-from app.fitted import ORIGINS, fits_of
+from app.fitted import ORIGINS, drawn, fits_of
 from app.insight import is_shunt
 from app.mechanisms import loss_names
 from app.pair_scene import NO_CURVE, verdict_of
@@ -39,7 +39,7 @@ def pair_section(workspace: Workspace, entry_a: str, entry_b: str) -> Markup:
         reason = _NOT_BESIDE if a.per_area != b.per_area else _NOT_ALIKE
         return element("section", *head, paragraph(reason), class_="device", id="pair")
     shown = [
-        Shown(f"{letter}: {name}", sweep, next((fit.model for fit in fits_of(workspace, entry)), None))
+        Shown(f"{letter}: {name}", sweep, drawn(fits_of(workspace, entry)))
         for letter, name, sweep, entry in (("A", names[0], a, entry_a), ("B", names[1], b, entry_b))
     ]
     caption = "A: filled marks, solid line. B: hollow marks, dashed line. Below: residuals in units of the points’ noise."

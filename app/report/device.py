@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 from app import tables
-from app.fitted import Fitted, fits_of
+from app.fitted import Fitted, drawn, fits_of
 from app.readout import measured
 from app.scene import short_name
 from app.telling import Telling, ToldLosses, told_losses
@@ -31,10 +31,8 @@ from .shares import conventions, shares_table
 
 _CURVES = 6  # in one picture
 _NARROW = 3  # sweeps whose numbers take half the page
-FIT_NOISE = (
-    "In brackets: standard error of the last digit; below: interval by profile likelihood. Both are of fit noise only: area, lamp, "
-    "temperature and scatter between devices are not in them."
-)
+_WHOLE = 8  # findings that are not torn apart by the end of a page
+FIT_NOISE = "In brackets: standard error of the last digit; beside or below: interval by profile likelihood; all of fit noise only."
 
 
 def device_section(workspace: Workspace, device_id: str, entries: Sequence[str], anchor: str, telling: Telling) -> Markup:
@@ -59,7 +57,6 @@ def device_section(workspace: Workspace, device_id: str, entries: Sequence[str],
         _parameters(workspace, [(name, fit) for entry, name in zip(entries, names, strict=True) for fit in told[entry]]),
         *_losses(workspace, entries, names, anchor, telling),
         *([] if narrow else [conditions]),
-        element("h3", "Checks"),
         _checks(workspace, entries, names),
         class_="device",
         id=anchor,
@@ -76,7 +73,7 @@ def _curves(
     kinds: dict[tuple[bool, bool], list[Shown]] = {}
     for entry, name in zip(entries, names, strict=True):
         sweep = workspace.sweep(entry)
-        kinds.setdefault((not sweep.lit, not sweep.per_area), []).append(Shown(name, sweep, next((fit.model for fit in told[entry]), None)))
+        kinds.setdefault((not sweep.lit, not sweep.per_area), []).append(Shown(name, sweep, drawn(told[entry])))
     pictures = []
     for _, shown in sorted(kinds.items()):
         pictures += [shown[at : at + _CURVES] for at in range(0, len(shown), _CURVES)]
@@ -181,10 +178,11 @@ def _checks(workspace: Workspace, entries: Sequence[str], names: Sequence[str]) 
     for entry, finding in tables.all_findings(workspace, entries):
         told.setdefault((finding.severity, finding.what, finding.meaning, finding.remedy), []).append(name_of[entry])
     if not told:
-        return paragraph("Nothing was found amiss.", class_="under")
+        return element("div", element("h3", "Checks"), paragraph("Nothing was found amiss.", class_="under"), class_="block")
     worst_first = sorted(told.items(), key=lambda item: ("stop", "caution", "note").index(item[0][0]))
     rows = [
         [severity, join([what, " ", element("span", f"{meaning} {remedy}".strip(), class_="reason")]), ", ".join(who)]
         for (severity, what, meaning, remedy), who in worst_first
     ]
-    return table(["", "finding", "sweep"], rows, "words checks")
+    whole = "block" if len(rows) <= _WHOLE else None
+    return element("div", element("h3", "Checks"), table(["", "finding", "sweep"], rows, "words checks"), class_=whole)

@@ -33,6 +33,7 @@ CAUTIONS = (
     "source-meter outputs, and strings of cells in light, stay live; some devices hold lead and solvents. Local rules and "
     "trained staff decide.",
 )  # fmt: skip
+_WHOLE = 16  # files
 _NAMED = 3  # sweeps named beside a statement before they are only counted
 _FIRST_COLUMNS = ("jsc", "voc", "fill_factor", "efficiency")
 
@@ -147,12 +148,11 @@ def _account(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...]
         element("h2", "Methods"),
         table(["", ""], [[m.name, join([m.how, " ", element("cite", "; ".join(m.sources))])] for m in methods], "words methods"),
         paragraph("Sources are cited from memory.", class_="under"),
-        element("h2", "Files"),
-        table(["file", "SHA-256", "sweep"], files, "words files"),
+        # A short list stays in one piece.
+        element("div", element("h2", "Files"), table(["file", "SHA-256", "sweep"], files, "words files"), class_="block" if len(files) <= _WHOLE else None),
         element("h2", "Versions"),
         paragraph(", ".join(f"{name} {version}" for name, version in versions().items())),
-        element("h2", "Cautions"),
-        element("ul", *(element("li", caution) for caution in CAUTIONS)),
+        element("div", element("h2", "Cautions"), element("ul", *(element("li", caution) for caution in CAUTIONS)), class_="block"),
         class_="account",
     )
 

@@ -30,8 +30,8 @@ def shares_table(shares: Shares, names: Mapping[str, str], whole: float, whole_n
         rows.append([NOT_IN_MODEL, residual, "–", _part(shares.residual, whole), *([residual] if rungs else [])])
     together = signed(1e3 * shares.difference, FINEST)
     rows.append([element("b", "together"), together, "", _part(shares.difference, whole), *([together] if rungs else [])])
-    heads = ["", "share (mW cm⁻²)", f"{100 * shares.confidence:g} % interval, fit noise", whole_name]
-    return table([*heads, *(["one after another (mW cm⁻²)"] if rungs else [])], rows, "numbers shares")
+    heads = ["in mW cm⁻²", "share", f"{100 * shares.confidence:g} % interval, fit noise", whole_name]
+    return table([*heads, *(["one after another"] if rungs else [])], rows, "numbers shares")
 
 
 def interval_words(low: float, high: float) -> str:

@@ -163,7 +163,7 @@ def test_an_interval_of_a_share_is_as_fine_as_its_width_but_never_finer_than_a_h
 def test_no_share_is_finer_than_a_hundredth():
     workspace, entries = refined(LIT, OTHER)
     text = page_of(workspace, entries).text
-    shares = text[text.index("one after another (mW cm⁻²)") :]
+    shares = text[text.index("in mW cm⁻² share") :]
     assert re.findall(r"[−+]\d+\.\d{3,}", shares[: shares.index("Checks")]) == []
 
 
@@ -174,7 +174,7 @@ def test_a_sweep_that_is_not_broken_down_has_its_limit_power_and_whole_gap():
     _, data = losses_screen(workspace, {"active": entry})
     for sentence in data["story"]:
         assert page.text.count(sentence) == 1
-    assert "not broken down" in page.text and "limit at 1.6 eV" in page.text and "one after another (mW" not in page.text
+    assert "not broken down" in page.text and "limit at 1.6 eV" in page.text and "in mW cm⁻² share" not in page.text
 
 
 def test_a_pair_that_is_not_shared_out_says_what_was_measured():
