@@ -133,7 +133,7 @@ def parameters_file(workspace: Workspace, entries: Sequence[str]) -> Export:
         },
         "notes": [
             "A shunt_resistance of null means that there is no shunt; null at the end of an interval means that it is open.",
-            "standard_errors, covariance and intervals are of fit noise only; covariance is of the free parameters in "
+            "standard_errors, covariance and intervals (linear ones) are of fit noise only; covariance is of the free parameters in "
             "their order, scaled as photocurrent, ln saturation_current, ideality, series_resistance, 1/shunt_resistance.",
         ],
         "sweeps": [_parameters(workspace, entry) for entry in entries],

@@ -80,7 +80,9 @@ class Fitted:
 
 def fits_of(workspace: Workspace, entry: str) -> tuple[Fitted, ...]:
     """What is told of a sweep: one model, or for two diodes two; () where no model says anything."""
-    state = state_of(workspace, entry)
+    state, refined = state_of(workspace, entry), workspace.refined(entry)
+    if state is None and refined is not None:  # two diodes that no one diode can speak for
+        return (_refined(workspace, entry, refined, "refined"),)
     if state is None or not state.worth_drawing:
         model, origin = workspace.fit(entry).model, origin_of(workspace, entry)
         return () if model is None else (Fitted(entry, model, origin),)

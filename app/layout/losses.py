@@ -20,13 +20,13 @@ def losses() -> list:
                     children=[
                         html.H2(id="losses-title"),
                         html.Span(id="losses-subtitle", className="subtitle"),
-                        html.Button("report", className="quiet", title="This device as one HTML file", **{"data-act": "save-report"}),
                         html.Div(
                             className="picture",
                             children=[
                                 _choice("shares", "ladder", "shares"),
                                 _choice("one after another", "ladder", "steps"),
                                 html.Button("projector", className="quiet", title="One chart, large type (P)", **{"data-act": "projector"}),
+                                html.Button("report", className="quiet", title="This device as one HTML file", **{"data-act": "save-report"}),
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.LADDER}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.LADDER}),

@@ -113,9 +113,8 @@ def _parameters(workspace: Workspace, fits: Sequence[tuple[str, Fitted]]) -> Mar
         settings.setdefault(words, []).append(f"{name} for the losses" if fit.beside else name)
     said = [paragraph(element("b", f"{', '.join(who)}: "), words + ".", class_="under") for words, who in settings.items()]
     linear = [f"Intervals of {name} are linear ones, from the covariance: {fit.linear}" for name, fit in fitted if fit.linear]
-    beside = [f"{name} has a two-diode model; losses and pair are told with one diode." for name, fit in fits if fit.beside]
     together = [f"{name} was refined together with other sweeps." for name, fit in fitted if fit.refinement.others]
-    notes = ([FIT_NOISE] if fitted else []) + beside + together + linear
+    notes = ([FIT_NOISE] if fitted else []) + together + linear
     return element(
         "div",
         element("h3", "Parameters"),

@@ -39,7 +39,7 @@ _DASHES = (None, "7 4", "2 3", "9 3 2 3")
 NOT_IN_MODEL = "not in the model"
 _OF_NONE = (FAINT, "-")  # hue and hatch of what is no mechanism's
 FINEST = 2  # decimals of a share in mW cm⁻²
-_PITCH, _BAR, _TOP, _BASELINE = 20.0, 15.0, 3.0, 15.0  # of the ladder's rows
+_PITCH, _BAR, _TOP, _BASELINE = 19.0, 14.0, 3.0, 14.0  # of the ladder's rows
 _DIFFERENCE_PITCH = 20.0
 
 

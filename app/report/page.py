@@ -140,16 +140,17 @@ def _account(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...]
     reporting = [[item.name, _statements(item)] for item in reporting_items(workspace, entries)]
     methods = methods_for(_topics(workspace, entries, pair, telling))
     files = [[name, element("code", sha256 or "–"), _who(tuple(sweeps))] for name, sha256, sweeps in files_behind(workspace, entries)]
+    listing = table(["file", "SHA-256", "sweep"], files, "words files")
     return element(
         "section",
         element("h2", "Reporting table"),
-        paragraph("What journals ask for, from files and conditions. What the user stated for the whole workspace is marked, and what nobody says.", class_="under"),
+        paragraph("What journals ask for. What no file says is marked, whether the user states it or nobody does.", class_="under"),
         table(["", ""], reporting, "words reporting"),
         element("h2", "Methods"),
         table(["", ""], [[m.name, join([m.how, " ", element("cite", "; ".join(m.sources))])] for m in methods], "words methods"),
         paragraph("Sources are cited from memory.", class_="under"),
         # A short list stays in one piece.
-        element("div", element("h2", "Files"), table(["file", "SHA-256", "sweep"], files, "words files"), class_="block" if len(files) <= _WHOLE else None),
+        element("div", element("h2", "Files"), listing, class_="block" if len(files) <= _WHOLE else None),
         element("h2", "Versions"),
         paragraph(", ".join(f"{name} {version}" for name, version in versions().items())),
         element("div", element("h2", "Cautions"), element("ul", *(element("li", caution) for caution in CAUTIONS)), class_="block"),

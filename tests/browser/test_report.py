@@ -89,6 +89,10 @@ def test_the_losses_screen_hands_out_what_it_shows(fitted, tmp_path):
     assert set(table["emission"]) == {"both faces"} and set(table["device"]) == {"K07"}
     shown = fitted.find("#losses-table tr[data-loss=photocurrent] td").first.inner_text()
     assert f"{table['share (mW cm⁻²)'][0]:.2f}".replace("-", "−") == shown
+    fitted.find("[data-act=projector]").click()
+    until(fitted, "document.body.classList.contains('projector')")
+    assert not fitted.find(".losses-room [data-act=save-report]").is_visible()
+    fitted.page.keyboard.press("Escape")
     with pd.ExcelFile(saved(fitted, "save-shown", tmp_path), engine="calamine") as book:
         assert {"losses", "intervals", "estimates"} <= set(book.sheet_names) and "pair" not in book.sheet_names
 
