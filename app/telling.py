@@ -3,18 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 from core.comparing import losses as shares_of_losses
 from core.detailed_balance import Emission, limiting_diode
 from core.diode import PARAMETERS, Landmarks
 from core.errors import ComparisonRefused
 from core.retelling import tell_assumed_gap, tell_losses, tell_whole
-from core.shares import Shares, ladder, refuse_string
+from core.shares import Shares, ladder
 from core.workspace import Workspace
 
 from .insight import is_shunt
-from .losses_scene import NO_CURVE, emission_of, gap_of, order_of
+from .losses_scene import NO_CURVE, emission_of, gap_of, order_of, refuse_whole
 from .mechanisms import loss_names
 from .readout import measured
 from .scene import full_name
@@ -102,9 +102,7 @@ def told_losses(workspace: Workspace, entry: str, telling: Telling = Telling()) 
     limit = limiting_diode(gap, sweep.temperature, sweep.irradiance, telling.emission)
     best = limit.landmarks()
     if untold:
-        if not sweep.per_area:
-            raise ComparisonRefused(untold)
-        refuse_string(replace(limit, series_cells=sweep.series_cells))
+        refuse_whole(sweep, untold)
         if metrics.pmp.value is None:
             allowed = f"The limit at {gap:.4g} eV is {number(1e3 * best.pmp)} mW cm⁻²"
             raise ComparisonRefused(f"{untold} {allowed}; the sweep gives no power to set against it.")

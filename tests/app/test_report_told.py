@@ -15,11 +15,13 @@ from core.diode import PARAMETERS
 from core.first_guess import first_guess
 from core.refine import FitSettings, refine
 from core.shares import ladder
+from core.sweep import Conditions
 from core.verdict import METRICS
 from tests.app.benches import (
     AMPERES,
     CELL,
     DARK,
+    LAMP,
     LIT,
     OTHER,
     REVERSE,
@@ -208,3 +210,17 @@ def test_a_sweep_without_an_area_gets_the_reason_and_no_limit():
     workspace, (entry,) = guessed(AMPERES)
     text = page_of(workspace, [entry]).text
     assert "area" in text[text.index("Losses") : text.index("Checks")] and "limit at" not in text
+
+
+@pytest.mark.parametrize(
+    ("conditions", "words"),
+    [(Conditions(), "Without an area there is no limit"), (replace(LAMP, series_cells=2), "that of 2 cells in series")],
+    ids=["no area", "a string"],
+)
+def test_no_limit_of_one_junction_stands_beside_what_it_does_not_hold_for(conditions, words):
+    area = 1.0 if conditions.area else 0.1
+    bent = replace(S_SHAPED, current=S_SHAPED.current * area, per_area=conditions.area is not None, read_as="current", conditions=conditions)
+    workspace, (entry,) = bench(bent)
+    _, data = losses_screen(workspace, {"active": entry})
+    assert "S-shaped" in data["refusal"] and words in data["refusal"]
+    assert data["refusal"] in page_of(workspace, [entry]).text
