@@ -19,10 +19,12 @@ import pandas as pd
 import xlsxwriter
 
 from core.errors import StepRefused
+from core.sentences import listed
 from core.workspace import Workspace
 
-from . import tables
+from . import tables, told_tables
 from .report import report_page, versions
+from .telling import Telling
 
 CSV, JSON, HTML = "text/csv", "application/json", "text/html"
 XLSX = "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet"
@@ -31,6 +33,8 @@ XLSX = "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet"
 _FORMULA = re.compile(r"\s*[=+\-@＝＋－＠]|[\t\r\n]")
 _LONGEST_CELL = 32_767  # characters, a limit of the XLSX format
 _WIDEST_COLUMN = 60  # characters
+MOST_FITTED = 24  # sweeps; each may take a fit and the profile of every parameter
+_TOO_MANY = f"Losses, intervals and estimates are worked out for up to {MOST_FITTED} sweeps at a time. Choose fewer sweeps for them."
 
 
 @dataclass(frozen=True)
@@ -59,7 +63,7 @@ def chosen(workspace: Workspace, given: str) -> list[str]:
     return entries
 
 
-def table_file(workspace: Workspace, entries: Sequence[str], kind: str, table: str = "") -> Export:
+def table_file(workspace: Workspace, entries: Sequence[str], kind: str, table: str = "", telling: Telling = Telling()) -> Export:
     """The tables of these sweeps.
 
     Parameters
@@ -68,24 +72,47 @@ def table_file(workspace: Workspace, entries: Sequence[str], kind: str, table: s
         A workbook has a sheet for each table; CSV holds one.
     table : str
         Which one for CSV; "" for the one that has everything on one row a sweep.
+    telling : Telling
+        How losses are told, and the pair.
 
     Raises
     ------
     StepRefused
-        If there is no such table or kind.
+        If there is no such table or kind, no pair for one on a pair, or more sweeps than are fitted at a time.
     """
-    if kind == "xlsx":
-        return Export(f"{_title(workspace, entries)} tables.xlsx", XLSX, to_xlsx(tables.tables(workspace, entries)))
-    makers: dict[str, Callable[[Workspace, Sequence[str]], pd.DataFrame]] = {
-        "": tables.summary_table,
-        "metrics": tables.metrics_table,
-        "parameters": tables.parameters_table,
-        "conditions": tables.conditions_table,
-        "checks": tables.checks_table,
+    _refuse_odd(telling.pair)
+    for entry in telling.pair:
+        workspace.entry(entry)
+    makers: dict[str, Callable[[], pd.DataFrame]] = {
+        "": lambda: tables.summary_table(workspace, entries),
+        "metrics": lambda: tables.metrics_table(workspace, entries),
+        "parameters": lambda: tables.parameters_table(workspace, entries),
+        "conditions": lambda: tables.conditions_table(workspace, entries),
+        "checks": lambda: tables.checks_table(workspace, entries),
     }
-    if kind != "csv" or table not in makers:
-        raise StepRefused("There is no such table; metrics, parameters, conditions and checks are offered, as csv or xlsx.")
-    return Export(f"{_title(workspace, entries)} {table or 'table'}.csv", CSV, to_csv(makers[table](workspace, entries)))
+    fitted: dict[str, Callable[[], pd.DataFrame]] = {
+        "losses": lambda: told_tables.losses_table(workspace, entries, telling),
+        "intervals": lambda: told_tables.intervals_table(workspace, entries),
+        "estimates": lambda: told_tables.estimates_table(workspace, entries),
+    }
+    of_pair: dict[str, Callable[[], pd.DataFrame]] = {
+        "pair": lambda: told_tables.pair_table(workspace, telling),
+        "shares": lambda: told_tables.shares_table(workspace, telling),
+    }
+    title, many = _title(workspace, entries), len(entries) > MOST_FITTED
+    if kind == "xlsx":
+        more = {**({} if many else fitted), **(of_pair if telling.pair else {})}
+        sheets = tables.tables(workspace, entries) | {name: make() for name, make in more.items()}
+        if many:
+            sheets["left out"] = pd.DataFrame({"left out": [_TOO_MANY]})
+        return Export(f"{title} tables.xlsx", XLSX, to_xlsx(sheets))
+    if kind != "csv" or table not in {*makers, *fitted, *of_pair}:
+        raise StepRefused(f"There is no such table; {listed([*list(makers)[1:], *fitted, *of_pair])} are offered, as csv or xlsx.")
+    if table in of_pair and not telling.pair:
+        raise StepRefused("That table is of a pair. Choose two sweeps.")
+    if table in fitted and many:
+        raise StepRefused(_TOO_MANY)
+    return Export(f"{title} {table or 'table'}.csv", CSV, to_csv((makers | fitted | of_pair)[table]()))
 
 
 def points_file(workspace: Workspace, entry: str) -> Export:
@@ -106,7 +133,7 @@ def parameters_file(workspace: Workspace, entries: Sequence[str]) -> Export:
         },
         "notes": [
             "A shunt_resistance of null means that there is no shunt; null at the end of an interval means that it is open.",
-            "standard_errors, covariance and intervals are of fit noise only; covariance is of the free parameters in "
+            "standard_errors, covariance and intervals (linear ones) are of fit noise only; covariance is of the free parameters in "
             "their order, scaled as photocurrent, ln saturation_current, ideality, series_resistance, 1/shunt_resistance.",
         ],
         "sweeps": [_parameters(workspace, entry) for entry in entries],
@@ -115,18 +142,22 @@ def parameters_file(workspace: Workspace, entries: Sequence[str]) -> Export:
     return Export(f"{_title(workspace, entries)} parameters.json", JSON, text.encode())
 
 
-def report_file(workspace: Workspace, entries: Sequence[str], pair: Sequence[str]) -> Export:
+def report_file(workspace: Workspace, entries: Sequence[str], telling: Telling) -> Export:
     """The report as one HTML file.
 
     Raises
     ------
     StepRefused
-        If ``pair`` names anything but no sweep or two sweeps of the workspace.
+        If the pair names anything but no sweep or two sweeps of the workspace.
     """
-    if len(pair) not in (0, 2):
-        raise StepRefused("A pair is two different sweeps. Choose two, or none.")
-    page = report_page(workspace, entries, pair=tuple(pair), made=datetime.now().astimezone())
+    _refuse_odd(telling.pair)
+    page = report_page(workspace, entries, telling=telling, made=datetime.now().astimezone())
     return Export(f"{_title(workspace, entries)} report.html", HTML, page.encode())
+
+
+def _refuse_odd(pair: Sequence[str]) -> None:
+    if len(pair) not in (0, 2) or len(set(pair)) < len(pair):
+        raise StepRefused("A pair is two different sweeps. Choose two, or none.")
 
 
 def to_csv(frame: pd.DataFrame) -> bytes:

@@ -28,6 +28,7 @@ from core.workspace import Workspace
 from . import exports
 from .answers import sentence_for, speak_plainly
 from .places import SAMPLE_SWEEPS
+from .telling import telling_of
 
 MOST_FILES_A_REQUEST = 100
 TRIES = 50  # at adding to a workspace that others change meanwhile
@@ -82,14 +83,13 @@ def register(server: flask.Flask, store: Store) -> None:
     @routes.get("/report/<workspace_id>")
     def hand_out_report(workspace_id: str) -> flask.Response:
         workspace = store.current(workspace_id)
-        pair = [name for name in flask.request.args.get("pair", "").split(",") if name]
-        return _export(exports.report_file(workspace, _chosen(workspace), pair))
+        return _export(exports.report_file(workspace, _chosen(workspace), telling_of(flask.request.args)))
 
     @routes.get("/table/<workspace_id>.<kind>")
     def hand_out_table(workspace_id: str, kind: str) -> flask.Response:
         workspace = store.current(workspace_id)
         table = flask.request.args.get("table", "")
-        return _export(exports.table_file(workspace, _chosen(workspace), kind, table))
+        return _export(exports.table_file(workspace, _chosen(workspace), kind, table, telling_of(flask.request.args)))
 
     @routes.get("/parameters/<workspace_id>.json")
     def hand_out_parameters(workspace_id: str) -> flask.Response:

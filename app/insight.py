@@ -22,9 +22,9 @@ from .mechanisms import BY_PARAMETER
 from .units import Units
 from .wording import number, with_uncertainty
 
-_estimates = lru_cache(maxsize=64)(estimates)
+estimated = lru_cache(maxsize=64)(estimates)
 _models = lru_cache(maxsize=64)(compare_models)
-_profiles = lru_cache(maxsize=64)(profile_intervals)
+profiles = lru_cache(maxsize=64)(profile_intervals)
 
 
 def settings_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
@@ -90,7 +90,7 @@ def is_quick(question: Question) -> bool:
 def interval_rows(sweep: Sweep, refined: Refinement, level: float, beside: Beside) -> dict[str, Any]:
     """Intervals of the refined parameters, one-sided where the data only bound one."""
     try:
-        found = _profiles(sweep, refined, level, beside=beside)
+        found = profiles(sweep, refined, level, beside=beside)
     except FitFailed as failure:
         return not_told(failure)
     units = Units.of(sweep.per_area)
@@ -134,7 +134,7 @@ def estimate_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     sweep, model = workspace.sweep(entry), workspace.fit(entry).model
     dark, levels = dark_of(workspace, entry), levels_of(workspace, entry)
     plateau = plateau_reading(sweep, dark) if sweep.lit else ""
-    rows = [_estimate(e, sweep, model) for e in _estimates(sweep, dark=dark, levels=levels, model=model)]
+    rows = [_estimate(e, sweep, model) for e in estimated(sweep, dark=dark, levels=levels, model=model)]
     gap = workspace.devices[workspace.entries[entry].device].band_gap
     return {
         "rows": [row | {"note": ""} if row["note"] == plateau else row for row in rows],  # it stands above them already

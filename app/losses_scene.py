@@ -97,6 +97,14 @@ def gap_of(workspace: Workspace, entry: str, sweep: Sweep, state: State | None) 
     return gap_from_photocurrent(max(currents), sweep.irradiance), True
 
 
+def refuse_whole(sweep: Sweep, reason: str) -> None:
+    """Raises ComparisonRefused where even the whole gap to the limit of one junction means nothing; ``reason`` is why it is not shared out."""
+    if not sweep.per_area:
+        raise ComparisonRefused(f"{reason} Without an area there is no limit to set it against either.")
+    if sweep.series_cells > 1:
+        raise ComparisonRefused(f"{reason} A limit of one junction is not that of {sweep.series_cells} cells in series either.")
+
+
 def emission_of(view: View) -> Emission:
     return "both" if view.get("emission") == "both" else "front"
 
@@ -168,6 +176,7 @@ def _whole(workspace: Workspace, entry: str, data: Mapping[str, Any], reason: st
     Raises ComparisonRefused where there is no measured power, and whatever else leaves the sweep without a limit.
     """
     sweep = workspace.sweep(entry)
+    refuse_whole(sweep, reason)
     gap, assumed = gap_of(workspace, entry, sweep, state_of(workspace, entry))
     best, power = limit(gap, sweep.temperature, sweep.irradiance, data["emission"]), readout.measured(sweep).pmp.value
     if power is None:

@@ -72,7 +72,7 @@ def pair_screen(workspace: Workspace, view: View) -> tuple[Figure, Figure, dict[
     drawn = tuple(s if s and s.worth_drawing else None for s in states)
     sides = [Side(workspace.sweep(e), s.model if s else None, full_name(workspace, e)) for e, s in zip((a, b), drawn, strict=True)]
     curves = pair_figure(*sides, normalised=normalised, zoom_key=f"pair {a} {b} {normalised}")
-    verdict = _verdict(workspace, a, b, states)
+    verdict = verdict_of(workspace, a, b, states)
     data["compared"] = _compared(workspace, a, b, verdict)
     assumed = _assumed(workspace.assumed(a) | workspace.assumed(b))
     data["sources"] = f"{_sources(drawn)} {assumed}".strip()
@@ -130,7 +130,8 @@ def _sources(states: tuple[State | None, State | None]) -> str:
     return " ".join(f"The curve of {letter} was {source}." for letter, source in zip("AB", words, strict=True) if source)
 
 
-def _verdict(workspace: Workspace, a: str, b: str, states: tuple[State | None, State | None]) -> Verdict:
+def verdict_of(workspace: Workspace, a: str, b: str, states: tuple[State | None, State | None]) -> Verdict:
+    """What can be said of the difference of each metric, from all that the workspace knows."""
     budget = budget_of(
         workspace, a, b, lambda entry: readout.measured(workspace.sweep(entry)),
         ideality=states[0].model.ideality if states[0] else 1.0,

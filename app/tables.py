@@ -14,13 +14,16 @@ import pandas as pd
 
 from core.checks import Finding, check_pair
 from core.diode import PARAMETERS
+from core.models import Model
 from core.quantity import Quantity
 from core.refinement import Refinement
 from core.sweep import Sweep
+from core.two_diode import TwoDiode
 from core.workspace import Workspace
 
 from . import readout
 from .mechanisms import BY_PARAMETER
+from .states import Origin, origin_of
 from .units import Units, celsius
 
 Row = dict[str, Any]
@@ -56,24 +59,24 @@ def headed(name: str, unit: str) -> str:
 
 def metrics_table(workspace: Workspace, entries: Iterable[str]) -> pd.DataFrame:
     """Figures of merit of the points with their standard uncertainties, and why one is missing."""
-    return _frame({**_identity(workspace, entry), **_metrics(workspace.sweep(entry))} for entry in entries)
+    return frame({**identity(workspace, entry), **_metrics(workspace.sweep(entry))} for entry in entries)
 
 
 def parameters_table(workspace: Workspace, entries: Iterable[str]) -> pd.DataFrame:
-    """Diode parameters with standard errors and intervals of fit noise, and the settings of the fit."""
-    return _frame({**_identity(workspace, entry), **_parameters(workspace, entry)} for entry in entries)
+    """Diode parameters as the workspace holds them, with standard errors and linear intervals of fit noise, and the fit's settings."""
+    return frame({**identity(workspace, entry), **_parameters(workspace, entry)} for entry in entries)
 
 
 def conditions_table(workspace: Workspace, entries: Iterable[str]) -> pd.DataFrame:
     """What was measured, how, and from which file; beside each condition that can be assumed, whether it is."""
-    return _frame({**_identity(workspace, entry), **_conditions(workspace, entry)} for entry in entries)
+    return frame({**identity(workspace, entry), **_conditions(workspace, entry)} for entry in entries)
 
 
 def checks_table(workspace: Workspace, entries: Sequence[str]) -> pd.DataFrame:
     """One row a finding."""
     columns = ["device", "group", "sweep", "severity", "check", "finding", "meaning", "remedy"]
     rows = [
-        {**_identity(workspace, entry), "severity": f.severity, "check": f.name, "finding": f.what, "meaning": f.meaning,
+        {**identity(workspace, entry), "severity": f.severity, "check": f.name, "finding": f.what, "meaning": f.meaning,
          "remedy": f.remedy}
         for entry, f in all_findings(workspace, entries)
     ]
@@ -81,7 +84,7 @@ def checks_table(workspace: Workspace, entries: Sequence[str]) -> pd.DataFrame:
 
 
 def tables(workspace: Workspace, entries: Sequence[str]) -> dict[str, pd.DataFrame]:
-    """All four by name, in the order of a workbook's sheets."""
+    """All four by name, in the order of a workbook's sheets; those that take fits are in ``app.told_tables``."""
     return {
         "metrics": metrics_table(workspace, entries),
         "parameters": parameters_table(workspace, entries),
@@ -96,9 +99,9 @@ def summary_table(workspace: Workspace, entries: Sequence[str]) -> pd.DataFrame:
     for entry, finding in all_findings(workspace, entries):
         if finding.severity != "note":
             flags.setdefault(entry, []).append(finding.name)
-    return _frame(
+    return frame(
         {
-            **_identity(workspace, entry),
+            **identity(workspace, entry),
             **_metrics(workspace.sweep(entry)),
             **_parameters(workspace, entry),
             **_conditions(workspace, entry),
@@ -150,14 +153,15 @@ def _of_pairs(workspace: Workspace, entry: str, entries: Sequence[str]) -> Itera
             yield from check_pair(a, b)
 
 
-def _frame(rows: Iterable[Row]) -> pd.DataFrame:
+def frame(rows: Iterable[Row]) -> pd.DataFrame:
     """Columns in the order in which the rows bring them."""
     rows = list(rows)
     columns = list(dict.fromkeys(name for row in rows for name in row))
     return pd.DataFrame(rows, columns=columns)
 
 
-def _identity(workspace: Workspace, entry_id: str) -> Row:
+def identity(workspace: Workspace, entry_id: str) -> Row:
+    """Whose row it is."""
     entry = workspace.entry(entry_id)
     device = workspace.devices[entry.device]
     return {"device": device.name, "group": device.group, "sweep": entry.name}
@@ -170,34 +174,35 @@ def _metrics(sweep: Sweep) -> Row:
     for metric in METRICS:
         quantity: Quantity = getattr(values, metric)
         name, (factor, unit) = metric_name(metric, units), metric_unit(metric, units)
-        row[headed(name, unit)] = _times(quantity.value, factor)
-        row[headed(f"{name} standard uncertainty", unit)] = _times(quantity.uncertainty, factor)
+        row[headed(name, unit)] = times(quantity.value, factor)
+        row[headed(f"{name} standard uncertainty", unit)] = times(quantity.uncertainty, factor)
         if quantity.reason:
             reasons.append(f"{name}: {quantity.reason}")
     return {**row, "remarks on metrics": "; ".join(reasons)}
 
 
-def _times(value: float | None, factor: float) -> float:
+def times(value: float | None, factor: float) -> float:
+    """A cell of a number; empty where there is none."""
     return math.nan if value is None else value * factor
 
 
 def _parameters(workspace: Workspace, entry: str) -> Row:
-    fit, refined = workspace.fit(entry), workspace.refined(entry)
+    model, refined = workspace.fit(entry).model, workspace.refined(entry)
     units = Units.of(workspace.sweep(entry).per_area)
-    row: Row = {"model": _model_state(fit.model is not None, refined)}
-    for parameter in PARAMETERS:
+    row: Row = {"model": _model_state(model, origin_of(workspace, entry))}
+    for parameter in model.parameters if model is not None else PARAMETERS:
         name, unit, factor = parameter_name(parameter, units), units.parameter_unit(parameter), units.parameter_factor(parameter)
         error, low, high, state = None, None, None, ""
         if refined is not None:
             error = refined.standard_errors.get(parameter)
             low, high = refined.intervals.get(parameter, (None, None))
             state = parameter_state(refined, parameter)
-        row[headed(name, unit)] = _times(None if fit.model is None else getattr(fit.model, parameter), factor)
-        row[headed(f"{name} standard error", unit)] = _times(error, factor)
-        row[headed(f"{name} interval from", unit)] = _times(low, factor)
-        row[headed(f"{name} interval to", unit)] = _times(high, factor)
+        row[headed(name, unit)] = times(None if model is None else getattr(model, parameter), factor)
+        row[headed(f"{name} standard error", unit)] = times(error, factor)
+        row[headed(f"{name} linear interval from", unit)] = times(low, factor)
+        row[headed(f"{name} linear interval to", unit)] = times(high, factor)
         row[f"{name} state"] = state
-    row[headed("rms residual", units.current)] = _times(None if refined is None else refined.rmse, units.current_factor)
+    row[headed("rms residual", units.current)] = times(None if refined is None else refined.rmse, units.current_factor)
     row["points used"] = math.nan if refined is None else refined.points
     row["confidence of intervals (%)"] = math.nan if refined is None else 100 * refined.settings.confidence
     row["uncertainty of parameters"] = "" if refined is None else "fit noise only"
@@ -205,10 +210,11 @@ def _parameters(workspace: Workspace, entry: str) -> Row:
     return row
 
 
-def _model_state(there: bool, refined: Refinement | None) -> str:
-    if refined is not None:
-        return f"{refined.settings.model}, refined"
-    return "one diode, set by hand, not refined" if there else "none"
+def _model_state(model: Model | None, origin: Origin | None) -> str:
+    if model is None or origin is None:
+        return "none"
+    kind = "two diodes" if isinstance(model, TwoDiode) else "one diode"
+    return f"{kind}, refined" if origin == "refined" else f"{kind}, {origin}, not refined"
 
 
 def parameter_state(refined: Refinement, parameter: str) -> str:
@@ -225,7 +231,7 @@ def settings_text(refined: Refinement) -> str:
     """The settings of a fit on one line."""
     settings = refined.settings
     window = "all voltages" if settings.window is None else f"{settings.window[0]:g} to {settings.window[1]:g} V"
-    held = ", ".join(p.replace("_", " ") for p in PARAMETERS if p in settings.hold) or "nothing"
+    held = ", ".join(p.replace("_", " ") for p in settings.parameters if p in settings.hold) or "nothing"
     bounds = ", ".join(f"{name.replace('_', ' ')} {low:g} to {high:g}" for name, (low, high) in settings.bounds.items())
     return (
         f"{settings.model}; {refined.weights} weights; {settings.loss} loss; {window}; "
@@ -239,8 +245,8 @@ def _conditions(workspace: Workspace, entry_id: str) -> Row:
     row: Row = {
         "measured in": "light" if sweep.lit else "dark",
         "direction": sweep.direction,
-        "area (cm²)": _times(conditions.area, 1.0),
-        "area in the file (cm²)": _times(conditions.file_area, 1.0),
+        "area (cm²)": times(conditions.area, 1.0),
+        "area in the file (cm²)": times(conditions.file_area, 1.0),
         "irradiance (mW cm⁻²)": conditions.irradiance * 1e3,
         "irradiance given": _given("irradiance", assumed),
         "temperature (°C)": round(celsius(conditions.temperature), 6),
@@ -248,8 +254,8 @@ def _conditions(workspace: Workspace, entry_id: str) -> Row:
         "cells in series": conditions.series_cells,
         "cells in series given": _given("series_cells", assumed),
         "units given": _given("units", assumed),
-        "band gap (eV)": _times(device.band_gap, 1.0),
-        "scan rate (V s⁻¹)": _times(sweep.scan_rate, 1.0),
+        "band gap (eV)": times(device.band_gap, 1.0),
+        "scan rate (V s⁻¹)": times(sweep.scan_rate, 1.0),
         "points": sweep.voltage.size,
         "file": entry.source_name,
         "SHA-256 of the file": entry.source or "",

@@ -130,13 +130,22 @@
   }
   const here = () => encodeURIComponent(bench.stamp().workspace);
 
-  function saveReport() {
-    if (!bench.scene?.entry) return;
-    const { a, b } = document.body.dataset.screen === "pair" ? bench.pairChoice() : {};
-    if (a && b) return download(`report/${here()}`, { entries: `${a},${b}`, pair: `${a},${b}` });
+  /** What the screen shows and how it tells it, as an address asks for it. */
+  function shown() {
+    const { screen } = document.body.dataset;
+    const { a, b } = screen === "pair" ? bench.pairChoice() : {};
+    const pair = a && b ? `${a},${b}` : "";
     const laid = (bench.view.overlay ?? []).filter((entry) => document.getElementById(`sweep-${entry}`));
-    download(`report/${here()}`, { entries: [bench.scene.entry, ...laid].join(",") });
+    const losses = screen === "losses" ? bench.losses?.entry : null;
+    const { emission, order } = bench.view;
+    const told = { pair, emission, order: order?.join(",") };
+    return {
+      entries: pair || losses || [bench.scene?.entry, ...laid].filter(Boolean).join(","),
+      ...Object.fromEntries(Object.entries(told).filter(([, choice]) => choice)),
+    };
   }
+  const saveReport = () => shown().entries && download(`report/${here()}`, shown());
+  const saveTable = (kind, table) => shown().entries && download(`table/${here()}.${kind}`, { ...shown(), ...(table && { table }) });
 
   /** A change of the sweep that was chosen last, on what the hand has left. */
   function fit(kind) {
@@ -181,6 +190,10 @@
     "save-png": () => savePicture("png"),
     "save-report": saveReport,
     "save-csv": () => download(`table/${here()}.csv`),
+    "save-pair": () => saveTable("csv", "pair"),
+    "save-shares": () => saveTable("csv", "shares"),
+    "save-losses": () => saveTable("csv", "losses"),
+    "save-shown": () => saveTable("xlsx"),
     "save-json": () => download(`parameters/${here()}.json`),
     "save-xlsx": () => download(`table/${here()}.xlsx`),
   };

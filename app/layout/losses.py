@@ -6,7 +6,7 @@ from app.ids import Id
 from app.mechanisms import MECHANISMS
 
 from .bench import PLOT_CONFIG
-from .pair import _choice
+from .pair import _choice, _table
 
 
 def losses() -> list:
@@ -26,9 +26,12 @@ def losses() -> list:
                                 _choice("shares", "ladder", "shares"),
                                 _choice("one after another", "ladder", "steps"),
                                 html.Button("projector", className="quiet", title="One chart, large type (P)", **{"data-act": "projector"}),
+                                html.Button("report", className="quiet", title="This device as one HTML file", **{"data-act": "save-report"}),
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.LADDER}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.LADDER}),
+                                _table("CSV", "save-losses", "Share and rung of each mechanism"),
+                                _table("XLSX", "save-shown", "All tables of this device"),
                             ],
                         ),
                     ],

@@ -31,6 +31,8 @@ def pair() -> list:
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.PAIR_PLOT}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.PAIR_PLOT}),
+                                _table("CSV", "save-pair", "Both, difference and verdict of each metric"),
+                                _table("XLSX", "save-shown", "All tables of these two"),
                             ],
                         ),
                     ],
@@ -57,6 +59,7 @@ def pair() -> list:
                             children=[
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.PAIR_BARS}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.PAIR_BARS}),
+                                _table("CSV", "save-shares", "Share of each mechanism in the difference"),
                             ],
                         ),
                     ],
@@ -90,6 +93,10 @@ def pair() -> list:
 
 def _choice(words: str, group: str, value: str) -> html.Button:
     return html.Button(words, role="radio", className="quiet", **{f"data-{group}": value, "aria-checked": "false"})
+
+
+def _table(words: str, act: str, title: str) -> html.Button:
+    return html.Button(words, className="quiet", title=title, **{"data-act": act})
 
 
 def _comparison() -> html.Table:

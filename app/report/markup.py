@@ -32,7 +32,8 @@ def join(parts: Iterable[object], between: str = "") -> Markup:
 def symbol(name: str) -> Markup:
     """``Jsc`` with its index set low; a plain name as it is."""
     for letter, index in (("J", "sc"), ("I", "sc"), ("V", "oc"), ("J", "mp"), ("I", "mp"), ("V", "mp"), ("P", "mp"),
-                          ("J", "ph"), ("I", "ph"), ("J", "0"), ("I", "0"), ("R", "s"), ("R", "sh")):  # fmt: skip
+                          ("J", "ph"), ("I", "ph"), ("J", "0"), ("I", "0"), ("R", "s"), ("R", "sh"),
+                          ("J", "01"), ("I", "01"), ("J", "02"), ("I", "02"), ("n", "1"), ("n", "2")):  # fmt: skip
         if name == letter + index:
             return Markup(f"<i>{letter}</i><sub>{index}</sub>")
     return Markup("<i>n</i>") if name == "n" else text(name)

@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Collection
 from dataclasses import dataclass
 
+from app.telling import EMISSIONS
+
 
 @dataclass(frozen=True)
 class Method:
@@ -39,7 +41,12 @@ METHODS = (
     Method(
         "One-diode model",
         "J = Jph − J0·(exp((V + J·Rs)/(n·Ns·kT/q)) − 1) − (V + J·Rs)/Rsh, solved exactly with the Wright omega function.",
-        topic="model",
+        topic="one diode",
+    ),
+    Method(
+        "Two-diode model",
+        "The same with J0₁ and n₁, J0₂ and n₂ of two diodes in parallel, solved exactly in the junction voltage V + J·Rs.",
+        topic="two diodes",
     ),
     Method(
         "Refining",
@@ -49,21 +56,32 @@ METHODS = (
     ),
     Method(
         "Parameter uncertainties",
-        "Standard errors and intervals from the covariance at the minimum, scaled by the residual: fit noise only.",
+        "Standard errors from the covariance at the minimum, scaled by the residual: fit noise only.",
         topic="refined",
     ),
+    Method(
+        "Intervals by profile likelihood",
+        "A parameter moves, all others adjust, until the sum of squares has grown by the factor 1 + t²/ν; where the data only "
+        "bound it, the interval is open.",
+        ('D. M. Bates, D. G. Watts, "Nonlinear Regression Analysis and Its Applications", Wiley 1988',),
+        topic="profile",
+    ),
+    Method("Linear intervals", "From the covariance at the minimum, where a profile cannot be had.", topic="linear"),
     Method(
         "Robust loss",
         "Points beyond a few noise widths count less.",
         ("P. J. Huber, Ann. Math. Stat. 35 (1964) 73",),
         topic="robust",
     ),
-    Method(
-        "Detailed-balance limit",
-        "Every photon of AM1.5G above the band gap gives one electron; black-body emission from the front of the cell is the "
-        "only recombination.",
-        ("W. Shockley, H. J. Queisser, J. Appl. Phys. 32 (1961) 510", "ASTM G173-03"),
-        topic="losses",
+    *(
+        Method(
+            "Detailed-balance limit",
+            f"Every photon of AM1.5G above the band gap gives one electron; black-body emission from {faces} is the only "
+            "recombination.",
+            ("W. Shockley, H. J. Queisser, J. Appl. Phys. 32 (1961) 510", "ASTM G173-03"),
+            topic=emission,
+        )
+        for emission, faces in EMISSIONS.items()
     ),
     Method(
         "External radiative efficiency",
@@ -74,7 +92,7 @@ METHODS = (
     Method(
         "Shares of the mechanisms",
         "The power of all 32 mixtures of the two states is computed exactly; a mechanism's share is its gain averaged over "
-        "all orders of change. Intervals by drawing the fits within their covariances.",
+        "all orders of change; one after another, they depend on the order that is given. Intervals by drawing the fits within their covariances.",
         ('L. S. Shapley, "A value for n-person games", Contributions to the Theory of Games II (1953) 307',),
         topic="shares",
     ),

@@ -6,18 +6,19 @@ import math
 from collections.abc import Callable, Sequence
 
 from app import tables
+from app.fitted import Fitted
 from app.mechanisms import BY_PARAMETER
 from app.readout import measured
 from app.units import Units, celsius
 from app.wording import concise, field, number, plus_minus
-from core.diode import PARAMETERS
+from core.profile import Interval
 from core.quantity import Quantity
-from core.refinement import Refinement
 from core.workspace import Workspace
 
 from .markup import Markup, element, join, symbol, table, text
 
 _COLUMNS = 4  # of numbers that a page carries side by side
+_FEW = 2  # columns in which an interval stands beside its value
 ASSUMED = element("em", "assumed", class_="assumed")
 
 
@@ -32,27 +33,52 @@ def metrics_tables(workspace: Workspace, entries: Sequence[str], names: Sequence
             factor, unit = tables.metric_unit(metric, units)
             cells = [_quantity(getattr(measured(sweep), metric), factor) for sweep in sweeps]
             rows.append([_headed(tables.metric_name(metric, units), unit), *cells])
-        return table(["", *(names[i] for i in part)], rows, "numbers sweeps")
+        return table(["", *(names[i] for i in part)], told_once(rows), "numbers sweeps")
 
     return _in_blocks(workspace, entries, block)
 
 
-def parameters_tables(workspace: Workspace, entries: Sequence[str], names: Sequence[str]) -> Markup:
-    """Parameters with standard errors, and intervals below them."""
+def told_once(rows: Sequence[Sequence[Markup | str]]) -> list[list[Markup | str]]:
+    """Neighbours with the same numbers, as Pmp and PCE have at one sun, in one row."""
+    told: list[list[Markup | str]] = []
+    for row in rows:
+        if told and any(sign.isdigit() for cell in row[1:] for sign in cell) and list(row[1:]) == told[-1][1:]:
+            told[-1][0] = join([told[-1][0], " = ", row[0]])
+        else:
+            told.append(list(row))
+    return told
 
-    def block(part: Sequence[int]) -> Markup:
-        units = Units.of(workspace.sweep(entries[part[0]]).per_area)
-        rows = [
-            [
-                join([mark(parameter), _headed(tables.parameter_name(parameter, units), units.parameter_unit(parameter))]),
-                *(_parameter(workspace, entries[i], parameter, units) for i in part),
+
+def parameters_tables(fits: Sequence[tuple[str, Fitted]], units_of: Callable[[str], Units]) -> Markup:
+    """Parameters with standard errors, and intervals below them.
+
+    Parameters
+    ----------
+    fits : sequence of (name, Fitted)
+        With the name of the sweep.
+    units_of : callable
+        Units of a sweep by its entry.
+    """
+    blocks = []
+    kinds = dict.fromkeys((fit.kind, units_of(fit.entry)) for _, fit in fits)
+    for kind, units in kinds:
+        like = [(name, fit) for name, fit in fits if (fit.kind, units_of(fit.entry)) == (kind, units)]
+        heads = [name if len(kinds) == 1 else f"{name}, {kind}" for name, _ in like]
+        for at, columns in _portions(len(like)):
+            part, names = like[at : at + columns], heads[at : at + columns]
+            rows = [
+                [
+                    join([mark(parameter), _headed(tables.parameter_name(parameter, units), units.parameter_unit(parameter))]),
+                    *(_parameter(fit, parameter, units) for _, fit in part),
+                ]
+                for parameter in part[0][1].model.parameters
             ]
-            for parameter in PARAMETERS
-        ]
-        rows.append(["", *(_fit(workspace, entries[i], units) for i in part)])
-        return table(["", *(names[i] for i in part)], rows, "numbers sweeps")
-
-    return _in_blocks(workspace, entries, block)
+            rows.append(["fit", *(element("span", fit.words, class_="reason") for _, fit in part)])
+            if any(fit.refinement for _, fit in part):
+                rows.append([_headed("rms residual", units.current), *(_residual(fit, units) for _, fit in part)])
+                rows.append(["points used", *(str(fit.refinement.points) if fit.refinement else "–" for _, fit in part)])
+            blocks.append(table(["", *names], rows, "numbers sweeps few" if columns <= _FEW else "numbers sweeps"))
+    return join(blocks)
 
 
 def conditions_tables(workspace: Workspace, entries: Sequence[str], names: Sequence[str]) -> Markup:
@@ -92,9 +118,16 @@ def _in_blocks(workspace: Workspace, entries: Sequence[str], block: Callable[[Se
     blocks = []
     for per_area in (True, False):
         like = [i for i, entry in enumerate(entries) if workspace.sweep(entry).per_area == per_area]
-        columns = math.ceil(len(like) / math.ceil(len(like) / _COLUMNS)) if like else 1  # tables of about equal width
-        blocks += [block(like[at : at + columns]) for at in range(0, len(like), columns)]
+        blocks += [block(like[at : at + columns]) for at, columns in _portions(len(like))]
     return join(blocks)
+
+
+def _portions(count: int) -> list[tuple[int, int]]:
+    """Where tables of about equal width begin, and how many columns they have."""
+    if not count:
+        return []
+    columns = math.ceil(count / math.ceil(count / _COLUMNS))
+    return [(at, columns) for at in range(0, count, columns)]
 
 
 def _headed(name: str, unit: str) -> Markup:
@@ -113,38 +146,33 @@ def _condition(words: str, assumed: bool) -> Markup:
     return join([words, " " if words else "", ASSUMED]) if assumed else text(words)
 
 
-def _parameter(workspace: Workspace, entry: str, parameter: str, units: Units) -> Markup:
-    fit, refined, factor = workspace.fit(entry), workspace.refined(entry), units.parameter_factor(parameter)
-    if fit.model is None or not hasattr(fit.model, parameter):
-        return text("–")
+def _parameter(fit: Fitted, parameter: str, units: Units) -> Markup:
+    factor = units.parameter_factor(parameter)
     value = getattr(fit.model, parameter) * factor
-    if refined is None:
+    if fit.refinement is None:
         return text(number(value))
-    state = tables.parameter_state(refined, parameter)
-    if state == "held":
+    if fit.state(parameter) == "held":
         return join([number(value), " ", element("span", "held", class_="reason")])
-    error = refined.standard_errors.get(parameter)
+    error = fit.refinement.standard_errors.get(parameter)
     known = concise(value, None if error is None else error * factor)
-    return join([known, element("br"), element("span", interval_text(refined, parameter, factor), class_="interval")])
+    return join([known, " ", element("span", interval_text(fit.intervals[parameter], factor), class_="interval")])
 
 
-def interval_text(refined: Refinement, parameter: str, factor: float = 1.0) -> str:
+def interval_text(interval: Interval, factor: float = 1.0) -> str:
     """``22.58 … 22.62``; one-sided where the data only bound the parameter."""
-    low, high = (end * factor for end in refined.intervals.get(parameter, (-math.inf, math.inf)))
-    if low <= 0 and math.isinf(high):
+    low, high = interval.low * factor, interval.high * factor
+    if not interval.low_bounded and not interval.high_bounded:
         return "not determined"
-    if math.isinf(high):
+    if not interval.high_bounded:
         return f"> {number(low, digits=2)}"
-    if low <= 0:
+    if not interval.low_bounded:
         return f"< {number(high, digits=2)}"
     # Two digits of the interval's width, so that its ends differ.
     width = (high - low) / 2
-    return f"{number(low, width)} … {number(high, width)}"
+    ends = [number(end, width) for end in (low, high)]
+    mantissa, _, power = ends[0].partition("·10")
+    return f"{mantissa} … {ends[1]}" if power and ends[1].endswith(f"·10{power}") else " … ".join(ends)
 
 
-def _fit(workspace: Workspace, entry: str, units: Units) -> Markup:
-    refined = workspace.refined(entry)
-    if refined is None:
-        return element("span", "set by hand, not refined" if workspace.fit(entry).model else "no model", class_="reason")
-    rmse = f"{plus_minus(refined.rmse * units.current_factor)} {units.current}"
-    return element("span", f"rms residual {rmse}, {refined.points} points", class_="reason")
+def _residual(fit: Fitted, units: Units) -> str:
+    return plus_minus(fit.refinement.rmse * units.current_factor) if fit.refinement else "–"

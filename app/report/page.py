@@ -10,8 +10,10 @@ from functools import lru_cache
 from pathlib import Path
 
 from app import tables
+from app.fitted import fits_of
 from app.readout import measured
 from app.scene import companions_of, short_name
+from app.telling import Telling
 from app.units import Units
 from app.wording import concise
 from core.workspace import Workspace
@@ -31,11 +33,12 @@ CAUTIONS = (
     "source-meter outputs, and strings of cells in light, stay live; some devices hold lead and solvents. Local rules and "
     "trained staff decide.",
 )  # fmt: skip
+_WHOLE = 16  # files
 _NAMED = 3  # sweeps named beside a statement before they are only counted
 _FIRST_COLUMNS = ("jsc", "voc", "fill_factor", "efficiency")
 
 
-def report_page(workspace: Workspace, entries: Sequence[str], *, made: datetime, pair: tuple[str, ...] = ()) -> str:
+def report_page(workspace: Workspace, entries: Sequence[str], *, made: datetime, telling: Telling = Telling()) -> str:
     """The report on some sweeps, and on those measured with them on the same device under the same light.
 
     Parameters
@@ -44,22 +47,23 @@ def report_page(workspace: Workspace, entries: Sequence[str], *, made: datetime,
     entries : sequence of str
     made : datetime
         With its time zone.
-    pair : tuple of two str, or ()
-        Sweeps to set against each other; () takes the first lit sweeps where the report is on exactly two devices.
+    telling : Telling
+        How losses are told, and the sweeps to set against each other; without a pair the first lit sweeps where the report
+        is on exactly two devices.
 
     Raises
     ------
     StepRefused
         If a sweep is not in the workspace.
     """
-    devices = _by_device(workspace, [*entries, *pair])
+    devices = _by_device(workspace, [*entries, *telling.pair])
     shown = [entry for sweeps in devices.values() for entry in sweeps]
-    pair = pair or _only_two(workspace, devices)
+    pair = telling.pair or _only_two(workspace, devices)
     body = [
         _title(workspace, shown, devices, made),
         *([pair_section(workspace, *pair)] if pair else []),
-        *(device_section(workspace, device, sweeps, f"device-{place}") for place, (device, sweeps) in enumerate(devices.items(), start=1)),
-        _account(workspace, shown, pair),
+        *(device_section(workspace, device, sweeps, f"device-{place}", telling) for place, (device, sweeps) in enumerate(devices.items(), start=1)),
+        _account(workspace, shown, pair, telling),
     ]
     style = _style_sheet()
     policy = f"default-src 'none'; style-src 'sha256-{_digest(style)}'; base-uri 'none'; form-action 'none'"
@@ -131,25 +135,25 @@ def _short(workspace: Workspace, entry: str, metric: str) -> str:
     return number if sweep.per_area or metric != "jsc" else f"{number} A"
 
 
-def _account(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...]) -> Markup:
+def _account(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...], telling: Telling) -> Markup:
     """What others need to check and repeat: reporting table, methods, files, versions, cautions."""
     reporting = [[item.name, _statements(item)] for item in reporting_items(workspace, entries)]
-    methods = methods_for(_topics(workspace, entries, pair))
+    methods = methods_for(_topics(workspace, entries, pair, telling))
     files = [[name, element("code", sha256 or "–"), _who(tuple(sweeps))] for name, sha256, sweeps in files_behind(workspace, entries)]
+    listing = table(["file", "SHA-256", "sweep"], files, "words files")
     return element(
         "section",
         element("h2", "Reporting table"),
-        paragraph("What journals ask for, from the files and the conditions; what they do not say is marked.", class_="under"),
+        paragraph("What journals ask for. What no file says is marked, whether the user states it or nobody does.", class_="under"),
         table(["", ""], reporting, "words reporting"),
         element("h2", "Methods"),
         table(["", ""], [[m.name, join([m.how, " ", element("cite", "; ".join(m.sources))])] for m in methods], "words methods"),
         paragraph("Sources are cited from memory.", class_="under"),
-        element("h2", "Files"),
-        table(["file", "SHA-256", "sweep"], files, "words files"),
+        # A short list stays in one piece.
+        element("div", element("h2", "Files"), listing, class_="block" if len(files) <= _WHOLE else None),
         element("h2", "Versions"),
         paragraph(", ".join(f"{name} {version}" for name, version in versions().items())),
-        element("h2", "Cautions"),
-        element("ul", *(element("li", caution) for caution in CAUTIONS)),
+        element("div", element("h2", "Cautions"), element("ul", *(element("li", caution) for caution in CAUTIONS)), class_="block"),
         class_="account",
     )
 
@@ -157,13 +161,18 @@ def _account(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...]
 def _statements(item: Item) -> Markup:
     alone = len(item.values) == 1
     parts = [
-        element("div", element("em", words, class_="missing") if words == MISSING else _assumed(words), "" if alone else f" ({_who(who)})")
+        element("div", _marked(words, words in item.stated), "" if alone else f" ({_who(who)})")
         for words, who in item.values
     ]
     return join(parts) if parts else element("div", element("em", MISSING, class_="missing"))
 
 
-def _assumed(words: str) -> Markup | str:
+def _marked(words: str, stated: bool) -> Markup | str:
+    """A statement with a mark where it is not a file's or a person's for this sweep."""
+    if words == MISSING:
+        return element("em", words, class_="missing")
+    if stated:
+        return join([words, " ", element("em", "stated by the user", class_="stated")])
     plain = words.removesuffix("(assumed)")
     return join([plain, element("em", "assumed", class_="assumed")]) if plain != words else words
 
@@ -172,15 +181,14 @@ def _who(sweeps: tuple[str, ...]) -> str:
     return ", ".join(sweeps) if len(sweeps) <= _NAMED else f"{len(sweeps)} sweeps"
 
 
-def _topics(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...]) -> set[str]:
+def _topics(workspace: Workspace, entries: Sequence[str], pair: tuple[str, ...], telling: Telling) -> set[str]:
     topics = {"pair"} if pair else set()
     if any(workspace.sweep(entry).lit for entry in entries):
-        topics |= {"losses", "shares"}
-    for entry in entries:
-        refined = workspace.refined(entry)
-        topics |= {"model"} if workspace.fit(entry).model is not None else set()
-        topics |= {"refined"} if refined is not None else set()
-        topics |= {"robust"} if refined is not None and refined.settings.loss == "robust" else set()
+        topics |= {"losses", telling.emission, "shares"}
+    for fit in (fit for entry in entries for fit in fits_of(workspace, entry)):
+        topics |= {"model", fit.kind}
+        topics |= {"refined", "linear" if fit.linear else "profile"} if fit.refinement is not None else set()
+        topics |= {"robust"} if fit.refinement is not None and fit.refinement.settings.loss == "robust" else set()
     if any(finding.name == "hysteresis" for _, finding in tables.all_findings(workspace, entries)):
         topics.add("hysteresis")
     return topics

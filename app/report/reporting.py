@@ -19,6 +19,7 @@ from core.workspace import Workspace
 
 MISSING = "missing"
 
+
 @dataclass(frozen=True)
 class Item:
     """One line of the table.
@@ -30,12 +31,15 @@ class Item:
         Each different statement with the names of the sweeps that it holds for.
     missing, assumed : bool
         For at least one of the sweeps.
+    stated : frozenset of str
+        Those of the statements that the user makes and no file.
     """
 
     name: str
     values: tuple[tuple[str, tuple[str, ...]], ...]
     missing: bool
     assumed: bool
+    stated: frozenset[str] = frozenset()
 
 
 def reporting_items(workspace: Workspace, entries: Sequence[str]) -> list[Item]:
@@ -46,14 +50,14 @@ def reporting_items(workspace: Workspace, entries: Sequence[str]) -> list[Item]:
         return _item(workspace, name, of, lambda entry: says(workspace.sweep(entry)))
 
     def stated(name: str, of: Sequence[str]) -> Item:
-        return _item(workspace, TEXTS[name], of, lambda entry: _said(workspace, entry, name))
+        return _item(workspace, TEXTS[name], of, lambda entry: _said(workspace, entry, name), name)
 
     return [
         stated("light_source", light),
         stated("spectrum", light),
         item("irradiance", light, lambda s: _unless_assumed(s, "irradiance", f"{field(1e3 * s.irradiance)} mW cm⁻²")),
         stated("irradiance_setting", light),
-        _item(workspace, "area", entries, lambda entry: _area(workspace, entry)),
+        _item(workspace, "area", entries, lambda entry: _area(workspace, entry), "area_kind"),
         item("scan rate", entries, lambda s: MISSING if s.scan_rate is None else f"{field(1e3 * s.scan_rate)} mV s⁻¹"),
         item("scan direction", entries, lambda s: f"{s.direction}, {'light' if s.lit else 'dark'}"),
         item("voltage range and step", entries, _range),
@@ -65,12 +69,15 @@ def reporting_items(workspace: Workspace, entries: Sequence[str]) -> list[Item]:
     ]
 
 
-def _item(workspace: Workspace, name: str, entries: Sequence[str], says: Callable[[str], str]) -> Item:
+def _item(workspace: Workspace, name: str, entries: Sequence[str], says: Callable[[str], str], statement: str = "") -> Item:
     found: dict[str, list[str]] = {}
+    stated = set()
     for entry in entries:
-        found.setdefault(says(entry), []).append(workspace.sweep(entry).name)
+        found.setdefault(words := says(entry), []).append(workspace.sweep(entry).name)
+        if statement and words != MISSING and (known := said(workspace, entry, statement)) and known.by == "user":
+            stated.add(words)
     values = tuple((words, tuple(names)) for words, names in found.items())
-    return Item(name, values, MISSING in found, any(words.endswith("(assumed)") for words in found))
+    return Item(name, values, MISSING in found, any(words.endswith("(assumed)") for words in found), frozenset(stated))
 
 
 def _said(workspace: Workspace, entry: str, name: str) -> str:

@@ -14,10 +14,11 @@ import pandas as pd
 import pytest
 
 from app import exports, files
+from app.telling import Telling
 from core import steps
 from core.refine import refine
 from core.store import Store
-from tests.app.benches import CELL, LIT, REVERSE, bench
+from tests.app.benches import CELL, LIT, OTHER, REVERSE, bench
 
 # What spreadsheets may take for a formula; the first three are common in attacks, the others in the formats' own rules.
 FORMULAS = ("=1+1", '=HYPERLINK("http://host.invalid","x")', "@SUM(A1)", "+1-2", "-2+3", "\t=1+1", "\r=1+1", "  =1+1", "＝1+1")
@@ -70,11 +71,15 @@ def test_without_a_choice_it_holds_the_whole_tray(client, store):
     assert len(frame_of(client.get(f"/files/table/{workspace}.csv"))) == 2
 
 
-@pytest.mark.parametrize("table", ["metrics", "parameters", "conditions", "checks"])
+TABLES = ["metrics", "parameters", "conditions", "checks", "losses", "intervals", "estimates", "pair", "shares"]
+
+
+@pytest.mark.parametrize("table", TABLES)
 def test_each_table_is_to_be_had_alone_and_as_a_sheet(client, store, table):
-    workspace, _ = refined(store, LIT)
-    alone = frame_of(client.get(f"/files/table/{workspace}.csv?table={table}"))
-    book = client.get(f"/files/table/{workspace}.xlsx").data
+    workspace, entries = refined(store, LIT, OTHER)
+    pair = f"emission=both&pair={','.join(entries)}"
+    alone = frame_of(client.get(f"/files/table/{workspace}.csv?table={table}&{pair}"))
+    book = client.get(f"/files/table/{workspace}.xlsx?{pair}").data
     sheet = pd.read_excel(io.BytesIO(book), sheet_name=table, engine="calamine")
     assert list(sheet.columns) == list(alone.columns) and len(sheet) == len(alone)
     numbers = alone.select_dtypes("number").columns
@@ -91,13 +96,24 @@ def test_no_text_of_a_file_becomes_a_formula(words):
         entries={entry: replace(workspace.entries[entry], name=words, source_name=words)},
         derived={},
     )
-    for table in ("", "checks"):
+    for table in ("", "checks", "losses", "intervals", "estimates"):
         text = exports.table_file(workspace, [entry], "csv", table).data.decode("utf-8-sig")
         cells = [cell for row in csv.reader(io.StringIO(text, newline="")) for cell in row]
         assert f"'{words}" in cells and words not in cells
     book = openpyxl.load_workbook(io.BytesIO(exports.table_file(workspace, [entry], "xlsx").data))
     kinds = {cell.data_type for sheet in book for row in sheet.iter_rows() for cell in row if cell.value is not None}
     assert kinds <= {"s", "n"}  # "f" would be a formula
+
+
+def test_names_of_a_pair_are_no_formulas_either():
+    workspace, entries = bench(LIT, OTHER)
+    workspace = replace(workspace, devices={d.id: replace(d, name="=1+1") for d in workspace.devices.values()}, derived={})
+    telling = Telling(pair=tuple(entries))
+    for table in ("pair", "shares"):
+        text = exports.table_file(workspace, entries, "csv", table, telling).data.decode("utf-8-sig")
+        assert "'=1+1 forward" in text and "\n=" not in text and ",=" not in text
+    book = openpyxl.load_workbook(io.BytesIO(exports.table_file(workspace, entries, "xlsx", "", telling).data))
+    assert {cell.data_type for sheet in book for row in sheet.iter_rows() for cell in row if cell.value is not None} <= {"s", "n"}
 
 
 def test_a_negative_number_stays_a_number():
@@ -139,12 +155,23 @@ def test_the_report_is_a_file_of_html(client, store):
     assert answer.headers["Content-Disposition"] == 'attachment; filename="A report.html"'
 
 
+def test_the_address_of_a_report_says_how_losses_are_told(client, store):
+    workspace, (forward,) = refined(store, LIT)
+    order = "shunt_resistance,photocurrent,saturation_current,ideality,series_resistance"
+    page = client.get(f"/files/report/{workspace}?entries={forward}&emission=both&order={order}").text
+    assert "both faces of the cell" in page and "Rsh, Jph, J0, n, Rs" in page
+    assert "the front of the cell alone" in client.get(f"/files/report/{workspace}?entries={forward}").text
+
+
 @pytest.mark.parametrize(
     "path",
     [
         "table/WORKSPACE.csv?entries=nowhere",
         "table/WORKSPACE.csv?table=secrets",
         "table/WORKSPACE.pdf",
+        "table/WORKSPACE.csv?table=pair",
+        "table/WORKSPACE.csv?table=pair&pair=ENTRY,nowhere",
+        "table/WORKSPACE.csv?table=shares&pair=ENTRY,ENTRY",
         "table/nowhere.csv",
         "parameters/WORKSPACE.json?entries=nowhere",
         "points/WORKSPACE/nowhere.csv",

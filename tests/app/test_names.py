@@ -15,6 +15,7 @@ from app import exports, scene, tables
 from app.files import safe_name
 from app.losses_scene import losses_screen
 from app.pair_scene import pair_screen
+from app.telling import Telling
 from core import steps
 from core.reading import read_sweeps
 from core.store import History
@@ -122,7 +123,7 @@ def test_no_two_rows_of_the_ladder_fall_together(named):
 def test_tables_hold_names_as_text(named):
     _, workspace = named
     order = [entry.id for entry in workspace.in_tray_order()]
-    for table in ("", "metrics", "parameters", "conditions", "checks"):
+    for table in ("", "metrics", "parameters", "conditions", "checks", "losses", "intervals", "estimates"):
         text = exports.table_file(workspace, order, "csv", table).data.decode("utf-8-sig")
         for row in csv.reader(io.StringIO(text)):
             for cell in row:
@@ -150,7 +151,7 @@ class Tags(HTMLParser):
 
 def report_of(workspace):
     order = [entry.id for entry in workspace.in_tray_order()]
-    return Tags(exports.report_file(workspace, order, [order[1], order[0]]).data.decode())
+    return Tags(exports.report_file(workspace, order, Telling(pair=(order[1], order[0]))).data.decode())
 
 
 @pytest.fixture(scope="module")

@@ -12,20 +12,22 @@ import numpy as np
 import pytest
 
 import core
-from app.mechanisms import MECHANISMS
+from app.fitted import fits_of
+from app.mechanisms import MECHANISMS, loss_names
 from app.report import report_page
 from app.report.drawing import Drawing, Scale
-from app.report.figures import Shown, curves, difference_bars, ladder, order_of
+from app.report.figures import Shown, curves, difference_bars, ladder, rungs_of
 from app.report.methods import METHODS
 from app.report.numbers import interval_text
 from app.report.reporting import reporting_items
+from app.telling import Telling
 from core import steps
 from core.comparing import losses
 from core.errors import StepRefused
+from core.profile import Interval
 from core.refine import refine
 from core.shares import difference_shares
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, OTHER, REVERSE, bench
-from tests.core.workspaces import refinement
 
 MADE = datetime(2026, 3, 1, 14, 5, tzinfo=timezone(timedelta(hours=1)))
 ENDLESS = {"meta", "br"}
@@ -67,8 +69,8 @@ class Page(HTMLParser):
         return re.sub(r"\s+", " ", " ".join(self.words))
 
 
-def page_of(workspace, entries, **options):
-    return Page(report_page(workspace, entries, made=MADE, **options))
+def page_of(workspace, entries, **choices):
+    return Page(report_page(workspace, entries, made=MADE, telling=Telling(**choices)))
 
 
 def refined(*sweeps, gap=1.6):
@@ -103,7 +105,7 @@ def test_nothing_is_asked_of_any_host_and_nothing_runs(full):
 
 def test_the_style_sheet_loads_nothing_either():
     sheet = (Path(__file__).parents[2] / "app" / "report" / "report.css").read_text(encoding="utf-8")
-    assert "url(" not in sheet and "@import" not in sheet and "@page" in sheet and "break-before: page" in sheet
+    assert "url(" not in sheet and "@import" not in sheet and "@page" in sheet and "break-inside: avoid" in sheet
 
 
 def test_what_is_pointed_at_inside_the_page_is_there_once(full):
@@ -149,22 +151,24 @@ def test_numbers_stand_with_their_uncertainties(full):
     workspace, entries, page = full
     found = workspace.refined(entries[0])
     assert re.search(r"22\.\d+\(\d\)", page.text)  # Jsc
-    assert interval_text(found, "ideality") in page.text and " … " in interval_text(found, "ideality")
+    interval = interval_text(fits_of(workspace, entries[0])[0].intervals["ideality"])
+    assert interval in page.text and " … " in interval
     assert "fit noise only" in page.text
-    assert f"{found.points} points" in page.text and "uniform weights" in page.text
+    assert f"points used {found.points}" in page.text and "uniform weights" in page.text
 
 
 @pytest.mark.parametrize(
-    ("parameter", "ends", "words"),
+    ("interval", "words"),
     [
-        ("ideality", (1.58012, 1.61988), "1.580 … 1.620"),
-        ("shunt_resistance", (4100.0, math.inf), "> 4100"),
-        ("series_resistance", (0.0, 0.52), "< 0.52"),
-        ("shunt_resistance", (0.0, math.inf), "not determined"),
+        (Interval(1.58012, 1.61988), "1.580 … 1.620"),
+        (Interval(1.2812e-10, 1.5734e-10), "1.28 … 1.57·10⁻¹⁰"),
+        (Interval(4100.0, math.inf, True, False), "> 4100"),
+        (Interval(0.0, 0.52, False, True), "< 0.52"),
+        (Interval(0.0, math.inf, False, False), "not determined"),
     ],
 )
-def test_an_interval_shows_where_it_is_open(parameter, ends, words):
-    assert interval_text(replace(refinement(), intervals={parameter: ends}), parameter) == words
+def test_an_interval_shows_where_it_is_open(interval, words):
+    assert interval_text(interval) == words
 
 
 def test_a_direction_is_never_shown_without_the_other():
@@ -202,7 +206,7 @@ def test_two_devices_are_set_against_each_other_unasked_and_more_only_on_demand(
     two = page_of(workspace, [entries[0], entries[4]])
     assert "Why the difference" in two.text and "pair" in two.ids
     chosen = page_of(workspace, entries, pair=(entries[0], entries[1]))
-    assert "forward and reverse" in chosen.text and "Why the difference" in chosen.text
+    assert "A forward and A reverse" in chosen.text and "Why the difference" in chosen.text
 
 
 @pytest.mark.parametrize(("other", "reason"), [(AMPERES, "has no area"), (IN_THE_DARK, "dark sweep")])
@@ -249,6 +253,8 @@ def test_what_the_user_states_fills_the_table_where_the_files_are_silent():
     assert [words for words, _ in items["delay"].values] == ["Settling time: 20 ms", "5 ms"]
     assert items["light source"].values[0][0] == "xenon, class AAA" and not items["light source"].missing
     assert items["area"].values[0][0].endswith("aperture area") and items["spectrum"].missing
+    assert items["delay"].stated == {"5 ms"} and items["light source"].stated == {"xenon, class AAA"}
+    assert page_of(workspace, entries).text.count("stated by the user") == 3  # light source, kind of area, and one delay
 
 
 def test_every_source_is_cited_as_core_cites_it():
@@ -261,7 +267,7 @@ def test_methods_are_those_that_were_used(full):
     assert "Detailed-balance limit" in full[2].text and "Refining" in full[2].text
     workspace, (dark,) = bench(IN_THE_DARK)
     text = page_of(workspace, [dark]).text
-    assert "Detailed-balance limit" not in text and "Refining" not in text and "Figures of merit" in text
+    assert "Detailed-balance limit" not in text and "Robust loss" not in text and "Figures of merit" in text
 
 
 def test_pictures_are_sound_svg_with_text_as_text():
@@ -280,8 +286,8 @@ def bars_of(picture, hue):
 
 def test_rungs_of_the_ladder_have_the_lengths_of_the_losses_and_meet():
     shares = losses(LIT, CELL, 1.6)
-    order = order_of(shares.by_mechanism)
-    picture = ladder(1e3 * shares.start, shares, order, "l", limit_name="limit", device_name="device")
+    order = sorted(shares.by_mechanism, key=shares.by_mechanism.get)
+    picture = ladder(1e3 * shares.start, 1e3 * shares.end, rungs_of(shares, loss_names(False)), "l", limit_name="limit", device_name="device")
     hue = {m.parameter: m.hue for m in MECHANISMS}
     rungs = [bars_of(picture, hue[name])[0] for name in order]
     lengths = np.array([-shares.by_mechanism[name] for name in order])
@@ -294,7 +300,7 @@ def test_rungs_of_the_ladder_have_the_lengths_of_the_losses_and_meet():
 
 def test_bars_of_a_difference_point_to_the_side_of_their_sign():
     shares = difference_shares(CELL, replace(CELL, series_resistance=8.0, photocurrent=0.023))
-    picture = difference_bars(shares, "d", "title")
+    picture = difference_bars(shares, loss_names(False), "d", "title")
     hue = {m.parameter: m.hue for m in MECHANISMS}
     (gain_left, gain), = bars_of(picture, hue["photocurrent"])
     (loss_left, loss), = bars_of(picture, hue["series_resistance"])
@@ -303,9 +309,9 @@ def test_bars_of_a_difference_point_to_the_side_of_their_sign():
 
 def test_each_mechanism_keeps_its_hatch():
     shares = losses(LIT, CELL, 1.6)
-    picture = ladder(1e3 * shares.start, shares, order_of(shares.by_mechanism), "l", limit_name="limit", device_name="device")
+    picture = ladder(1e3 * shares.start, 1e3 * shares.end, rungs_of(shares, loss_names(False)), "l", limit_name="limit", device_name="device")
     names = re.findall(r'<pattern id="l-(\w+)"', picture)
-    assert len(names) == len({m.hatch for m in MECHANISMS if m.hatch} | {"-"})
+    assert len(names) == len({m.hatch for m in MECHANISMS if m.hatch})
 
 
 @pytest.mark.parametrize(

@@ -7,8 +7,10 @@ import pytest
 
 from app import tables
 from core import steps
+from core.first_guess import first_guess
 from core.metrics import measure
 from core.refine import FitSettings, refine
+from core.two_diode_guess import guess_two_diodes
 from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, REVERSE, bench
 
 
@@ -56,7 +58,7 @@ def test_parameters_carry_errors_intervals_and_what_was_held():
     found = workspace.refined(entries[0])
     assert row["J0 (mA cm⁻²)"] == 1e3 * found.model.saturation_current
     assert row["J0 standard error (mA cm⁻²)"] == 1e3 * found.standard_errors["saturation_current"]
-    assert (row["n interval from"], row["n interval to"]) == found.intervals["ideality"]
+    assert (row["n linear interval from"], row["n linear interval to"]) == found.intervals["ideality"]
     assert row["Rs (Ω cm²)"] == CELL.series_resistance
     assert row["Rs state"] == "held" and math.isnan(row["Rs standard error (Ω cm²)"])
     assert row["n state"] == "free" and row["uncertainty of parameters"] == "fit noise only"
@@ -66,9 +68,24 @@ def test_parameters_carry_errors_intervals_and_what_was_held():
 def test_a_model_set_by_hand_has_no_errors():
     workspace, entries = bench(LIT, replace(LIT, name="bare"), models=(CELL,))
     by_hand, bare = tables.parameters_table(workspace, entries).to_dict("records")
-    assert by_hand["model"] == "one diode, set by hand, not refined"
+    assert by_hand["model"] == "one diode, laid by hand, not refined"
     assert by_hand["n"] == 1.6 and math.isnan(by_hand["n standard error"]) and by_hand["fit settings"] == ""
     assert bare["model"] == "none" and math.isnan(bare["n"])
+
+
+def test_the_first_guess_of_the_program_is_nobody_s_hand():
+    workspace, (one, two) = bench(LIT, replace(LIT, name="again"), models=(first_guess(LIT), guess_two_diodes(LIT)))
+    words = tables.parameters_table(workspace, [one, two])["model"]
+    assert list(words) == ["one diode, first guess, not refined", "two diodes, first guess, not refined"]
+
+
+def test_two_diodes_have_their_own_columns():
+    workspace, (entry,) = bench(LIT)
+    found = refine(LIT, settings=FitSettings(model="two diodes"))
+    workspace = steps.apply(workspace, steps.record_refinement(workspace, entry, found))
+    row = tables.parameters_table(workspace, [entry]).iloc[0]
+    assert row["model"] == "two diodes, refined" and row["J02 (mA cm⁻²)"] == 1e3 * found.model.saturation_current_2
+    assert row["n1 state"] == "held" and "held: ideality 1, ideality 2" in row["fit settings"]
 
 
 def test_a_model_moved_after_refining_is_no_longer_called_refined():

@@ -9,6 +9,7 @@ import pytest
 from core import steps
 from core.refine import refine
 from tests.browser.loading import LIT, LIT_MODEL, add_sample
+from tests.browser.screens import assert_nothing_hangs_over, go, until
 from tests.browser.tab import Tab
 
 HEADINGS = ("Metrics", "Parameters", "Losses", "Checks", "Conditions",
@@ -73,3 +74,37 @@ def test_the_table_of_the_tray_is_saved(fitted, tmp_path, kind):
     table = pd.read_csv(data) if kind == "csv" else pd.read_excel(data, sheet_name="metrics", engine="calamine")
     assert list(table["device"]) == ["K07", "K11"]
     assert table["Jsc (mA cm⁻²)"].between(20, 23).all()
+
+
+def test_the_losses_screen_hands_out_what_it_shows(fitted, tmp_path):
+    go(fitted, "losses")
+    until(fitted, "document.querySelector('#losses-title').textContent === 'K07'")
+    fitted.find("#emission-choice select").select_option("both")
+    until(fitted, "sweepbench.losses?.emission === 'both'")
+    assert_nothing_hangs_over(fitted, ".losses-room")
+    path = saved(fitted, "save-report", tmp_path)
+    page = path.read_text(encoding="utf-8")
+    assert path.name == "K07 report.html" and "emission from both faces of the cell" in page and "K11" not in page
+    table = pd.read_csv(saved(fitted, "save-losses", tmp_path))
+    assert set(table["emission"]) == {"both faces"} and set(table["device"]) == {"K07"}
+    shown = fitted.find("#losses-table tr[data-loss=photocurrent] td").first.inner_text()
+    assert f"{table['share (mW cm⁻²)'][0]:.2f}".replace("-", "−") == shown
+    fitted.find("[data-act=projector]").click()
+    until(fitted, "document.body.classList.contains('projector')")
+    assert not fitted.find(".losses-room [data-act=save-report]").is_visible()
+    fitted.page.keyboard.press("Escape")
+    with pd.ExcelFile(saved(fitted, "save-shown", tmp_path), engine="calamine") as book:
+        assert {"losses", "intervals", "estimates"} <= set(book.sheet_names) and "pair" not in book.sheet_names
+
+
+def test_the_pair_screen_hands_out_what_it_shows(fitted, tmp_path):
+    go(fitted, "pair")
+    until(fitted, "Boolean(sweepbench.pair?.compared)")
+    assert_nothing_hangs_over(fitted, ".pair-room")
+    verdicts = fitted.find("[data-compared] .verdict").all_inner_texts()
+    table = pd.read_csv(saved(fitted, "save-pair", tmp_path))
+    assert list(table["A"].str[:3]) == ["K07"] * 5 and set(table["verdict"]) <= set(verdicts)
+    shares = pd.read_csv(saved(fitted, "save-shares", tmp_path))
+    assert shares["share (mW cm⁻²)"].iloc[-1] == pytest.approx(table["B − A"].iloc[3])
+    with pd.ExcelFile(saved(fitted, "save-shown", tmp_path), engine="calamine") as book:
+        assert {"losses", "pair", "shares"} <= set(book.sheet_names)
