@@ -194,8 +194,8 @@ def _by_run(rows: list[tuple[int, Sequence[str]]], mark: str) -> str | None:
                 continue
             body = found[1]
             marked = mark in body
-            if not marked and not body.isdigit():
-                continue
+            if _says(cell, mark) is None if marked else not body.isdecimal():
+                continue  # 530.5.0000 is no number in either reading
             decimals, thousands, kinds = columns.setdefault(index, ([], [], set()))
             sign = -1.0 if cell.strip()[0] in "-−–" else 1.0
             decimals.append(sign * float(body.replace(mark, ".")))

@@ -7,6 +7,7 @@ import pytest
 
 from core.errors import UnreadableFile
 from core.reading import read_sweeps
+from core.reading.thousands import marks_of
 
 MILLIVOLTS = np.arange(-100, 1151, 25)
 MICROAMPERES = np.round(22_000 - 0.5 * MILLIVOLTS - 1e-6 * np.exp(MILLIVOLTS / 45.0)).astype(int)
@@ -153,3 +154,9 @@ def test_numbers_that_a_sheet_keeps_as_text():
     [sweep] = read_sweeps(stream.getvalue(), "K07.xlsx")
     assert sweep.current == pytest.approx(MICROAMPERES / 1e6)
     assert any("Sheet “Unclear” was skipped: “22,050” may be" in note for note in sweep.notes)
+
+
+def test_what_is_no_number_in_either_reading_says_nothing_of_the_mark():
+    """Damaged cells among open ones."""
+    rows = [(1, ["22.011"]), (2, ["530.5.0000"]), (3, ["1.2,3"]), (4, ["22.012"])]
+    assert marks_of(rows, ".") == marks_of([rows[0], rows[3]], ".")
