@@ -178,9 +178,7 @@ def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
 def points_used(sweep: Sweep, settings: FitSettings) -> Sweep:
     """The sweep with only the points that the settings leave for the fit."""
     keep = used(sweep, settings)
-    if keep.all():
-        return sweep
-    return replace(sweep, voltage=sweep.voltage[keep], current=sweep.current[keep])
+    return sweep if keep.all() else sweep.only(keep)
 
 
 def laid_over(model: Model, sweep: Sweep, kind: str) -> Model:

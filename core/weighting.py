@@ -105,7 +105,7 @@ def noise_near_zero(sweep: Sweep) -> float:
     """Noise of the lowest currents of a sweep [unit of current]; above zero."""
     size = np.abs(sweep.current)
     low = size <= np.quantile(size, _LOW_SHARE) if size.size > 8 else np.ones(size.size, dtype=bool)
-    floor = noise_level(replace(sweep, voltage=sweep.voltage[low], current=sweep.current[low]))
+    floor = noise_level(sweep.only(low))
     return max(floor, 1e-12 * float(np.max(size, initial=0.0)), 1e-300)
 
 
@@ -115,5 +115,5 @@ def noise_in_proportion(sweep: Sweep, floor: float) -> float:
     high = size > _CLEAR * floor
     if np.count_nonzero(high) < _ENOUGH:
         return _SHARE_USUAL
-    scatter = noise_level(replace(sweep, voltage=sweep.voltage[high], current=np.log(size[high])))
+    scatter = noise_level(replace(sweep.only(high), current=np.log(size[high])))
     return min(max(scatter, _SHARE_LEAST), _SHARE_MOST)

@@ -6,7 +6,6 @@ so that switching the theme redraws nothing and an exported picture is always on
 
 from __future__ import annotations
 
-from dataclasses import replace
 from html import escape
 
 import numpy as np
@@ -63,8 +62,8 @@ def bench_figure(
     if left_out is None or not left_out.any():
         figure.add_trace(_marks_of(sweep, "points", units, hollow=False))
     else:
-        figure.add_trace(_marks_of(_only(sweep, ~left_out), "points", units, hollow=False))
-        crosses = _marks_of(_only(sweep, left_out), "left-out", units, hollow=False)
+        figure.add_trace(_marks_of(sweep.only(~left_out), "points", units, hollow=False))
+        crosses = _marks_of(sweep.only(left_out), "left-out", units, hollow=False)
         figure.add_trace(crosses.update(marker={"symbol": "x-thin", "size": 6, "line": {"width": 1.2, "color": FAINT}}))
     figure.add_trace(_model_trace(curves.get("model"), "model", "y", INK, 2, "solid"))
 
@@ -105,10 +104,6 @@ def _marks_of(sweep: Sweep, uid: str, units: Units, *, hollow: bool) -> go.Scatt
         customdata=[[escape(sweep.name, quote=False)]] * len(voltage),
         hovertemplate=f"%{{x:.4f}} V<br>%{{y:.4g}} {units.current}<extra>%{{customdata[0]}}</extra>",
     )
-
-
-def _only(sweep: Sweep, chosen: np.ndarray) -> Sweep:
-    return replace(sweep, voltage=sweep.voltage[chosen], current=sweep.current[chosen])
 
 
 def _line_of(sweep: Sweep, uid: str, units: Units) -> go.Scatter:
