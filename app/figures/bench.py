@@ -14,6 +14,7 @@ import plotly.graph_objects as go
 from app.curves import Curve, Strip, model_curves, squeezed, strip_points, thinned
 from app.units import Units
 from core.diode import OneDiode
+from core.fit_settings import Weights
 from core.sweep import Sweep
 
 from .style import CLEAR, FAINT, HAIR, INK, quiet_axis, quiet_layout
@@ -31,6 +32,7 @@ def bench_figure(
     companions: tuple[Sweep, ...] = (),
     overlay: tuple[Sweep, ...] = (),
     strip: Strip = "residuals",
+    weights: Weights = "automatic",
     zoom_key: str = "bench",
 ) -> go.Figure:
     """The measured points, the model's lines and the strip.
@@ -46,11 +48,13 @@ def bench_figure(
         Other sweeps of the same device and light: hollow marks.
     overlay : tuple of Sweep
         Sweeps of other devices to look at beside it: thin lines.
+    weights : str
+        Of the fit; those from the file set the unit of the residuals.
     zoom_key : str
         The user's zoom survives every redraw with the same key.
     """
     units = Units.of(sweep.per_area)
-    curves = {c.uid: c for c in model_curves(sweep, model, strip)} if model else {}
+    curves = {c.uid: c for c in model_curves(sweep, model, strip, weights)} if model else {}
     figure = go.Figure()
     for number, other in enumerate(s for s in overlay if s.per_area == sweep.per_area and s.lit == sweep.lit):
         figure.add_trace(_line_of(other, f"overlay{number}", units))

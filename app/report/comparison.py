@@ -16,7 +16,7 @@ from core.verdict import METRICS, MetricVerdict, Verdict, stands_out
 from core.workspace import Workspace
 
 from .device import shares_table
-from .figures import Shown, curves, difference_bars
+from .figures import Shown, curves, difference_bars, unit_of_residuals
 from .markup import Markup, element, join, paragraph, symbol, table
 
 _NOT_BESIDE = "One of the two has no area, so their currents are not of one kind and are not set against each other."
@@ -30,8 +30,11 @@ def pair_section(workspace: Workspace, entry_a: str, entry_b: str) -> Markup:
     if a.per_area != b.per_area or a.lit != b.lit:
         reason = _NOT_BESIDE if a.per_area != b.per_area else "One is a light and the other a dark sweep, so they are not compared."
         return element("section", *head, paragraph(reason), class_="device", id="pair")
-    shown = [Shown(f"{letter}: {s.name}", s, workspace.fit(e).model) for letter, s, e in (("A", a, entry_a), ("B", b, entry_b))]
-    caption = "A: filled marks, solid line. B: hollow marks, dashed line. Below: residuals in units of the points’ noise."
+    shown = []
+    for letter, sweep, entry in (("A", a, entry_a), ("B", b, entry_b)):
+        fit = workspace.fit(entry)
+        shown.append(Shown(f"{letter}: {sweep.name}", sweep, fit.model, fit.settings.weights))
+    caption = f"A: filled marks, solid line. B: hollow marks, dashed line. Below: residuals in units of {unit_of_residuals(shown)}."
     return element(
         "section",
         element("div", *head, element("figure", curves(shown, "pair-curves"), element("figcaption", caption)), class_="opening"),

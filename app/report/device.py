@@ -17,7 +17,7 @@ from core.retelling import tell_losses
 from core.shares import Shares
 from core.workspace import Workspace
 
-from .figures import Shown, curves, ladder, order_of, signed
+from .figures import Shown, curves, ladder, order_of, signed, unit_of_residuals
 from .markup import Markup, element, join, paragraph, table
 from .numbers import conditions_tables, mark, metrics_tables, parameters_tables
 
@@ -64,8 +64,8 @@ def _count(sweeps: int) -> str:
 def _curves(workspace: Workspace, entries: Sequence[str], names: Sequence[str], anchor: str) -> list[Markup]:
     kinds: dict[tuple[bool, bool], list[Shown]] = {}
     for entry, name in zip(entries, names, strict=True):
-        sweep = workspace.sweep(entry)
-        kinds.setdefault((not sweep.lit, not sweep.per_area), []).append(Shown(name, sweep, workspace.fit(entry).model))
+        sweep, fit = workspace.sweep(entry), workspace.fit(entry)
+        kinds.setdefault((not sweep.lit, not sweep.per_area), []).append(Shown(name, sweep, fit.model, fit.settings.weights))
     pictures = []
     for _, shown in sorted(kinds.items()):
         pictures += [shown[at : at + _CURVES] for at in range(0, len(shown), _CURVES)]
@@ -78,7 +78,7 @@ def _curves(workspace: Workspace, entries: Sequence[str], names: Sequence[str], 
 def _curve_words(shown: Sequence[Shown]) -> str:
     fitted = any(one.model is not None for one in shown)
     words = "Marks: measured points" + (", thinned for print where they are many" if any(s.sweep.voltage.size > 140 for s in shown) else "")
-    words += "; lines: models. Below: residuals in units of the points’ noise" if fitted else ""
+    words += f"; lines: models. Below: residuals in units of {unit_of_residuals(shown)}" if fitted else ""
     return words + ("; ring: largest measured power." if shown[0].sweep.lit and len(shown) <= 2 else ".")
 
 

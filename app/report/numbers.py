@@ -147,4 +147,5 @@ def _fit(workspace: Workspace, entry: str, units: Units) -> Markup:
     if refined is None:
         return element("span", "set by hand, not refined" if workspace.fit(entry).model else "no model", class_="reason")
     rmse = f"{plus_minus(refined.rmse * units.current_factor)} {units.current}"
-    return element("span", f"rms residual {rmse}, {refined.points} points", class_="reason")
+    chi_square = "" if refined.chi_square is None else f", χ² per degree of freedom {number(refined.chi_square, digits=3)}"
+    return element("span", f"rms residual {rmse}, {refined.points} points{chi_square}", class_="reason")
