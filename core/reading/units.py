@@ -39,7 +39,7 @@ _OTHER_WORDS = {
 }  # fmt: skip
 # With a current they name its standard deviation; of anything else the column is none that is read.
 _ERROR_WORDS = {
-    "error", "err", "fehler", "std", "stdev", "stddev", "sd", "sigma", "deviation", "uncertainty",
+    "error", "err", "fehler", "std", "stdev", "stddev", "sigma", "deviation", "uncertainty",
     "unsicherheit", "messunsicherheit", "standardabweichung",
 }  # fmt: skip
 # These say that it is no standard deviation of the current in its own right.
@@ -49,8 +49,8 @@ _MAGNITUDE_WORDS = {"abs", "betrag", "absolute", "magnitude"}
 _SET_WORDS = {"set", "source", "sourced", "src", "applied", "app", "soll", "prog", "programmed", "nominal", "vorgabe"}
 _MEASURED_WORDS = {"meas", "measured", "sense", "sensed", "gemessen", "mess", "ist", "actual", "mpp"}
 _JOINED = re.compile(
-    r"^([viuj])(meas|measured|set|source|src|app|fwd|rev|forward|reverse|light|dark|mess|soll|ist|std|err|sigma|sd|\d+)$"
-    r"|^(std|err|sigma|sd)([viuj])$"
+    r"^([viuj])(meas|measured|set|source|src|app|fwd|rev|forward|reverse|light|dark|mess|soll|ist|std|err|sigma|\d+)$"
+    r"|^(std|err|sigma)([viuj])$"
 )
 
 

@@ -38,12 +38,12 @@ def one(heading, error, current=DENSITY * 1e3, voltage=VOLTAGE):
      ("Istd (A)", "current", 1), ("stdI", "current", None), ("Jerr_mA/cm2", "density", 1e-3),
      ("Error", None, None), ("Standard deviation", None, None), ("Current error (%)", None, None), ("V_std (V)", None, None),
      ("rel. std I", None, None), ("2σ I (A)", None, None), ("error I V", None, None), ("Temperature error", None, None),
-     ("Expanded uncertainty (mA)", None, None), ("Current (mA)", None, 1e-3)],
+     ("Expanded uncertainty (mA)", None, None), ("Current (mA)", None, 1e-3), ("I_sd (A)", None, 1)],
 )  # fmt: skip
 def test_headings_of_standard_deviations(text, of, factor):
     label = parse_label(text)
     assert label.error_of == of and label.factor == (None if factor is None else pytest.approx(factor))
-    assert label.kind == ("current" if text == "Current (mA)" else "other")
+    assert label.kind == ("current" if text in ("Current (mA)", "I_sd (A)") else "other")  # the latter: source to drain
 
 
 @pytest.mark.parametrize(
