@@ -14,6 +14,7 @@ from typing import Literal
 import numpy as np
 
 from core.diode import Landmarks, OneDiode
+from core.fit_settings import Weights
 from core.local_ideality import local_ideality, model_local_ideality
 from core.sweep import Sweep
 from core.weighting import point_noise
@@ -31,6 +32,11 @@ STRIP_POINTS = 300  # more would not be seen, and the answer to a moving hand st
 
 # A sweep never changes, so its noise is judged once and a moving hand need not wait for it.
 noise_of_points = lru_cache(maxsize=4096)(point_noise)
+
+
+def strip_noise(sweep: Sweep, weights: Weights) -> np.ndarray:
+    """The unit of each point's residual in the strip: the file's standard deviation where it sets the weights, else the noise."""
+    return noise_of_points(sweep, weights) if weights == "from the file" else noise_of_points(sweep)
 
 
 @lru_cache(maxsize=64)
@@ -52,13 +58,13 @@ class Curve:
         return {"uid": self.uid, "axis": self.axis, "x": _short(self.x), "y": _short(self.y)}
 
 
-def model_curves(sweep: Sweep, model: OneDiode, strip: Strip) -> list[Curve]:
-    """All lines of the model over this sweep; in the dark without its photocurrent."""
+def model_curves(sweep: Sweep, model: OneDiode, strip: Strip, weights: Weights = "automatic") -> list[Curve]:
+    """All lines of the model over this sweep; in the dark without its photocurrent. Weights set the unit of residuals."""
     if not sweep.lit:
         model = replace(model, photocurrent=0.0)
     units = Units.of(sweep.per_area)
     lines = _lit_lines(sweep, model, units) if sweep.lit else _dark_lines(sweep, model, units)
-    return [*lines, strip_model(sweep, model, strip, units)]
+    return [*lines, strip_model(sweep, model, strip, units, weights)]
 
 
 def _lit_lines(sweep: Sweep, model: OneDiode, units: Units) -> list[Curve]:
@@ -102,11 +108,12 @@ def strip_points(sweep: Sweep, model: OneDiode | None, strip: Strip, units: Unit
     return Curve("strip-points", "y3", empty, empty)
 
 
-def strip_model(sweep: Sweep, model: OneDiode, strip: Strip, units: Units) -> Curve:
+def strip_model(sweep: Sweep, model: OneDiode, strip: Strip, units: Units, weights: Weights = "automatic") -> Curve:
     """The model's part of the strip."""
     if strip == "residuals":
         voltage, current = thinned(sweep, STRIP_POINTS)
-        residual = (current - model.current(voltage)) / noise_of_points(sweep)[chosen_points(sweep, STRIP_POINTS)]
+        noise = strip_noise(sweep, weights)[chosen_points(sweep, STRIP_POINTS)]
+        residual = (current - model.current(voltage)) / noise
         return Curve("strip-model", "y3", voltage, squeezed(residual))
     voltage = voltage_grid(sweep, model)
     if strip == "log":

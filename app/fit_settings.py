@@ -5,11 +5,11 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import replace
-from typing import Any
+from typing import Any, get_args
 
 from core import steps
 from core.errors import ConditionRefused, StepRefused
-from core.fit_settings import FitSettings
+from core.fit_settings import FitSettings, Weights
 from core.point_choice import leave_out_box, use_all
 from core.repeats import noise_from_repeats
 from core.workspace import Workspace
@@ -21,7 +21,7 @@ Event = Mapping[str, Any]
 Step = dict[str, Any]
 
 CHOICES = {
-    "weights": ("automatic", "uniform", "relative", "effective"),
+    "weights": get_args(Weights),
     "loss": ("linear", "robust"),
     "model": ("one diode", "two diodes"),
 }

@@ -37,6 +37,8 @@ def settings_rows(workspace: Workspace, entry: str) -> dict[str, Any]:
     return {
         "model": settings.model,
         "weights": settings.weights,
+        # Choices that this sweep does not have.
+        "weights_without": [] if sweep.current_error is not None else ["from the file"],
         "loss": settings.loss,
         "window_low": "" if low is None else f"{low:.5g}",
         "window_high": "" if high is None else f"{high:.5g}",

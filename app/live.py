@@ -64,11 +64,11 @@ def answer_bench(workspace: Workspace, event: dict[str, Any]) -> dict[str, Any]:
     strip = event.get("strip") if event.get("strip") in STRIPS else STRIPS[0]
     sweep = sweep_of(workspace, event)
     move = moved(workspace, event)
-    hold = workspace.fit(event["entry"]).settings.hold
+    settings = workspace.fit(event["entry"]).settings
     return {
         "message": move.message,
-        "curves": [curve.to_dict() for curve in model_curves(sweep, move.model, strip)],
-        "handles": _marks(event, sweep, workspace.fit(event["entry"]).model, move.model, hold),
+        "curves": [curve.to_dict() for curve in model_curves(sweep, move.model, strip, settings.weights)],
+        "handles": _marks(event, sweep, workspace.fit(event["entry"]).model, move.model, settings.hold),
         "dials": readout.dial_values(sweep, move.model),
         "metrics": readout.live_metrics(sweep, landmarks_of(move.model)) if sweep.lit else {},
     }

@@ -74,6 +74,7 @@ def figure(workspace: Workspace, view: View) -> Figure:
     return bench_figure(
         sweep,
         workspace.fit(entry).model,
+        weights=workspace.fit(entry).settings.weights,
         left_out=~used(sweep, workspace.fit(entry).settings),
         companions=tuple(workspace.sweep(e.id) for e in companions_of(workspace, entry)),
         overlay=tuple(workspace.sweep(e) for e in _overlay(workspace, view, entry)),
@@ -107,7 +108,7 @@ def scene(workspace: Workspace, view: View, history: History) -> dict[str, Any]:
         "lit": sweep.lit,
         "letter": "J" if sweep.per_area else "I",
         "fitted": model is not None,
-        "curves": [c.to_dict() for c in model_curves(sweep, model, strip_of(view))] if model else _no_lines(),
+        "curves": [c.to_dict() for c in model_curves(sweep, model, strip_of(view), fit.settings.weights)] if model else _no_lines(),
         "handles": readout.handle_marks(sweep, model, fit.settings.hold) if model else [],
         "dials": readout.dial_rows(workspace, entry, sweep),
         "metrics": readout.metric_rows(sweep, model.landmarks() if model and sweep.lit else None),
@@ -149,7 +150,8 @@ def _fit_line(sweep: Sweep, refined: Any) -> str:
         return ""
     units = Units.of(sweep.per_area)
     residual = f"{number(refined.rmse * units.current_factor, digits=5)} {units.current}"
-    return f"rms residual {residual} over {refined.points} points; ± is fit noise only"
+    chi_square = "" if refined.chi_square is None else f", χ² per degree of freedom {number(refined.chi_square, digits=3)}"
+    return f"rms residual {residual} over {refined.points} points{chi_square}; ± is fit noise only"
 
 
 def tray_key(workspace: Workspace) -> str:

@@ -112,7 +112,7 @@ def summary_table(workspace: Workspace, entries: Sequence[str]) -> pd.DataFrame:
 
 
 def points_table(workspace: Workspace, entry: str) -> pd.DataFrame:
-    """The measured points in their order, and the model's current at each where there is a model."""
+    """The measured points in their order, the standard deviations that the file gives, and the model's current where there is one."""
     sweep, model = workspace.sweep(entry), workspace.fit(entry).model
     units = Units.of(sweep.per_area)
     columns = {
@@ -120,6 +120,8 @@ def points_table(workspace: Workspace, entry: str) -> pd.DataFrame:
         headed(units.letter, units.current): sweep.current * units.current_factor,
         headed("P", units.power): sweep.voltage * sweep.current * units.power_factor,
     }
+    if sweep.current_error is not None:
+        columns[headed(f"{units.letter} standard deviation", units.current)] = sweep.current_error * units.current_factor
     if model is not None:
         modelled = model.current(sweep.voltage)
         columns[headed(f"{units.letter} of the model", units.current)] = modelled * units.current_factor
@@ -203,6 +205,8 @@ def _parameters(workspace: Workspace, entry: str) -> Row:
         row[headed(f"{name} linear interval to", unit)] = times(high, factor)
         row[f"{name} state"] = state
     row[headed("rms residual", units.current)] = times(None if refined is None else refined.rmse, units.current_factor)
+    if refined is not None and refined.chi_square is not None:
+        row["χ² per degree of freedom"] = refined.chi_square
     row["points used"] = math.nan if refined is None else refined.points
     row["confidence of intervals (%)"] = math.nan if refined is None else 100 * refined.settings.confidence
     row["uncertainty of parameters"] = "" if refined is None else "fit noise only"
@@ -233,8 +237,9 @@ def settings_text(refined: Refinement) -> str:
     window = "all voltages" if settings.window is None else f"{settings.window[0]:g} to {settings.window[1]:g} V"
     held = ", ".join(p.replace("_", " ") for p in settings.parameters if p in settings.hold) or "nothing"
     bounds = ", ".join(f"{name.replace('_', ' ')} {low:g} to {high:g}" for name, (low, high) in settings.bounds.items())
+    weights = "weights from the file" if refined.weights == "from the file" else f"{refined.weights} weights"
     return (
-        f"{settings.model}; {refined.weights} weights; {settings.loss} loss; {window}; "
+        f"{settings.model}; {weights}; {settings.loss} loss; {window}; "
         f"{len(settings.excluded) or 'no'} points excluded; held: {held}; {'bounds: ' + bounds if bounds else 'built-in bounds'}"
     )
 

@@ -31,6 +31,8 @@
 
   function paintSettings(settings) {
     for (const row of document.querySelectorAll("[data-setting]")) {
+      const without = settings[`${row.dataset.setting}_without`] ?? [];
+      for (const option of fieldOf(row).options ?? []) option.disabled = option.hidden = without.includes(option.value);
       bench.write(fieldOf(row), settings[row.dataset.setting]);
       const unit = settings[`${row.dataset.setting}_unit`];
       if (unit) row.querySelector(".unit").textContent = unit;

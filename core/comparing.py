@@ -146,7 +146,8 @@ def alongside(sweep: Sweep, state: State | TwoDiode) -> tuple[State, tuple[str, 
     settings = FitSettings()
     if isinstance(state, Refinement):
         chosen = state.settings
-        settings = replace(settings, weights=chosen.weights, loss=chosen.loss, window=chosen.window, excluded=chosen.excluded)
+        kept = ("weights", "voltage_noise", "current_noise", "loss", "window", "excluded")
+        settings = replace(settings, **{name: getattr(chosen, name) for name in kept})
     try:
         alongside = refine(sweep, settings=settings)
     except FitFailed as failed:

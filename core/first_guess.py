@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from itertools import chain, combinations
 
 import numpy as np
@@ -81,7 +81,7 @@ def starts(sweep: Sweep, hold: Mapping[str, float] = {}, count: int = 1) -> list
     """The best ``count`` nodes of the grid that differ clearly, best first. Raises as ``first_guess`` does."""
     usable = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
     if not usable.all():
-        sweep = replace(sweep, voltage=sweep.voltage[usable], current=sweep.current[usable])
+        sweep = sweep.only(usable)
     refuse_if_hopeless(sweep.voltage, sweep.current)
     if not sweep.lit:
         hold = {"photocurrent": 0.0, **hold}

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 
 import numpy as np
+from scipy.special import chdtr, chdtrc
 
 from .intervals import AnyUnknowns, Knowledge
 from .models import Model
@@ -30,6 +31,7 @@ _SHARE_OPEN = 0.5  # an interval wider than this share of n leaves n open
 # Parameters trade off if they are so correlated and one of them has an interval wider than this share of its value.
 _TRADE_OFF, _WIDE = 0.9, 0.2
 _USUAL_IDEALITY = (0.8, 5.0)
+_RARE = 1e-3  # a χ² that standard deviations explain this seldom is said
 
 
 def findings(
@@ -45,8 +47,9 @@ def findings(
     s_shaped: bool,
     lit: bool,
     reaches_voc: bool,
+    chi_square: float | None = None,
 ) -> tuple[str, ...]:
-    """Sentences on a fit, the most serious first."""
+    """Sentences on a fit, the most serious first; ``chi_square`` is per degree of freedom, by the file's standard deviations."""
     said: list[str] = []
     if s_shaped:
         said.append(
@@ -70,6 +73,8 @@ def findings(
             "whatever they mean and no uncertainty can be given; hold parameters or measure more points."
         )
         return tuple(said)
+    if chi_square is not None:
+        said.extend(_about_scatter(chi_square, freedom))
     free = set(unknowns.free)
     diode = {name for name in free if name.startswith(("saturation_current", "ideality", "series_resistance"))}
     open_diode = not reaches_voc and bool(diode) and diode <= known.undetermined
@@ -98,6 +103,16 @@ def findings(
     if not lit and "series_resistance" in unknowns.free and known.intervals["series_resistance"][0] <= 0:
         said.append("The dark sweep does not go high enough in voltage to show Rs; go beyond the knee or hold Rs.")
     return tuple(said)
+
+
+def _about_scatter(chi_square: float, freedom: int) -> list[str]:
+    """Whether the residuals are as large as the file's standard deviations say."""
+    if min(chdtr(freedom, chi_square * freedom), chdtrc(freedom, chi_square * freedom)) >= _RARE:
+        return []
+    return [
+        f"The residuals are {_figure(math.sqrt(chi_square))} times as large as the standard deviations in the file say "
+        f"(χ² per degree of freedom {_figure(chi_square)}); errors and intervals follow the residuals."
+    ]
 
 
 def _about(

@@ -19,7 +19,7 @@ from .sweep import Sweep
 from .two_diode import TwoDiode
 from .two_diode_unknowns import TwoDiodeUnknowns
 from .unknowns import Unknowns
-from .weighting import effective_weights, point_weights
+from .weighting import point_weights, slope_weights
 
 _ROUNDING = 1e-9
 # Huber's constant: 95 % efficiency for normal noise; P. J. Huber, Ann. Math. Stat. 35 (1964) 73 (from memory).
@@ -74,7 +74,8 @@ class Problem:
         Raises
         ------
         FitFailed
-            If the settings name a parameter that the model has not, or effective weights lack the voltage noise.
+            If the settings name a parameter that the model has not, effective weights lack the voltage noise, or the
+            file does not give the weights that are asked from it.
         """
         if settings.weights == "effective" and settings.voltage_noise is None:
             raise FitFailed("Effective weights need the noise of the voltage; give it, or choose uniform weights.")
@@ -114,12 +115,13 @@ class Problem:
     def polished(self, minimum: Minimum) -> tuple[Problem, Minimum]:
         """The problem with the weights that its settings ask for around a minimum, and its own minimum.
 
-        Effective and robust weights depend on the model; they are found by repeated passes and frozen within each.
+        Weights that follow the slope and robust ones depend on the model; they are found by repeated passes and frozen within each.
         """
         problem = self
-        for _ in range(_PASSES if self.settings.weights == "effective" else 0):
+        for _ in range(_PASSES if self.settings.weights_follow_slope else 0):
             before = problem.weight
-            problem = problem.with_weight(self._effective(minimum))
+            model = self.unknowns.model(minimum.place)
+            problem = problem.with_weight(slope_weights(self.sweep, model, self.settings))
             if np.max(np.abs(problem.weight - before)) < 1e-6:
                 break
             minimum = problem.minimum_near(minimum.place)
@@ -137,9 +139,8 @@ class Problem:
         """The problem with the weights that its settings ask for, frozen at a model that was refined with them."""
         place = self.unknowns.place(model)
         problem = self
-        if self.settings.weights == "effective":
-            weight = effective_weights(self.sweep, model, self.settings.voltage_noise, self.settings.current_noise)
-            problem = self.with_weight(weight)
+        if self.settings.weights_follow_slope:
+            problem = self.with_weight(slope_weights(self.sweep, model, self.settings))
         if self.settings.loss == "robust":
             problem = problem.with_weight(problem.weight * _huber(problem.evaluate(place)[0]))
         return problem
@@ -160,10 +161,6 @@ class Problem:
         unknowns = replace(self.unknowns, base=replace(self.unknowns.base, **{name: value}))
         return replace(self, unknowns=unknowns)
 
-    def _effective(self, minimum: Minimum) -> np.ndarray:
-        model = self.unknowns.model(minimum.place)
-        return effective_weights(self.sweep, model, self.settings.voltage_noise, self.settings.current_noise)
-
 
 def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
     """Mask of the points that the settings leave for the fit, shape (n,)."""
@@ -178,9 +175,7 @@ def used(sweep: Sweep, settings: FitSettings) -> np.ndarray:
 def points_used(sweep: Sweep, settings: FitSettings) -> Sweep:
     """The sweep with only the points that the settings leave for the fit."""
     keep = used(sweep, settings)
-    if keep.all():
-        return sweep
-    return replace(sweep, voltage=sweep.voltage[keep], current=sweep.current[keep])
+    return sweep if keep.all() else sweep.only(keep)
 
 
 def laid_over(model: Model, sweep: Sweep, kind: str) -> Model:

@@ -5,13 +5,13 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from typing import Any, Literal
+from typing import Any, Literal, get_args
 
 from .diode import PARAMETERS
 from .errors import FitFailed
 from .two_diode import TWO_DIODE_PARAMETERS
 
-Weights = Literal["automatic", "uniform", "relative", "effective"]
+Weights = Literal["automatic", "uniform", "relative", "effective", "from the file"]
 Loss = Literal["linear", "robust"]
 
 # The parameters of each model, and those that are held unless the user frees them.
@@ -26,12 +26,15 @@ class FitSettings:
     Attributes
     ----------
     model : "one diode" or "two diodes"
-    weights : "automatic", "uniform", "relative" or "effective"
+    weights : "automatic", "uniform", "relative", "effective" or "from the file"
         Uniform: every point counts alike, residuals in the unit of current. Relative: residuals in
         proportion to the current, down to the noise near zero; in the dark, where the current spans
         decades, nothing else lets the low points speak. Automatic: uniform for lit sweeps, relative
         for dark ones. Effective: by the effective variance σ_J² + (dJ/dV)²·σ_V², for which
         ``voltage_noise`` must be given; the steep part of the curve then counts less.
+        From the file: by the standard deviation σ_i of each current that the file gives, 1/σ_i, or
+        1/√(σ_i² + (dJ/dV)²·σ_V²) where ``voltage_noise`` is given. Only the ratios of the weights count:
+        errors follow the residuals, whatever the weights.
     loss : "linear" or "robust"
         Linear is least squares; robust lets points beyond a few noise widths count less (Huber).
     window : (low, high) or None
@@ -46,7 +49,7 @@ class FitSettings:
     confidence : float
         Level of the intervals, between 0 and 1.
     voltage_noise : float or None
-        σ_V, standard deviation of a voltage reading [V], for effective weights.
+        σ_V, standard deviation of a voltage reading [V], for effective weights and those from the file.
     current_noise : float or None
         σ_J, standard deviation of a current reading [unit of current], for effective weights; None: judged
         from the sweep.
@@ -73,8 +76,9 @@ class FitSettings:
             raise FitFailed(f"There is no model called “{self.model}”; use “one diode” or “two diodes”.")
         if self.hold is None:
             object.__setattr__(self, "hold", USUALLY_HELD[self.model])
-        if self.weights not in ("automatic", "uniform", "relative", "effective"):
-            raise FitFailed(f"There are no weights called “{self.weights}”; use automatic, uniform, relative or effective.")
+        if self.weights not in get_args(Weights):
+            known = f"{', '.join(get_args(Weights)[:-1])} or {get_args(Weights)[-1]}"
+            raise FitFailed(f"There are no weights called “{self.weights}”; use {known}.")
         for noise, what in ((self.voltage_noise, "voltage"), (self.current_noise, "current")):
             if noise is not None and not 0 <= noise < math.inf:
                 raise FitFailed(f"The noise of the {what} must be zero or a number above zero.")
@@ -90,6 +94,11 @@ class FitSettings:
 
     def __hash__(self) -> int:
         return hash((self.model, self.weights, self.loss, self.window, self.excluded, self.hold, self.confidence))
+
+    @property
+    def weights_follow_slope(self) -> bool:
+        """Whether the weights depend on the slope of the model, hence on where the fit stands."""
+        return self.weights == "effective" or self.weights == "from the file" and bool(self.voltage_noise)
 
     @property
     def parameters(self) -> tuple[str, ...]:

@@ -11,6 +11,7 @@ from .errors import StepRefused
 from .models import Model, one_diode_like, two_diodes_like
 from .refine import FitSettings, Refinement
 from .two_diode import TwoDiode
+from .weighting import refuse_if_unstated
 from .workspace import Workspace
 
 
@@ -40,7 +41,15 @@ def set_hold(workspace: Workspace, entry_id: str, parameter: str, on: bool) -> S
 def set_fit_settings(
     workspace: Workspace, entry_id: str, settings: FitSettings, *, label: str = "change fit settings"
 ) -> Step:
-    """Refine this sweep with these settings from now on."""
+    """Refine this sweep with these settings from now on.
+
+    Raises
+    ------
+    FitFailed
+        If its file does not give the weights that are asked from it.
+    """
+    if settings.weights == "from the file":
+        refuse_if_unstated(workspace.entry(entry_id).reading)
     return make_step(label, fits={entry_id: replace(workspace.fit(entry_id), settings=settings)})
 
 

@@ -72,7 +72,8 @@ def reading_record(sweep: Sweep) -> dict[str, Any]:
     if not (np.isfinite(sweep.voltage).all() and np.isfinite(sweep.current).all()):
         raise StepRefused(f"The sweep “{sweep.name}” has points that are not finite numbers.")
     values = sweep.to_dict()
-    points = {"voltage": values.pop("voltage"), "current": values.pop("current")}  # plain, and many
+    # Plain, and many.
+    points = {name: values.pop(name) for name in ("voltage", "current", "current_error") if name in values}
     return {**plain(values), **points}
 
 
@@ -102,6 +103,7 @@ def reading_from_record(record: Any) -> Sweep:
             and sweep.voltage.shape == sweep.current.shape
             and sweep.voltage.size > 0
             and bool((np.abs(sweep.voltage) <= _LARGEST).all() and (np.abs(sweep.current) <= _LARGEST).all())
+            and (sweep.current_error is None or _are_errors(sweep))
             and _monotonic(sweep)
             and isinstance(sweep.per_area, bool)
             and isinstance(sweep.lit, bool)
@@ -116,6 +118,12 @@ def reading_from_record(record: Any) -> Sweep:
     if not sound:
         raise StepRefused("A reading is not written as a sweep: its points or its texts are not of the right kind.")
     return sweep
+
+
+def _are_errors(sweep: Sweep) -> bool:
+    """Whether a sweep's standard deviations are one for each point, as far as they are given."""
+    errors = sweep.current_error
+    return errors.shape == sweep.current.shape and not bool((np.abs(errors) > _LARGEST).any())
 
 
 def _monotonic(sweep: Sweep) -> bool:

@@ -22,7 +22,7 @@ from .residuals import Structure, looks_s_shaped
 from .sweep import Sweep
 from .two_diode_guess import USUAL, two_diode_starts
 from .unknowns import Unknowns
-from .weighting import resolved
+from .weighting import resolved, stated_noise
 
 __all__ = ["FitSettings", "Refinement", "refine"]
 
@@ -94,6 +94,10 @@ def refinement_of(
     elif not reaches_voc and not (minimum.settled and _knows_the_diode(model, known)):
         known = opened(known, [name for name in unknowns.free if name.startswith(_OF_THE_DIODE)], unknowns, limits)
     residual = model.current(used.voltage) - used.current
+    freedom, chi_square = used.voltage.size - len(unknowns.free), None
+    if settings.weights == "from the file" and freedom > 0:
+        with np.errstate(over="ignore"):
+            chi_square = float(np.sum((residual / stated_noise(used, model, settings.voltage_noise)) ** 2)) / freedom
     return Refinement(
         model=model,
         settings=settings,
@@ -115,8 +119,10 @@ def refinement_of(
             s_shaped=s_shaped,
             lit=sweep.lit,
             reaches_voc=reaches_voc,
+            chi_square=chi_square,
         ),
         weights=resolved(settings.weights, sweep),
+        chi_square=chi_square,
     )
 
 

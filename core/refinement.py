@@ -65,7 +65,7 @@ class Refinement:
     model : OneDiode or TwoDiode
     settings : FitSettings
         As asked for; ``weights`` says what automatic weights came to.
-    weights : "uniform", "relative" or "effective"
+    weights : "uniform", "relative", "effective" or "from the file"
     free : tuple of str
         Parameters that were free, k of them.
     standard_errors : dict of str to (float or None)
@@ -87,6 +87,9 @@ class Refinement:
         Sweeps that it was refined together with.
     bond : Bond or None
         What ties it to them; None where it was refined alone, or kept before bonds were.
+    chi_square : float or None
+        Per degree of freedom: the squared residuals in units of the standard deviations that the file gives, over the
+        points less the free parameters; None without weights from the file. Errors do not rest on it.
     """
 
     model: Model
@@ -101,6 +104,7 @@ class Refinement:
     weights: str = "uniform"
     others: int = 0
     bond: Bond | None = None
+    chi_square: float | None = None
 
     def __post_init__(self):
         covariance = np.array(self.covariance, dtype=float)
@@ -129,6 +133,7 @@ class Refinement:
             "weights": self.weights,
             "others": self.others,
             "bond": None if self.bond is None else self.bond.to_dict(),
+            "chi_square": None if self.chi_square is None else _finite(self.chi_square),
         }
 
     @classmethod

@@ -6,7 +6,7 @@ Units: V; A cm⁻² where an area is known or the file gives a density, else A; 
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import asdict, dataclass, field, replace
 from typing import Any, Literal
 
@@ -102,6 +102,9 @@ class Sweep:
         Names of conditions that the file does not give: assumed until the user confirms them.
     read_unit : str
         Where the file gives no unit of the current: the one in ``CURRENT_UNITS`` that it is taken for; else "".
+    current_error : ndarray, shape (n,), or None
+        Standard deviation of each current that the file gives [unit of current], NaN where it is missing; None where
+        the file gives none. It stands as read, so that values at or below zero may be among them.
     """
 
     voltage: np.ndarray
@@ -117,9 +120,12 @@ class Sweep:
     header: Mapping[str, str] = field(default_factory=dict)
     assumed: frozenset[str] = frozenset({"temperature", "irradiance", "series_cells"})
     read_unit: str = ""
+    current_error: np.ndarray | None = None
 
     def __post_init__(self):
-        for name in ("voltage", "current"):
+        for name in ("voltage", "current", "current_error"):
+            if name == "current_error" and self.current_error is None:
+                continue
             array = np.array(getattr(self, name), dtype=float)  # a copy: nobody else holds it
             array.setflags(write=False)
             object.__setattr__(self, name, array)
@@ -145,6 +151,15 @@ class Sweep:
     def series_cells(self) -> int:
         return self.conditions.series_cells
 
+    def only(self, chosen: np.ndarray) -> Sweep:
+        """The same sweep with some of its points alone: a mask, shape (n,), or indices."""
+        return replace(
+            self,
+            voltage=self.voltage[chosen],
+            current=self.current[chosen],
+            current_error=_each(self.current_error, lambda error: error[chosen]),
+        )
+
     def under(self, conditions: Conditions) -> Sweep:
         """The same measurement with other conditions; currents are rescaled with the area.
 
@@ -154,9 +169,11 @@ class Sweep:
             If the file gives a density without its area and another area is asked for:
             the current that was measured is then not known.
         """
+        factor = self.rescaling(conditions)
         return replace(
             self,
-            current=self.current * self.rescaling(conditions),
+            current=self.current * factor,
+            current_error=_each(self.current_error, lambda error: error * factor),
             per_area=self.read_as == "density" or conditions.area is not None,
             conditions=_with_area_of_density(self.read_as, conditions),
         )
@@ -183,10 +200,15 @@ class Sweep:
             raise ConditionRefused(f"The current can be read as {', '.join(CURRENT_UNITS)}, not as “{unit}”.")
         (before, was), (after, becomes) = CURRENT_UNITS[self.read_unit], CURRENT_UNITS[unit]
         area = self.area if was == "current" else self.conditions.file_area  # the one that the file names
-        numbers = self.current / before * (area or 1.0 if was == "current" else 1.0)
+
+        def taken(values: np.ndarray) -> np.ndarray:
+            numbers = values / before * (area or 1.0 if was == "current" else 1.0)
+            return numbers * after / (1.0 if becomes == "density" else area or 1.0)
+
         return replace(
             self,
-            current=numbers * after / (1.0 if becomes == "density" else area or 1.0),
+            current=taken(self.current),
+            current_error=_each(self.current_error, taken),
             per_area=becomes == "density" or area is not None,
             conditions=replace(self.conditions, area=area, file_area=area if becomes == "density" else None),
             read_as=becomes,
@@ -195,8 +217,8 @@ class Sweep:
         )
 
     def to_dict(self) -> dict[str, Any]:
-        """As JSON-ready values; ``from_dict`` gives the same sweep back."""
-        return {
+        """As JSON-ready values; ``from_dict`` gives the same sweep back. A missing standard deviation is None."""
+        values = {
             "voltage": self.voltage.tolist(),
             "current": self.current.tolist(),
             "per_area": self.per_area,
@@ -211,6 +233,10 @@ class Sweep:
             "assumed": sorted(self.assumed),
             "read_unit": self.read_unit,
         }
+        # Not there where the file gives none, so that such a reading is written as it always was and keeps its id.
+        if self.current_error is not None:
+            values["current_error"] = [value if np.isfinite(value) else None for value in self.current_error.tolist()]
+        return values
 
     @classmethod
     def from_dict(cls, values: Mapping[str, Any]) -> Sweep:
@@ -225,6 +251,10 @@ class Sweep:
 
 
 _TAKEN = {unit: f"You said that the file gives its current in {unit}." for unit in CURRENT_UNITS}
+
+
+def _each(values: np.ndarray | None, change: Callable[[np.ndarray], np.ndarray]) -> np.ndarray | None:
+    return None if values is None else change(values)
 
 
 def _with_area_of_density(read_as: Quantity, conditions: Conditions) -> Conditions:

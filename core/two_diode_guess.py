@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import replace
 
 import numpy as np
 from scipy.optimize import nnls
@@ -50,7 +49,7 @@ def two_diode_starts(
     """A start for each pair of n₁ and n₂ that holds and limits allow, the best first. Raises as ``first_guess`` does."""
     usable = np.isfinite(sweep.voltage) & np.isfinite(sweep.current)
     if not np.all(usable):
-        sweep = replace(sweep, voltage=sweep.voltage[usable], current=sweep.current[usable])
+        sweep = sweep.only(usable)
     refuse_if_hopeless(sweep.voltage, sweep.current)
     if not sweep.lit:
         hold = {"photocurrent": 0.0, **hold}

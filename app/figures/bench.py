@@ -6,7 +6,6 @@ so that switching the theme redraws nothing and an exported picture is always on
 
 from __future__ import annotations
 
-from dataclasses import replace
 from html import escape
 
 import numpy as np
@@ -15,6 +14,7 @@ import plotly.graph_objects as go
 from app.curves import Curve, Strip, model_curves, squeezed, strip_points, thinned
 from app.units import Units
 from core.diode import OneDiode
+from core.fit_settings import Weights
 from core.sweep import Sweep
 
 from .style import CLEAR, FAINT, HAIR, INK, quiet_axis, quiet_layout
@@ -32,6 +32,7 @@ def bench_figure(
     companions: tuple[Sweep, ...] = (),
     overlay: tuple[Sweep, ...] = (),
     strip: Strip = "residuals",
+    weights: Weights = "automatic",
     zoom_key: str = "bench",
 ) -> go.Figure:
     """The measured points, the model's lines and the strip.
@@ -47,11 +48,13 @@ def bench_figure(
         Other sweeps of the same device and light: hollow marks.
     overlay : tuple of Sweep
         Sweeps of other devices to look at beside it: thin lines.
+    weights : str
+        Of the fit; those from the file set the unit of the residuals.
     zoom_key : str
         The user's zoom survives every redraw with the same key.
     """
     units = Units.of(sweep.per_area)
-    curves = {c.uid: c for c in model_curves(sweep, model, strip)} if model else {}
+    curves = {c.uid: c for c in model_curves(sweep, model, strip, weights)} if model else {}
     figure = go.Figure()
     for number, other in enumerate(s for s in overlay if s.per_area == sweep.per_area and s.lit == sweep.lit):
         figure.add_trace(_line_of(other, f"overlay{number}", units))
@@ -63,8 +66,8 @@ def bench_figure(
     if left_out is None or not left_out.any():
         figure.add_trace(_marks_of(sweep, "points", units, hollow=False))
     else:
-        figure.add_trace(_marks_of(_only(sweep, ~left_out), "points", units, hollow=False))
-        crosses = _marks_of(_only(sweep, left_out), "left-out", units, hollow=False)
+        figure.add_trace(_marks_of(sweep.only(~left_out), "points", units, hollow=False))
+        crosses = _marks_of(sweep.only(left_out), "left-out", units, hollow=False)
         figure.add_trace(crosses.update(marker={"symbol": "x-thin", "size": 6, "line": {"width": 1.2, "color": FAINT}}))
     figure.add_trace(_model_trace(curves.get("model"), "model", "y", INK, 2, "solid"))
 
@@ -105,10 +108,6 @@ def _marks_of(sweep: Sweep, uid: str, units: Units, *, hollow: bool) -> go.Scatt
         customdata=[[escape(sweep.name, quote=False)]] * len(voltage),
         hovertemplate=f"%{{x:.4f}} V<br>%{{y:.4g}} {units.current}<extra>%{{customdata[0]}}</extra>",
     )
-
-
-def _only(sweep: Sweep, chosen: np.ndarray) -> Sweep:
-    return replace(sweep, voltage=sweep.voltage[chosen], current=sweep.current[chosen])
 
 
 def _line_of(sweep: Sweep, uid: str, units: Units) -> go.Scatter:

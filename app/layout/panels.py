@@ -9,7 +9,7 @@ SETTINGS = (
     ("model", "model", "", "one diode|two diodes"),
     ("window_low", "voltage from", "V", ""),
     ("window_high", "voltage to", "V", ""),
-    ("weights", "weights", "", "automatic|uniform|relative|effective"),
+    ("weights", "weights", "", "automatic|uniform|relative|effective|from the file"),
     ("current_noise", "noise of J", "", ""),
     ("voltage_noise", "noise of V", "mV", ""),
     ("loss", "loss", "", "linear|robust"),

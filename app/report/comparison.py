@@ -20,7 +20,7 @@ from core.sentences import listed
 from core.verdict import METRICS, MetricVerdict, Verdict
 from core.workspace import Workspace
 
-from .figures import FINEST, Shown, curves, difference_bars
+from .figures import FINEST, Shown, curves, difference_bars, unit_of_residuals
 from .markup import Markup, element, join, paragraph, symbol, table
 from .numbers import told_once
 from .shares import shares_table
@@ -39,10 +39,10 @@ def pair_section(workspace: Workspace, entry_a: str, entry_b: str) -> Markup:
         reason = _NOT_BESIDE if a.per_area != b.per_area else _NOT_ALIKE
         return element("section", *head, paragraph(reason), class_="device", id="pair")
     shown = [
-        Shown(f"{letter}: {name}", sweep, drawn(fits_of(workspace, entry)))
+        Shown(f"{letter}: {name}", sweep, drawn(fits_of(workspace, entry)), workspace.fit(entry).settings.weights)
         for letter, name, sweep, entry in (("A", names[0], a, entry_a), ("B", names[1], b, entry_b))
     ]
-    caption = "A: filled marks, solid line. B: hollow marks, dashed line. Below: residuals in units of the points’ noise."
+    caption = f"A: filled marks, solid line. B: hollow marks, dashed line. Below: residuals in units of {unit_of_residuals(shown)}."
     opening = element("div", *head, element("figure", curves(shown, "pair-curves"), element("figcaption", caption)), class_="opening")
     if not a.lit:
         return element("section", opening, class_="device", id="pair")

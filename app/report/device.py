@@ -24,6 +24,7 @@ from .figures import (
     digits_of,
     ladder,
     rungs_of,
+    unit_of_residuals,
 )
 from .markup import Markup, element, join, paragraph, table
 from .numbers import conditions_tables, metrics_tables, parameters_tables
@@ -72,8 +73,8 @@ def _curves(
 ) -> list[Markup]:
     kinds: dict[tuple[bool, bool], list[Shown]] = {}
     for entry, name in zip(entries, names, strict=True):
-        sweep = workspace.sweep(entry)
-        kinds.setdefault((not sweep.lit, not sweep.per_area), []).append(Shown(name, sweep, drawn(told[entry])))
+        sweep, weights = workspace.sweep(entry), workspace.fit(entry).settings.weights
+        kinds.setdefault((not sweep.lit, not sweep.per_area), []).append(Shown(name, sweep, drawn(told[entry]), weights))
     pictures = []
     for _, shown in sorted(kinds.items()):
         pictures += [shown[at : at + _CURVES] for at in range(0, len(shown), _CURVES)]
@@ -92,7 +93,7 @@ def _curves(
 def _curve_words(shown: Sequence[Shown]) -> str:
     fitted = any(one.model is not None for one in shown)
     words = "Marks: measured points" + (", thinned for print where they are many" if any(s.sweep.voltage.size > 140 for s in shown) else "")
-    words += "; lines: models. Below: residuals in units of the points’ noise" if fitted else ""
+    words += f"; lines: models. Below: residuals in units of {unit_of_residuals(shown)}" if fitted else ""
     return words + ("; ring: largest measured power." if 0 < sum(one.sweep.lit for one in shown) <= 2 else ".")
 
 

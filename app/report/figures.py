@@ -8,12 +8,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from app.curves import chosen_points, noise_of_points, squeezed, thinned, voltage_grid
+from app.curves import chosen_points, squeezed, strip_noise, thinned, voltage_grid
 from app.figures.bench import plot_ranges
 from app.figures.style import FAINT, HAIR, INK, SOFT
 from app.mechanisms import MECHANISMS
 from app.readout import measured
 from app.units import Units
+from core.fit_settings import Weights
 from core.models import Model
 from core.sentences import share_digits
 from core.shares import Shares
@@ -50,6 +51,13 @@ class Shown:
     name: str
     sweep: Sweep
     model: Model | None
+    weights: Weights = "automatic"
+
+
+def unit_of_residuals(shown: Sequence[Shown]) -> str:
+    """What the residuals of a picture are measured in, as its caption says it."""
+    stated = [one.name for one in shown if one.model is not None and one.weights == "from the file"]
+    return "the points’ noise" + (f", for {', '.join(stated)} the standard deviations in the file" if stated else "")
 
 
 def curves(shown: Sequence[Shown], name: str, width: float = WIDTH) -> Markup:
@@ -125,7 +133,8 @@ def _residuals(drawing: Drawing, shown: Sequence[Shown], x: Scale, y: Scale) -> 
     for place, one in enumerate(shown):
         if one.model is not None:
             voltage, current = thinned(one.sweep, MARKS)
-            residual = (current - one.model.current(voltage)) / noise_of_points(one.sweep)[chosen_points(one.sweep, MARKS)]
+            noise = strip_noise(one.sweep, one.weights)[chosen_points(one.sweep, MARKS)]
+            residual = (current - one.model.current(voltage)) / noise
             drawing.marks(x(voltage), y(squeezed(residual)), radius=1.4, **_marks(place))
     drawing.unclip()
     ticks = [(float(squeezed(np.array(v))), words) for v, words in ((-100, "−100"), (-10, "−10"), (0, "0"), (10, "10"), (100, "100"))]

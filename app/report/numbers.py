@@ -76,6 +76,8 @@ def parameters_tables(fits: Sequence[tuple[str, Fitted]], units_of: Callable[[st
             rows.append(["fit", *(element("span", fit.words, class_="reason") for _, fit in part)])
             if any(fit.refinement for _, fit in part):
                 rows.append([_headed("rms residual", units.current), *(_residual(fit, units) for _, fit in part)])
+                if any(fit.refinement and fit.refinement.chi_square is not None for _, fit in part):
+                    rows.append(["χ² per degree of freedom", *(_chi_square(fit) for _, fit in part)])
                 rows.append(["points used", *(str(fit.refinement.points) if fit.refinement else "–" for _, fit in part)])
             blocks.append(table(["", *names], rows, "numbers sweeps few" if columns <= _FEW else "numbers sweeps"))
     return join(blocks)
@@ -176,3 +178,7 @@ def interval_text(interval: Interval, factor: float = 1.0) -> str:
 
 def _residual(fit: Fitted, units: Units) -> str:
     return plus_minus(fit.refinement.rmse * units.current_factor) if fit.refinement else "–"
+
+
+def _chi_square(fit: Fitted) -> str:
+    return number(fit.refinement.chi_square, digits=3) if fit.refinement and fit.refinement.chi_square is not None else "–"

@@ -49,7 +49,7 @@ def sweeps_of(block: Block, pair: Pair, origin: Origin) -> list[Sweep]:
     Refusal
         If the columns hold no sweep.
     """
-    voltage, current, notes = _points(block, pair, origin.row_word)
+    voltage, current, error, notes = _points(block, pair, origin.row_word)
     if np.all(current == 0):
         raise Refusal(
             "the current is zero at every voltage",
@@ -75,9 +75,14 @@ def sweeps_of(block: Block, pair: Pair, origin: Origin) -> list[Sweep]:
         voltage = -voltage
         notes.append("The file's voltage has the other sign (the device works at negative voltage): turned round.")
     return [
-        _sweep(voltage[p.indices], current[p.indices], p, turned_voltage, pair, origin, said_lit, said_direction, notes)
+        _sweep(
+            voltage[p.indices],
+            current[p.indices],
+            None if error is None else error[p.indices],
+            p, turned_voltage, pair, origin, said_lit, said_direction, notes,
+        )
         for p in passes
-    ]
+    ]  # fmt: skip
 
 
 def _first(*values):
@@ -88,8 +93,10 @@ def _points_word(count: int) -> str:
     return "1 point" if count == 1 else f"{count} points"
 
 
-def _points(block: Block, pair: Pair, row_word: str) -> tuple[np.ndarray, np.ndarray, list[str]]:
-    """Usable voltages and currents, and notes on what was left out."""
+def _points(
+    block: Block, pair: Pair, row_word: str
+) -> tuple[np.ndarray, np.ndarray, np.ndarray | None, list[str]]:
+    """Usable voltages and currents with the standard deviations of these, and notes on what was left out."""
     volts, amps = block.values[:, pair.voltage], block.values[:, pair.current]
     good = np.isfinite(volts) & np.isfinite(amps)
     void = ~good & (np.isinf(volts) | np.isinf(amps))
@@ -125,7 +132,12 @@ def _points(block: Block, pair: Pair, row_word: str) -> tuple[np.ndarray, np.nda
         )
     voltage, current = volts[good] * pair.voltage_factor, amps[good] * pair.current_factor
     _refuse_absurd(voltage, current, pair, int(block.lines[0]))
-    return voltage, current, notes
+    error = None if pair.error is None else block.values[good, pair.error] * pair.error_factor
+    if error is not None:
+        error[np.isinf(error)] = np.nan
+        if lacking := int(np.count_nonzero(~(error > 0))):
+            notes.append(f"{_points_word(lacking)} without a standard deviation above zero.")
+    return voltage, current, error, notes
 
 
 def _refuse_absurd(voltage: np.ndarray, current: np.ndarray, pair: Pair, line: int) -> None:
@@ -171,6 +183,7 @@ def _vote(passes: list[Pass], voltage, current, said_lit, question) -> bool:
 def _sweep(
     voltage: np.ndarray,
     current: np.ndarray,
+    error: np.ndarray | None,
     one: Pass,
     turned_voltage: bool,
     pair: Pair,
@@ -197,6 +210,7 @@ def _sweep(
             f"The file says {said_direction} but lists the voltages the other way: taken as {said_direction}."
         )
         voltage, current, direction = voltage[::-1], current[::-1], said_direction
+        error = None if error is None else error[::-1]
     assumed = {"temperature", "irradiance", "series_cells"}
     irradiance = ONE_SUN
     stated = _first(recorded.irradiance, origin.irradiance)
@@ -232,6 +246,7 @@ def _sweep(
         header=dict(origin.header),
         assumed=frozenset(assumed),
         read_unit=pair.read_unit,
+        current_error=error,
     )
     if pair.density:
         return sweep.under(replace(conditions, file_area=_first(pair.area, recorded.area)))

@@ -11,7 +11,7 @@ from .guesses import finite, is_count, level_at_zero, pairs_by_numbers, voltage_
 from .refusal import Refusal
 from .table import Block
 from .thousands import NAMES, Doubt
-from .units import Label, parse_label, parse_unit
+from .units import Label, Unit, parse_label, parse_unit
 from .words import device_in, is_german
 
 # A voltage without unit beyond this is read as millivolts [V]; module strings end far below.
@@ -46,6 +46,8 @@ class Pair:
     assumed_units: bool = False
     bare: bool = False  # chosen by its numbers alone
     read_unit: str = ""  # of a current whose unit the file does not give
+    error: int | None = None  # the column with the standard deviation of each current
+    error_factor: float = 1.0
     notes: tuple[str, ...] = ()
 
 
@@ -78,11 +80,11 @@ def pairs_of(block: Block) -> list[Pair]:
     columns = _labelled(block)
     columns = [c for c in columns if c.index in usable]
     if any(c.label.kind in ("voltage", "current", "density") for c in columns):
-        found, notes = _by_label(block, columns)
+        found, errors, notes = _by_label(block, columns)
     else:
         others = {c.index for c in columns if c.label.kind == "other"}
         open_ones = [c for c in usable if c not in others]
-        found, notes = [], ()
+        found, errors, notes = [], {}, ()
         if len(open_ones) > 1:
             indices, notes = pairs_by_numbers(block.values, open_ones, line)
             found = [(_Column(v, Label(), ""), _Column(c, Label(), "")) for v, c in indices]
@@ -92,7 +94,7 @@ def pairs_of(block: Block) -> list[Pair]:
             "Name the columns, for example “Voltage (V)” and “Current (A)”",
             line=line,
         )
-    return [_with_units(block, columns, voltage, current, notes) for voltage, current in found]
+    return [_with_units(block, columns, voltage, current, errors.get(current.index), notes) for voltage, current in found]
 
 
 def _labelled(block: Block) -> list[_Column]:
@@ -112,7 +114,9 @@ def _labelled(block: Block) -> list[_Column]:
             cell = _at(rows, row, index, width, fill=row < main)
             unit = parse_unit(cell.strip("()[] ")) if cell else None
             if unit is not None and row > main:
-                if label.kind is None or unit.kind == label.kind or {unit.kind, label.kind} == {"current", "density"}:
+                if label.error_of is not None:
+                    label = _error_in(label, unit)
+                elif label.kind is None or unit.kind == label.kind or {unit.kind, label.kind} == {"current", "density"}:
                     label = replace(label, kind=unit.kind, factor=unit.factor, capital=unit.capital)
             elif cell and row < main and not scores[row]:
                 above = parse_label(cell)
@@ -126,6 +130,13 @@ def _labelled(block: Block) -> list[_Column]:
     return columns
 
 
+def _error_in(label: Label, unit: Unit) -> Label:
+    """The label of a standard deviation with the unit that stands below it; one of another kind makes it none of a current."""
+    if unit.kind in ("current", "density"):
+        return replace(label, factor=unit.factor, error_of=unit.kind)
+    return replace(label, factor=None, error_of=None)
+
+
 def _at(rows: Sequence[Sequence[str]], row: int, index: int, width: int, fill: bool = False) -> str:
     """A heading's cell; with ``fill`` the one to its left where it is empty (merged cells)."""
     cells = rows[row]
@@ -136,7 +147,10 @@ def _at(rows: Sequence[Sequence[str]], row: int, index: int, width: int, fill: b
     return ""
 
 
-def _by_label(block: Block, columns: list[_Column]) -> tuple[list[tuple[_Column, _Column]], tuple[str, ...]]:
+def _by_label(
+    block: Block, columns: list[_Column]
+) -> tuple[list[tuple[_Column, _Column]], dict[int, _Column], tuple[str, ...]]:
+    """Pairs of voltage and current, the standard deviations by the index of their current, and notes."""
     voltages = [c for c in columns if c.label.kind == "voltage"]
     currents = [c for c in columns if c.label.kind in ("current", "density")]
     currents = [c for c in currents if not c.label.magnitude] or currents
@@ -149,7 +163,7 @@ def _by_label(block: Block, columns: list[_Column]) -> tuple[list[tuple[_Column,
         best = max(unknown, key=lambda c: voltage_likeness(block.values[:, c.index]))
         voltages, unknown = [best], [c for c in unknown if c is not best]
     if not voltages or not currents:
-        return [], ()
+        return [], {}, ()
     if len(voltages) > 1 and len(voltages) != len(currents):
         measured = [c for c in voltages if c.label.role == "measured"]
         unset = [c for c in voltages if c.label.role != "set"]
@@ -164,12 +178,43 @@ def _by_label(block: Block, columns: list[_Column]) -> tuple[list[tuple[_Column,
     else:
         found = [(_nearest(voltages, c), c) for c in currents]
     _refuse_shifted(block, found)
-    used = {c.index for pair in found for c in pair}
+    errors = _errors(block, columns, found)
+    used = {c.index for pair in found for c in pair} | {c.index for c in errors.values()}
     left = [c.title or f"column {c.index + 1}" for c in columns if c.index not in used]
     if left:
         names = ", ".join(f"“{name[:40]}”" for name in left[:5]) + (" and more" if len(left) > 5 else "")
         notes.append(f"Not used: {names}.")
-    return found, tuple(notes)
+    return found, errors, tuple(notes)
+
+
+def _errors(block: Block, columns: list[_Column], found: list[tuple[_Column, _Column]]) -> dict[int, _Column]:
+    """The standard deviation of each current, by the current's index, where nothing about it is in doubt."""
+    errors = [c for c in columns if c.label.error_of is not None and np.any(finite(block.values[:, c.index]) > 0)]
+    if not errors:
+        return {}
+    matched = {}
+    taken = sorted(c.index for pair in found for c in pair)
+    for voltage, current in found:
+        beside = errors
+        if len(found) > 1:  # of several currents, each has its own to its right
+            end = next((index for index in taken if index > current.index), block.values.shape[1])
+            beside = [c for c in errors if current.index < c.index < end]
+        if len(beside) == 1 and _is_error_of(block, columns, beside[0], voltage, current):
+            matched[current.index] = beside[0]
+    # One that is left over may stand beside another current than its own.
+    return matched if len(matched) == len(found) == len(errors) else {}
+
+
+def _is_error_of(block: Block, columns: list[_Column], error: _Column, voltage: _Column, current: _Column) -> bool:
+    said, of = error.label, current.label
+    if said.direction not in (None, of.direction) or said.lit not in (None, of.lit):
+        return False
+    if block.doubt is not None and error.index in block.doubt.first and not {voltage.index, current.index} & set(block.doubt.first):
+        return False  # whether its marks divide decimals or thousands is not resolved
+    if said.factor is not None:  # a unit of its own says nothing beside a current without one
+        return of.factor is not None and said.error_of == of.kind
+    both = {"current", "density"} <= {c.label.kind for c in columns}
+    return said.error_of == of.kind or not both
 
 
 def _refuse_shifted(block: Block, found: list[tuple[_Column, _Column]]) -> None:
@@ -229,7 +274,12 @@ def _area_between(block: Block, density: _Column, current: _Column) -> float | N
 
 
 def _with_units(
-    block: Block, columns: list[_Column], voltage: _Column, current: _Column, notes: tuple[str, ...]
+    block: Block,
+    columns: list[_Column],
+    voltage: _Column,
+    current: _Column,
+    error: _Column | None,
+    notes: tuple[str, ...],
 ) -> Pair:
     said = list(notes)
     volts = np.abs(finite(block.values[:, voltage.index]))
@@ -259,11 +309,14 @@ def _with_units(
         assumed = True
     elif assumed:
         said.append(f"No unit given for the voltage: read as {voltage_unit}; check that this is right.")
+    error_factor = current_factor if error is None or error.label.factor is None else error.label.factor
     if block.doubt is not None:
         larger, note = _resolved(block, block.doubt, voltage, current, voltage_factor, current_factor, density)
         said += note
         voltage_factor *= larger.get(voltage.index, 1.0)
         current_factor *= larger.get(current.index, 1.0)
+        if error is not None and error.index in block.doubt.first:
+            error_factor *= max(larger.values(), default=1.0)  # one mark means one thing in all columns
     if block.note:
         said.append(block.note)
     device = current.device or voltage.device or _device_in_label(current.label)
@@ -281,6 +334,8 @@ def _with_units(
         said.append("The M of the unit in the heading is read as milli: no solar cell is measured in megavolts or megaamperes.")
     if voltage.label.factor == 1e-3:
         said.append("The voltage was read in mV.")
+    if error is not None:
+        said.append(f"“{error.title[:40]}” is read as the standard deviation of each current.")
     return Pair(
         voltage.index,
         current.index,
@@ -295,6 +350,8 @@ def _with_units(
         assumed_units=assumed,
         bare=voltage.label.kind is None and current.label.kind is None,
         read_unit=read_unit,
+        error=None if error is None else error.index,
+        error_factor=error_factor,
         notes=tuple(said),
     )
 

@@ -34,13 +34,24 @@ _DENSITY_WORDS = {"j", "density", "stromdichte", "jsc"}
 _OTHER_WORDS = {
     "time", "zeit", "zeitstempel", "timestamp", "t", "power", "leistung", "p", "index", "nr", "no", "point", "punkt",
     "messpunkt", "resistance", "widerstand", "r", "temperature", "temperatur", "temp", "status", "irradiance",
-    "log", "ln", "log10", "error", "fehler", "std", "sigma", "deviation", "uncertainty", "step", "cycle",
+    "log", "ln", "log10", "step", "cycle",
     "datum", "date", "id", "comment", "kommentar", "range", "lfd", "einstrahlung", "efficiency", "wirkungsgrad",
 }  # fmt: skip
+# With a current they name its standard deviation; of anything else the column is none that is read.
+_ERROR_WORDS = {
+    "error", "err", "fehler", "std", "stdev", "stddev", "sigma", "deviation", "uncertainty",
+    "unsicherheit", "messunsicherheit", "standardabweichung",
+}  # fmt: skip
+# These say that it is no standard deviation of the current in its own right.
+_RELATIVE_WORDS = {"rel", "relative", "relativ", "percent", "prozent", "expanded", "k", "code", "flag", "count", "max", "min"}
+_SEVERAL_SIGMA = re.compile(r"(?<![a-z0-9])[2-9]\s*sigma")
 _MAGNITUDE_WORDS = {"abs", "betrag", "absolute", "magnitude"}
 _SET_WORDS = {"set", "source", "sourced", "src", "applied", "app", "soll", "prog", "programmed", "nominal", "vorgabe"}
 _MEASURED_WORDS = {"meas", "measured", "sense", "sensed", "gemessen", "mess", "ist", "actual", "mpp"}
-_JOINED = re.compile(r"^([viuj])(meas|measured|set|source|src|app|fwd|rev|forward|reverse|light|dark|mess|soll|ist|\d+)$")
+_JOINED = re.compile(
+    r"^([viuj])(meas|measured|set|source|src|app|fwd|rev|forward|reverse|light|dark|mess|soll|ist|std|err|sigma|\d+)$"
+    r"|^(std|err|sigma)([viuj])$"
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,6 +75,7 @@ class Label:
     magnitude: bool = False
     rest: str = ""
     capital: bool = False  # its unit is written with M for milli
+    error_of: Literal["current", "density"] | None = None  # whose standard deviation it is; the kind is then "other"
 
 
 def plain(text: str) -> str:
@@ -113,7 +125,7 @@ def _loose_case(text: str) -> str:
 @lru_cache(maxsize=4096)
 def parse_label(text: str) -> Label:
     """What a heading such as 'Current density (mA/cm²)', 'U / V' or 'I_fwd_mA' says."""
-    words = plain(text).strip().strip("\"'#% ")
+    words = plain(text).replace("σ", " sigma ").strip().strip("\"'#% ")
     whole = parse_unit(words.strip("()[]"))
     if whole is not None and not re.search(r"[(\[]", words.strip("()[]")):
         return Label(kind=whole.kind, factor=whole.factor, capital=whole.capital)
@@ -121,15 +133,18 @@ def parse_label(text: str) -> Label:
     tokens = [t for t in re.split(r"[^A-Za-zÀ-ÿ0-9]+", words) if t]
     kind, role, rest = None, None, []
     magnitude = "|" in words
+    relative = "%" in text or _SEVERAL_SIGMA.search(words.lower()) is not None
     seen: set[str] = set()
     for token in tokens:
         lower = token.lower()
         joined = _JOINED.match(lower)
-        parts = (joined[1], joined[2]) if joined else (lower,)
+        parts = tuple(part for part in joined.groups() if part) if joined else (lower,)
         used = False
         for part in parts:
             if part in _OTHER_WORDS and not (len(part) == 1 and len(tokens) > 1):
                 seen.add("other")
+            elif part in _ERROR_WORDS:
+                seen.add("error")
             elif part in _DENSITY_WORDS:
                 seen.add("density")
             elif part in _CURRENT_WORDS:
@@ -143,11 +158,16 @@ def parse_label(text: str) -> Label:
             elif part in _MEASURED_WORDS:
                 role = "measured"
             else:
+                relative = relative or part in _RELATIVE_WORDS
                 used = used or direction_in(part) is not None or light_in(part) is not None
                 continue
             used = True
         if not used:
             rest.append(token)
+    if "error" in seen:
+        error_of = None if relative else _error_of(seen, unit)
+        factor = unit.factor if unit is not None and error_of is not None else None
+        return Label("other", factor, role, direction_in(words), light_in(words), magnitude, " ".join(rest), error_of=error_of)
     for name in ("other", "density", "current", "voltage"):
         if name in seen:
             kind = name
@@ -159,6 +179,15 @@ def parse_label(text: str) -> Label:
     own = unit if unit is not None and unit.kind == kind else None
     factor, capital = (own.factor, own.capital) if own else (None, False)
     return Label(kind, factor, role, direction_in(words), light_in(words), magnitude, " ".join(rest), capital)
+
+
+def _error_of(seen: set[str], unit: Unit | None) -> Literal["current", "density"] | None:
+    """Whose standard deviation a heading names by its words and its unit; None where that is no current or in doubt."""
+    if seen & {"other", "voltage"} or unit is not None and unit.kind not in ("current", "density"):
+        return None
+    if unit is not None:
+        return unit.kind
+    return "density" if "density" in seen else "current" if "current" in seen else None
 
 
 def _split_unit(words: str) -> tuple[str, Unit | None]:
@@ -173,7 +202,8 @@ def _split_unit(words: str) -> tuple[str, Unit | None]:
             unit = parse_unit(tail)
             if unit is not None and head.strip():
                 # 'Pixel A' is no current: a bare last letter needs a quantity that fits before it.
-                if separator not in (" ", "_", ",") or parse_label(head).kind == unit.kind or unit.kind == "density":
+                said = parse_label(head)
+                if separator not in (" ", "_", ",") or unit.kind in (said.kind, said.error_of, "density"):
                     return head, unit
             more, found, tail = tail.partition(separator)
             head += separator + more

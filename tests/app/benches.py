@@ -31,6 +31,8 @@ IN_THE_DARK = sweep_of(replace(CELL, photocurrent=0.0), "dark", conditions=DARK)
 # The same device without its area: amperes and ohms.
 AMPERES = sweep_of(CELL.scaled(0.1), "amperes", device="B", conditions=Conditions(), noise=2e-7)
 OTHER = sweep_of(replace(CELL, photocurrent=0.02), "other", device="C")
+# Its file gives the standard deviation of each current.
+WITH_ERRORS = replace(LIT, name="averaged", current_error=1e-6 * (1.0 + np.arange(56) % 3))
 _S = np.linspace(0.0, 1.05, 106)
 # A step in the middle of the fall: no diode does this.
 S_SHAPED = Sweep(

@@ -18,7 +18,7 @@ from app.curves import (
 from app.units import Units
 from core.noise import noise_level
 from core.weighting import point_noise
-from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, sweep_of
+from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, WITH_ERRORS, sweep_of
 
 DARK_CELL = replace(CELL, photocurrent=0.0)
 
@@ -71,6 +71,17 @@ def test_residuals_are_in_units_of_the_noise():
     np.testing.assert_allclose(line.y, squeezed((LIT.current - CELL.current(LIT.voltage)) / level))
     shifted = replace(LIT, current=LIT.current + 9 * level)
     assert np.median(curves(shifted, CELL)["strip-model"].y) == pytest.approx(np.log10(1 + 9), abs=0.1)
+
+
+def test_residuals_are_in_units_of_the_files_standard_deviations_where_these_set_the_weights():
+    sweep = replace(WITH_ERRORS, current_error=np.where(np.arange(56) == 4, 0.0, WITH_ERRORS.current_error))
+    (line,) = [c for c in model_curves(sweep, CELL, "residuals", "from the file") if c.uid == "strip-model"]
+    shown = np.arange(56) != 4
+    expected = squeezed((sweep.current - CELL.current(sweep.voltage))[shown] / sweep.current_error[shown])
+    np.testing.assert_allclose(line.y[shown], expected)
+    assert line.to_dict()["y"][4] is None
+    others = [c for c in model_curves(sweep, CELL, "residuals", "effective") if c.uid == "strip-model"]
+    np.testing.assert_array_equal(others[0].y, curves(sweep, CELL)["strip-model"].y)
 
 
 def test_the_noise_of_a_sweep_is_judged_once():

@@ -14,7 +14,7 @@ from core.errors import SweepbenchError
 from core.fit_problem import used
 from core.fit_settings import FitSettings
 from core.two_diode import TwoDiode
-from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, bench
+from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, WITH_ERRORS, bench
 
 
 @pytest.fixture
@@ -49,8 +49,9 @@ def test_the_panel_offers_what_the_server_understands():
 
 
 @pytest.mark.parametrize(("name", "text"), [(name, text) for name in ("weights", "loss") for text in CHOICES[name]])
-def test_a_choice_is_kept(lit, name, text):
-    assert settings_after(lit, (name, text)) == replace(FitSettings(), **{name: text})
+def test_a_choice_is_kept(name, text):
+    workspace, (entry,) = bench(WITH_ERRORS, models=(CELL,))
+    assert settings_after((workspace, entry), (name, text)) == replace(FitSettings(), **{name: text})
 
 
 def test_a_change_says_what_it_was_and_leaves_the_model(lit):
@@ -121,6 +122,7 @@ def test_the_noise_of_the_current_is_typed_in_the_unit_of_the_screen(lit):
         ("voltage_noise", "-1", "noise"),
         ("voltage_noise", "inf", "noise"),
         ("weights", "heavy", "“heavy”"),
+        ("weights", "from the file", "no column with the standard deviation of the current"),
         ("model", "three diodes", "“three diodes”"),
         ("hold", "ideality", "Reload the page"),
         ("excluded", "1", "Reload the page"),

@@ -23,6 +23,7 @@ from tests.app.benches import (
     IN_THE_DARK,
     LIT,
     REVERSE,
+    WITH_ERRORS,
     bench,
     intervals,
     sweep_of,
@@ -56,6 +57,12 @@ def test_the_settings_are_shown_as_they_are_typed():
     inside = (LIT.voltage >= 0.2) & (LIT.voltage <= 0.9)
     inside[30] = False
     assert shown["left_out"] == f"{np.sum(~inside)} of 56 points left out"
+
+
+def test_weights_from_the_file_are_offered_where_it_has_them():
+    workspace, (bare, stated) = bench(LIT, WITH_ERRORS)
+    assert insight.settings_rows(workspace, bare)["weights_without"] == ["from the file"]
+    assert insight.settings_rows(workspace, stated)["weights_without"] == []
 
 
 # Correlation

@@ -25,9 +25,18 @@ from core import steps
 from core.comparing import losses
 from core.errors import StepRefused
 from core.profile import Interval
-from core.refine import refine
+from core.refine import FitSettings, refine
 from core.shares import difference_shares
-from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, OTHER, REVERSE, bench
+from tests.app.benches import (
+    AMPERES,
+    CELL,
+    IN_THE_DARK,
+    LIT,
+    OTHER,
+    REVERSE,
+    WITH_ERRORS,
+    bench,
+)
 
 MADE = datetime(2026, 3, 1, 14, 5, tzinfo=timezone(timedelta(hours=1)))
 ENDLESS = {"meta", "br"}
@@ -268,6 +277,15 @@ def test_methods_are_those_that_were_used(full):
     workspace, (dark,) = bench(IN_THE_DARK)
     text = page_of(workspace, [dark]).text
     assert "Detailed-balance limit" not in text and "Robust loss" not in text and "Figures of merit" in text
+
+
+def test_weights_from_the_file_are_named_in_settings_and_caption():
+    workspace, (entry,) = bench(WITH_ERRORS)
+    found = refine(WITH_ERRORS, CELL, FitSettings(weights="from the file"))
+    workspace = steps.apply(workspace, steps.record_refinement(workspace, entry, found))
+    text = page_of(workspace, [entry]).text
+    assert "weights from the file" in text and "χ² per degree of freedom" in text
+    assert "the standard deviations in the file" in text
 
 
 def test_pictures_are_sound_svg_with_text_as_text():

@@ -9,9 +9,18 @@ from app import tables
 from core import steps
 from core.first_guess import first_guess
 from core.metrics import measure
+from core.reading import read_sweeps
 from core.refine import FitSettings, refine
 from core.two_diode_guess import guess_two_diodes
-from tests.app.benches import AMPERES, CELL, IN_THE_DARK, LIT, REVERSE, bench
+from tests.app.benches import (
+    AMPERES,
+    CELL,
+    IN_THE_DARK,
+    LIT,
+    REVERSE,
+    WITH_ERRORS,
+    bench,
+)
 
 
 def refined_bench(*sweeps, hold=frozenset()):
@@ -133,3 +142,16 @@ def test_the_summary_holds_every_column_of_the_other_tables():
     parts = (tables.metrics_table, tables.parameters_table, tables.conditions_table)
     assert {column for part in parts for column in part(workspace, entries)} <= set(summary)
     assert len(summary) == 2 and summary.columns.is_unique
+
+
+def test_weights_from_the_file_are_named_with_their_chi_square_and_the_points_carry_them():
+    workspace, (entry,) = bench(WITH_ERRORS)
+    found = refine(WITH_ERRORS, CELL, FitSettings(weights="from the file"))
+    workspace = steps.apply(workspace, steps.record_refinement(workspace, entry, found))
+    row = tables.parameters_table(workspace, [entry]).iloc[0]
+    assert "; weights from the file; " in row["fit settings"]
+    assert row["χ² per degree of freedom"] == found.chi_square
+    points = tables.points_table(workspace, entry)
+    assert points["J standard deviation (mA cm⁻²)"].tolist() == pytest.approx((1e3 * WITH_ERRORS.current_error).tolist())
+    (again,) = read_sweeps(points[["V (V)", "J (mA cm⁻²)", "J standard deviation (mA cm⁻²)"]].to_csv(index=False).encode(), "again.csv")
+    assert again.current_error.tolist() == pytest.approx(WITH_ERRORS.current_error.tolist())

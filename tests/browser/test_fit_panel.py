@@ -4,7 +4,9 @@ import numpy as np
 import pytest
 from playwright.sync_api import expect
 
-from core.diode import PARAMETERS
+from app.curves import squeezed
+from app.wording import number
+from core.diode import PARAMETERS, OneDiode
 from core.fit_problem import used
 from core.fit_settings import FitSettings
 from core.two_diode import TWO_DIODE_PARAMETERS, TwoDiode
@@ -110,6 +112,35 @@ def test_window_weights_and_loss_are_kept_and_used_by_the_next_fit(fitted):
     fitted.until("says", "from a lower to a higher voltage")
     assert fitted.stored.revision == revision
     fitted.settle()
+
+
+def test_weights_are_taken_from_a_file_that_gives_standard_deviations(fitted, files):
+    without = setting(fitted, "weights").locator("option", has_text="from the file")
+    assert without.is_disabled(), "the sample's file has no such column"
+    device, random = OneDiode(0.021, 2e-13, 1.7, 4.0, 1500), np.random.default_rng(4)
+    voltage = np.arange(-0.1, 1.13, 0.01)
+    error = 2e-5 * np.exp(random.normal(0.0, 1.0, voltage.size))
+    current = device.current(voltage) + error * random.standard_normal(voltage.size)
+    rows = (f"{v:.4f},{1e3 * j:.6f},{1e3 * s:.6f}" for v, j, s in zip(voltage, current, error, strict=True))
+    heading = "Voltage (V),Current density (mA/cm2),Std of current density (mA/cm2)\n"
+    (files / "averaged.csv").write_text(heading + "\n".join(rows) + "\n", encoding="utf-8")
+    before = len(fitted.rows())
+    fitted.drop(files / "averaged.csv")
+    fitted.until("rows", before + 1)
+    (entry,) = [one.id for one in fitted.stored.entries.values() if one.source_name == "averaged.csv"]
+    fitted.choose(entry)
+    assert any("standard deviation of each current" in note for note in fitted.sweep.notes)
+    with fitted.one_change():
+        setting(fitted, "weights").select_option("from the file")
+    with fitted.one_change():
+        fitted.button("refine").click()
+    found = fitted.stored.refined(entry)
+    assert found.weights == "from the file" and settings(fitted).weights == "from the file"
+    assert f"χ² per degree of freedom {number(found.chi_square, digits=3)}" in fitted.text("#fit-line")
+    assert_nothing_hangs_over(fitted, SIDE)
+    _, drawn = fitted.trace("strip-model")
+    residual = (fitted.sweep.current - found.model.current(fitted.sweep.voltage)) / fitted.sweep.current_error
+    np.testing.assert_allclose(drawn, squeezed(residual), atol=2e-3)
 
 
 def test_intervals_follow_the_level_and_correlation_is_a_picture(fitted):
