@@ -51,7 +51,7 @@ def register(app: Dash, store: Store, jobs: Jobs) -> None:
 
         def change() -> tuple[Workspace, str]:
             workspace, kept = record(store, job["workspace"], results)
-            return workspace, outcome(status, len(results), kept)
+            return workspace, outcome(status, len(results), kept, alone=job.get("alone", False))
 
         return "", None, answered(store, job["workspace"], change)
 
@@ -80,7 +80,13 @@ def begin(store: Store, jobs: Jobs, event: dict[str, Any], running: dict[str, An
     fits = [workspace.fit(entry) for entry in entries]
     arguments = [(workspace.sweep(e), fit.model, fit.settings) for e, fit in zip(entries, fits, strict=True)]
     name = jobs.submit(refine, arguments, label="refining", name=event["event"])
-    return {"job": name, "workspace": workspace.id, "entries": entries, "stamps": [stamp(workspace, e) for e in entries]}
+    return {
+        "job": name,
+        "workspace": workspace.id,
+        "entries": entries,
+        "stamps": [stamp(workspace, e) for e in entries],
+        "alone": event["kind"] == "refine",
+    }
 
 
 def is_job(workspace: Workspace, event: dict[str, Any]) -> bool:
@@ -121,13 +127,13 @@ def record(store: Store, workspace_id: str, results: Sequence[tuple[str, str, Re
     return workspace, 0
 
 
-def outcome(status: Status, found: int, kept: int) -> str:
-    """What the user hears at the end."""
+def outcome(status: Status, found: int, kept: int, *, alone: bool = False) -> str:
+    """What the user hears at the end; of the one sweep on the bench only what went wrong, for the rest is seen."""
     if status.state == "lost":
         return "The server was started anew while it was refining, so nothing was kept. Refine again."
-    if status.total == 1 and status.failures:
+    if alone and status.failures:
         return status.failures[0].sentence
-    sentences = [f"{kept} of {status.total} sweeps refined."] if status.total > 1 else []
+    sentences = [] if alone else [f"{kept} of {status.total} sweeps refined."]
     if found > kept:
         were = "was" if found - kept == 1 else "were"
         sentences.append(f"{found - kept} {were} changed or removed meanwhile and left alone.")

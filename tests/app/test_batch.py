@@ -112,7 +112,7 @@ def test_one_sweep_whose_fit_takes_long_is_a_job_too_and_says_nothing_but_its_fa
     assert desk.follow(1, job)[2]["sentence"] == ""
     assert store.current(name).refined(first).settings == free
     failed = Status("refining", 1, 1, "done", (Failure(0, "Too few points."),))
-    assert batch.outcome(failed, 0, 0) == "Too few points."
+    assert batch.outcome(failed, 0, 0, alone=True) == "Too few points."
 
 
 def test_without_a_job_the_clock_changes_nothing(desk):

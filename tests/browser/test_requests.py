@@ -100,7 +100,7 @@ def walk_the_losses(tab: Tab, entry: str, folder: Path) -> dict[str, Path]:
         tab.find(f"[data-ladder={ladder}]").click()
         expect(tab.find(f"[data-ladder={ladder}]")).to_have_attribute("aria-checked", "true")
     slide(tab, ".target[data-parameter=series_resistance] input", 0.1)
-    expect(tab.find("#target-line")).to_contain_text("With these targets")
+    expect(tab.find("#target-line")).to_contain_text("with these targets")
     sweep_over(tab, "ladder")
     tab.button("projector").click()
     until(tab, "document.body.classList.contains('projector')")
