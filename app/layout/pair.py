@@ -31,8 +31,6 @@ def pair() -> list:
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.PAIR_PLOT}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.PAIR_PLOT}),
-                                _table("CSV", "save-pair", "Both, difference and verdict of each metric"),
-                                _table("XLSX", "save-shown", "All tables of these two"),
                             ],
                         ),
                     ],
@@ -81,6 +79,13 @@ def pair() -> list:
                         html.Span("known besides noise:", className="hint"),
                         *(stated(name, words, title) for name, (words, title) in KNOWN.items()),
                         stated_switch(),
+                        html.Div(
+                            className="picture",
+                            children=[
+                                _table("CSV", "save-pair", "Both, difference and verdict of each metric"),
+                                _table("XLSX", "save-shown", "All tables of these two"),
+                            ],
+                        ),
                     ],
                 ),
                 html.H3("What if A had B’s …"),
