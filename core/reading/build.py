@@ -10,7 +10,6 @@ import numpy as np
 
 from ..constants import ONE_SUN, STANDARD_TEMPERATURE
 from ..sweep import Conditions, Sweep
-from .columns import Pair
 from .header import Recorded
 from .limits import (
     MAX_AMPERES,
@@ -22,6 +21,7 @@ from .limits import (
 )
 from .passes import Pass, split_passes
 from .refusal import Refusal
+from .scales import Pair
 from .shape import refuse_other_shapes
 from .signs import current_is_turned, looks_lit, voltage_is_turned
 from .table import Block

@@ -1,62 +1,18 @@
-"""Which columns of a block are voltage and current, and in what units."""
+"""Which columns of a block are voltage and current."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
-from .guesses import finite, is_count, level_at_zero, pairs_by_numbers, voltage_likeness
+from .guesses import finite, is_count, pairs_by_numbers, voltage_likeness
 from .refusal import Refusal
+from .scales import Column, Pair, area_between, with_units
 from .table import Block
-from .thousands import NAMES, Doubt
 from .units import Label, Unit, parse_label, parse_unit
-from .words import device_in, is_german
-
-# A voltage without unit beyond this is read as millivolts [V]; module strings end far below.
-_VOLTS_AT_MOST = 150.0
-# Single cells end below this [V]; their currents in A are rarely above the next figure.
-_CELL_VOLTS = 3.0
-_AMPERES_OF_CELL = 1.5
-_AMPERES_AT_MOST = 15.0
-# A density without unit above this at one sun cannot be in A cm⁻².
-_DENSITY_AT_MOST = 0.15
-# Where a point or comma may mark decimals or thousands, a reading beyond these is none:
-# a voltage [V] below the first or beyond _VOLTS_AT_MOST, a density [A cm⁻²], a current [A].
-_DOUBTED_VOLTS_AT_LEAST = 0.02
-_DOUBTED_DENSITY_AT_MOST = 1.0
-_DOUBTED_AMPERES_AT_MOST = 100.0
-
-
-@dataclass(frozen=True, slots=True)
-class Pair:
-    """A column of voltage and its column of current, with factors to V and to A or A cm⁻²."""
-
-    voltage: int
-    current: int
-    voltage_factor: float
-    current_factor: float
-    density: bool
-    direction: str | None = None
-    lit: bool | None = None
-    device: str = ""
-    area: float | None = None
-    magnitude: bool = False  # the file gives |current|
-    assumed_units: bool = False
-    bare: bool = False  # chosen by its numbers alone
-    read_unit: str = ""  # of a current whose unit the file does not give
-    error: int | None = None  # the column with the standard deviation of each current
-    error_factor: float = 1.0
-    notes: tuple[str, ...] = ()
-
-
-@dataclass(frozen=True, slots=True)
-class _Column:
-    index: int
-    label: Label
-    title: str
-    device: str = ""
+from .words import device_in
 
 
 def pairs_of(block: Block) -> list[Pair]:
@@ -87,17 +43,17 @@ def pairs_of(block: Block) -> list[Pair]:
         found, errors, notes = [], {}, ()
         if len(open_ones) > 1:
             indices, notes = pairs_by_numbers(block.values, open_ones, line)
-            found = [(_Column(v, Label(), ""), _Column(c, Label(), "")) for v, c in indices]
+            found = [(Column(v, Label(), ""), Column(c, Label(), "")) for v, c in indices]
     if not found:
         raise Refusal(
             "the headings name no columns of voltage and current",
             "Name the columns, for example “Voltage (V)” and “Current (A)”",
             line=line,
         )
-    return [_with_units(block, columns, voltage, current, errors.get(current.index), notes) for voltage, current in found]
+    return [with_units(block, columns, voltage, current, errors.get(current.index), notes) for voltage, current in found]
 
 
-def _labelled(block: Block) -> list[_Column]:
+def _labelled(block: Block) -> list[Column]:
     """Columns with what all the heading rows together say of each."""
     width = block.values.shape[1]
     rows = [tuple(row) for row in block.labels]
@@ -126,7 +82,7 @@ def _labelled(block: Block) -> list[_Column]:
                     lit=label.lit if label.lit is not None else above.lit,
                 )
                 device = device_in(cell)
-        columns.append(_Column(index, label, title, device))
+        columns.append(Column(index, label, title, device))
     return columns
 
 
@@ -148,8 +104,8 @@ def _at(rows: Sequence[Sequence[str]], row: int, index: int, width: int, fill: b
 
 
 def _by_label(
-    block: Block, columns: list[_Column]
-) -> tuple[list[tuple[_Column, _Column]], dict[int, _Column], tuple[str, ...]]:
+    block: Block, columns: list[Column]
+) -> tuple[list[tuple[Column, Column]], dict[int, Column], tuple[str, ...]]:
     """Pairs of voltage and current, the standard deviations by the index of their current, and notes."""
     voltages = [c for c in columns if c.label.kind == "voltage"]
     currents = [c for c in columns if c.label.kind in ("current", "density")]
@@ -187,7 +143,7 @@ def _by_label(
     return found, errors, tuple(notes)
 
 
-def _errors(block: Block, columns: list[_Column], found: list[tuple[_Column, _Column]]) -> dict[int, _Column]:
+def _errors(block: Block, columns: list[Column], found: list[tuple[Column, Column]]) -> dict[int, Column]:
     """The standard deviation of each current, by the current's index, where nothing about it is in doubt."""
     errors = [c for c in columns if c.label.error_of is not None and np.any(finite(block.values[:, c.index]) > 0)]
     if not errors:
@@ -205,7 +161,7 @@ def _errors(block: Block, columns: list[_Column], found: list[tuple[_Column, _Co
     return matched if len(matched) == len(found) == len(errors) else {}
 
 
-def _is_error_of(block: Block, columns: list[_Column], error: _Column, voltage: _Column, current: _Column) -> bool:
+def _is_error_of(block: Block, columns: list[Column], error: Column, voltage: Column, current: Column) -> bool:
     said, of = error.label, current.label
     if said.direction not in (None, of.direction) or said.lit not in (None, of.lit):
         return False
@@ -217,7 +173,7 @@ def _is_error_of(block: Block, columns: list[_Column], error: _Column, voltage: 
     return said.error_of == of.kind or not both
 
 
-def _refuse_shifted(block: Block, found: list[tuple[_Column, _Column]]) -> None:
+def _refuse_shifted(block: Block, found: list[tuple[Column, Column]]) -> None:
     """Headings that lost a cell stand above the wrong columns; a count of the rows then looks like the voltage."""
     headings = max(map(len, block.labels), default=0)
     if headings < block.values.shape[1] and any(is_count(block.values[:, voltage.index]) for voltage, _ in found):
@@ -229,15 +185,15 @@ def _refuse_shifted(block: Block, found: list[tuple[_Column, _Column]]) -> None:
         )
 
 
-def _nearest(voltages: list[_Column], current: _Column) -> _Column:
+def _nearest(voltages: list[Column], current: Column) -> Column:
     """The voltage just left of a current, else the first to its right."""
     left = [v for v in voltages if v.index < current.index]
     return left[-1] if left else voltages[0]
 
 
 def _without_doubles(
-    block: Block, currents: list[_Column], voltages: list[_Column]
-) -> tuple[list[_Column], list[str]]:
+    block: Block, currents: list[Column], voltages: list[Column]
+) -> tuple[list[Column], list[str]]:
     """Drops a current that only repeats a density beside it (or the reverse), keeping the ratio as the area."""
     densities = [c for c in currents if c.label.kind == "density"]
     plain = [c for c in currents if c.label.kind == "current"]
@@ -245,160 +201,9 @@ def _without_doubles(
         return currents, []
     doubles = []
     for density, current in zip(densities, plain, strict=False):
-        if _area_between(block, density, current) is not None:
+        if area_between(block, density, current) is not None:
             doubles.append(current)
     kept = [c for c in currents if c not in doubles]
     if doubles:
         return kept, []
     return (densities if len(voltages) == len(densities) else kept), []
-
-
-def _area_between(block: Block, density: _Column, current: _Column) -> float | None:
-    """Area [cm²] if the current is the density times one number."""
-    if density.label.factor is None or current.label.factor is None:
-        return None
-    j = block.values[:, density.index] * density.label.factor
-    i = block.values[:, current.index] * current.label.factor
-    good = np.isfinite(j) & np.isfinite(i)
-    if good.sum() < 3:
-        return None
-    j, i = j[good], i[good]
-    large = np.abs(j) > 0.1 * np.max(np.abs(j), initial=0.0)
-    if not large.any():
-        return None
-    ratio = np.abs(i[large] / j[large])
-    area = float(np.median(ratio))
-    if not (1e-12 < area < 1e9) or np.max(np.abs(ratio / area - 1)) > 0.05:
-        return None
-    return float(f"{area:.4g}")
-
-
-def _with_units(
-    block: Block,
-    columns: list[_Column],
-    voltage: _Column,
-    current: _Column,
-    error: _Column | None,
-    notes: tuple[str, ...],
-) -> Pair:
-    said = list(notes)
-    volts = np.abs(finite(block.values[:, voltage.index]))
-    voltage_factor, current_factor = voltage.label.factor, current.label.factor
-    density = current.label.kind == "density"
-    assumed, read_unit = False, ""
-    if voltage.title == "V" and float(np.max(volts, initial=0.0)) > _VOLTS_AT_MOST:
-        voltage_factor = None  # the letter is the symbol, not the unit
-    if voltage_factor is None:
-        assumed = True
-        milli = float(np.max(volts, initial=0.0)) > _VOLTS_AT_MOST
-        voltage_factor = 1e-3 if milli else 1.0
-        voltage_unit = "mV" if milli else "V"
-    if current_factor is None:
-        level = level_at_zero(block.values[:, voltage.index] * voltage_factor, block.values[:, current.index])
-        cell = float(np.max(volts, initial=0.0)) * voltage_factor < _CELL_VOLTS
-        if current.label.kind == "density":
-            unit, current_factor = ("mA cm⁻²", 1e-3) if level > _DENSITY_AT_MOST else ("A cm⁻²", 1.0)
-        elif current.label.kind == "current":
-            unit, current_factor = ("mA", 1e-3) if level > _AMPERES_AT_MOST else ("A", 1.0)
-        elif cell and level > _AMPERES_OF_CELL:
-            unit, current_factor, density = "mA cm⁻²", 1e-3, True
-        else:
-            unit, current_factor = "A", 1.0
-        read_unit, both = unit, f"{voltage_unit} and {unit}" if assumed else unit
-        said.append(f"No unit given: read as {both}; check that this is right.")
-        assumed = True
-    elif assumed:
-        said.append(f"No unit given for the voltage: read as {voltage_unit}; check that this is right.")
-    error_factor = current_factor if error is None or error.label.factor is None else error.label.factor
-    if block.doubt is not None:
-        larger, note = _resolved(block, block.doubt, voltage, current, voltage_factor, current_factor, density)
-        said += note
-        voltage_factor *= larger.get(voltage.index, 1.0)
-        current_factor *= larger.get(current.index, 1.0)
-        if error is not None and error.index in block.doubt.first:
-            error_factor *= max(larger.values(), default=1.0)  # one mark means one thing in all columns
-    if block.note:
-        said.append(block.note)
-    device = current.device or voltage.device or _device_in_label(current.label)
-    area = None
-    if density and current.label.factor is not None:
-        for other in columns:
-            if other.label.kind == "current" and other.index != current.index:
-                area = _area_between(block, current, other)
-                if area is not None:
-                    said.append(
-                        f"The file gives current and density; their ratio, {area:.4g} cm², is taken as its area."
-                    )
-                    break
-    if voltage.label.capital or current.label.capital:
-        said.append("The M of the unit in the heading is read as milli: no solar cell is measured in megavolts or megaamperes.")
-    if voltage.label.factor == 1e-3:
-        said.append("The voltage was read in mV.")
-    if error is not None:
-        said.append(f"“{error.title[:40]}” is read as the standard deviation of each current.")
-    return Pair(
-        voltage.index,
-        current.index,
-        voltage_factor,
-        current_factor,
-        density,
-        direction=current.label.direction or voltage.label.direction,
-        lit=current.label.lit if current.label.lit is not None else voltage.label.lit,
-        device=device,
-        area=area,
-        magnitude=current.label.magnitude,
-        assumed_units=assumed,
-        bare=voltage.label.kind is None and current.label.kind is None,
-        read_unit=read_unit,
-        error=None if error is None else error.index,
-        error_factor=error_factor,
-        notes=tuple(said),
-    )
-
-
-def _resolved(
-    block: Block,
-    doubt: Doubt,
-    voltage: _Column,
-    current: _Column,
-    voltage_factor: float,
-    current_factor: float,
-    density: bool,
-) -> tuple[dict[int, float], list[str]]:
-    """Factors for columns in which a point or comma turns out to stand between thousands, and a note.
-
-    Raises
-    ------
-    Refusal
-        If decimals and thousands are equally possible.
-    """
-    doubted = [c.index for c in (voltage, current) if c.index in doubt.first]
-    if not doubted:
-        return {}, []
-    votes = set()
-    if voltage.index in doubted:
-        volts = voltage_factor * float(np.max(np.abs(finite(block.values[:, voltage.index])), initial=0.0))
-        if 1e3 * volts > _VOLTS_AT_MOST:
-            votes.add("decimal")
-        elif volts < _DOUBTED_VOLTS_AT_LEAST:
-            votes.add("thousands")
-    if current.index in doubted:
-        amps = current_factor * float(np.max(np.abs(finite(block.values[:, current.index])), initial=0.0))
-        if 1e3 * amps > (_DOUBTED_DENSITY_AT_MOST if density else _DOUBTED_AMPERES_AT_MOST):
-            votes.add("decimal")
-    expected = doubt.mark == ("," if is_german(" ".join(cell for row in block.labels for cell in row)) else ".")
-    if len(votes) > 1 or not (votes or expected):
-        raise doubt.refusal(doubted[-1])
-    _, cell = doubt.first[doubted[-1]]
-    if votes == {"thousands"}:
-        digits = cell.replace(doubt.mark, "")
-        return dict.fromkeys(doubted, 1e3), [f"A {NAMES[doubt.mark]} stands between thousands: “{cell}” is read as {digits}."]
-    if votes:
-        return {}, []
-    decimals = cell.replace(doubt.mark, ".")
-    return {}, [f"The {NAMES[doubt.mark]} is taken for a decimal mark: “{cell}” is read as {decimals}; check that this is right."]
-
-
-def _device_in_label(label: Label) -> str:
-    rest = device_in(label.rest)
-    return "" if rest.isdigit() or len(rest) < 2 else rest
