@@ -30,7 +30,7 @@ def losses() -> list:
                                 html.Span("save", className="hint"),
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.LADDER}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.LADDER}),
-                                _table("CSV", "save-losses", "Share and rung of each mechanism"),
+                                _table("CSV", "save-losses", "Loss and rung of each mechanism"),
                                 _table("XLSX", "save-shown", "All tables of this device"),
                             ],
                         ),

@@ -57,7 +57,7 @@ def pair() -> list:
                             children=[
                                 html.Button("SVG", className="quiet", **{"data-save": "svg", "data-graph": Id.PAIR_BARS}),
                                 html.Button("PNG", className="quiet", **{"data-save": "png", "data-graph": Id.PAIR_BARS}),
-                                _table("CSV", "save-shares", "Share of each mechanism in the difference"),
+                                _table("CSV", "save-shares", "What each mechanism adds to the difference"),
                             ],
                         ),
                     ],
