@@ -15,6 +15,7 @@ import re
 import tempfile
 import zipfile
 from contextlib import closing
+from copy import deepcopy
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
@@ -318,9 +319,9 @@ def _spoil(tree: dict | list, chance: random.Random) -> None:
             case 0 if isinstance(tree, dict):
                 del tree[key]
             case 1 if isinstance(tree, dict):
-                tree[chance.choice(("more", "id", "", "voltage"))] = chance.choice(STRANGE)
+                tree[chance.choice(("more", "id", "", "voltage"))] = deepcopy(chance.choice(STRANGE))
             case 2 if isinstance(below, int | float) and not isinstance(below, bool) and abs(below) < 1e300:
                 tree[key] = below * chance.choice((-1, 1e6, 1e-6, 1e200))
             case _:
-                tree[key] = chance.choice(STRANGE)
+                tree[key] = deepcopy(chance.choice(STRANGE))  # or the next to be spoilt would be that one
         return
